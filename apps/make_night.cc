@@ -1,0 +1,61 @@
+// make_night: invents, from a seed, a night of option quotes of an exchange that does
+// not exist. Same seed and as-of, same quotes, on any machine.
+#include <fmt/format.h>
+
+#include <CLI/CLI.hpp>
+#include <cstdio>
+#include <filesystem>
+#include <string>
+#include <system_error>
+
+#include "make_night_scenario.h"
+
+namespace {
+
+using namespace duskgrid::make_night;
+
+// Exit statuses of sysexits.h.
+constexpr int kUsage = 64;
+constexpr int kCannotCreate = 73;
+
+int fail(int status, const std::string& text) {
+  fmt::print(stderr, "make_night: {}\n", text);
+  return status;
+}
+
+int write_night(const std::filesystem::path& folder, const World& world) {
+  std::error_code error;
+  std::filesystem::create_directories(folder, error);
+  if (error) return fail(kCannotCreate, folder.string() + ": " + error.message());
+  for (const NightFile& file : demo_night(world)) {
+    if (!store(folder, file)) {
+      return fail(kCannotCreate, (folder / file.name).string() + ": cannot be written");
+    }
+    fmt::print(stderr, "{:<20} {:>8} bytes before packing\n", file.name, file.text.size());
+  }
+  return 0;
+}
+
+}  // namespace
+
+int main(int argc, char** argv) {
+  CLI::App app{"Invents a night of option quotes of an exchange that does not exist."};
+  std::string out;
+  std::string as_of = "2031-03-14T16:00:00-05:00";
+  World world;
+  app.add_option("--out", out, "Folder to write the night to")->required();
+  app.add_option("--seed", world.seed, "Same seed, same night")->capture_default_str();
+  app.add_option("--as-of", as_of, "Instant the night is taken at")->capture_default_str();
+  app.footer("Example: make_night --out data/demo_night");
+  try {
+    app.parse(argc, argv);
+  } catch (const CLI::ParseError& error) {
+    return app.exit(error) == 0 ? 0 : kUsage;
+  }
+  const auto instant = parse_as_of(as_of);
+  if (!instant) {
+    return fail(kUsage, fmt::format("--as-of = {}, must be like 2031-03-14T16:00:00-05:00", as_of));
+  }
+  world.as_of = *instant;
+  return write_night(out, world);
+}

@@ -1,0 +1,180 @@
+#include "arbitrage/surface_checks.h"
+
+#include <algorithm>
+#include <cmath>
+#include <limits>
+
+#include "pricing/black.h"
+
+namespace duskgrid::arbitrage {
+namespace {
+
+using quotes::PutCall;
+
+// Rounding of g (terms of order 1) and of w differences, relative to w.
+constexpr double kRounding = 1e-12;
+constexpr double kNaN = std::numeric_limits<double>::quiet_NaN();
+constexpr double kInfinity = std::numeric_limits<double>::infinity();
+
+// A time to look at: a slice, or half way to the next.
+struct Stage {
+  double t;
+  quotes::Instant expiry;
+  surface::TimedSmile smile;
+  double forward, discount_factor;
+};
+
+std::vector<Stage> stages_of(const surface::Surface& surface) {
+  std::vector<Stage> out;
+  const auto add = [&](double t, quotes::Instant expiry) {
+    const auto carried = surface::carried_at(surface, t);
+    out.push_back({t, expiry, surface::smile_at_time(surface, t), carried.forward,
+                   carried.discount_factor});
+  };
+  for (std::size_t i = 0; i < surface.slices.size(); ++i) {
+    const auto& s = surface.slices[i];
+    add(s.year_fraction, s.expiry);
+    if (i + 1 < surface.slices.size()) {
+      const auto& next = surface.slices[i + 1];
+      add(0.5 * (s.year_fraction + next.year_fraction), s.expiry + (next.expiry - s.expiry) / 2);
+    }
+  }
+  return out;
+}
+
+double call_price(const Stage& stage, double k) {
+  const double strike = stage.forward * std::exp(k);
+  return pricing::black_price({PutCall::call, stage.forward, strike, stage.discount_factor},
+                              std::sqrt(surface::point_at(stage.smile, k).w));
+}
+
+double vol_points(const Stage& stage, double k, double amount) {
+  const double vol = std::sqrt(surface::point_at(stage.smile, k).w / stage.t);
+  const double vega =
+      pricing::black_greeks({PutCall::call, stage.forward, stage.forward * std::exp(k),
+                             stage.discount_factor},
+                            vol, stage.t)
+          .vega;
+  const double points = 100 * amount / vega;
+  return std::isfinite(points) ? points : kNaN;
+}
+
+Leg call_leg(const Stage& stage, double quantity, double k) {
+  return {quantity, LegType::call, stage.forward * std::exp(k), stage.expiry, call_price(stage, k)};
+}
+
+Violation butterfly_at(const Stage& stage, double k, double step) {
+  const Leg middle = call_leg(stage, -1, k);
+  Leg lower = call_leg(stage, 1, k - step), upper = call_leg(stage, 1, k + step);
+  lower.quantity = (upper.strike - middle.strike) / (upper.strike - lower.strike);
+  upper.quantity = 1 - lower.quantity;
+  const double amount =
+      middle.price - lower.quantity * lower.price - upper.quantity * upper.price;
+  return {.scope = Scope::surface,
+          .kind = Kind::butterfly,
+          .expiry = stage.expiry,
+          .strikes = {lower.strike, middle.strike, upper.strike},
+          .amount = amount,
+          .vol_points = vol_points(stage, k, amount),
+          .half_spreads = kNaN,
+          .legs = {lower, middle, upper}};
+}
+
+Violation calendar_at(const Stage& early, const Stage& late, double k) {
+  const Leg sold = call_leg(early, -1, k);
+  const Leg bought = call_leg(
+      late, early.discount_factor * early.forward / (late.discount_factor * late.forward), k);
+  const double amount = sold.price - bought.quantity * bought.price;
+  return {.scope = Scope::surface,
+          .kind = Kind::calendar,
+          .expiry = early.expiry,
+          .expiry_2 = late.expiry,
+          .strikes = {sold.strike, bought.strike},
+          .amount = amount,
+          .vol_points = vol_points(early, k, amount),
+          .half_spreads = kNaN,
+          .legs = {sold, bought}};
+}
+
+class Checker {
+ public:
+  Checker(const surface::Surface& surface, const SurfaceCheckOptions& options)
+      : stages_(stages_of(surface)), points_(std::max(options.points, 3)) {
+    double low = 0, high = 0, widest = 0;
+    for (const auto& s : surface.slices) {
+      low = std::min(low, s.k_low);
+      high = std::max(high, s.k_high);
+      widest = std::max(widest, std::sqrt(s.backbone.theta));
+    }
+    low_ = low - options.deviations * widest;
+    step_ = (high + options.deviations * widest - low_) / (points_ - 1);
+  }
+
+  SurfaceCheck run() {
+    for (std::size_t i = 0; i < stages_.size(); ++i) {
+      check_butterflies(stages_[i]);
+      check_wings(stages_[i]);
+      if (i > 0) check_calendar(stages_[i - 1], stages_[i]);
+    }
+    return std::move(out_);
+  }
+
+ private:
+  // Calls `broken(k)` at the lowest point of each stretch where value(k) is below -kRounding.
+  template <class Value, class Broken>
+  double scan(Value value, Broken broken) {
+    double least = kInfinity, worst = 0, worst_k = 0;
+    for (int i = 0; i <= points_; ++i) {
+      const double k = low_ + step_ * i;
+      const double v = i < points_ ? value(k) : 0;  // the sentinel ends the last stretch
+      if (i < points_) least = std::min(least, v);
+      if (v < std::min(worst, -kRounding)) {
+        worst = v;
+        worst_k = k;
+      } else if (v >= -kRounding && worst < 0) {
+        broken(worst_k);
+        worst = 0;
+      }
+    }
+    return least;
+  }
+
+  void check_butterflies(const Stage& stage) {
+    const double least = scan(
+        [&](double k) { return surface::durrleman(surface::point_at(stage.smile, k), k); },
+        [&](double k) { out_.violations.push_back(butterfly_at(stage, k, step_)); });
+    out_.least_durrleman = std::min(out_.least_durrleman, least);
+  }
+
+  void check_calendar(const Stage& early, const Stage& late) {
+    const double least = scan(
+        [&](double k) {
+          return surface::point_at(late.smile, k).w - surface::point_at(early.smile, k).w;
+        },
+        [&](double k) { out_.violations.push_back(calendar_at(early, late, k)); });
+    out_.least_calendar_step = std::min(out_.least_calendar_step, least);
+  }
+
+  // Lee 2004: w grows by no more than 2 |k| in either wing; here the slopes are psi (1 +- rho) / 2.
+  void check_wings(const Stage& stage) {
+    const auto& p = stage.smile.parameters;
+    if (0.5 * p.psi * (1 + std::abs(p.rho)) <= 2) return;
+    const double k = p.rho > 0 ? low_ + step_ * (points_ - 1) : low_;
+    Violation v = butterfly_at(stage, k, step_);
+    v.kind = Kind::wing;
+    out_.violations.push_back(std::move(v));
+  }
+
+  std::vector<Stage> stages_;
+  int points_;
+  double low_, step_;
+  SurfaceCheck out_{{}, kInfinity, kInfinity};
+};
+
+}  // namespace
+
+SurfaceCheck check_surface(const surface::Surface& surface, const SurfaceCheckOptions& options) {
+  return Checker(surface, options).run();
+}
+
+}  // namespace duskgrid::arbitrage

@@ -1,0 +1,251 @@
+#include "market/parity.h"
+
+#include <fmt/format.h>
+
+#include <algorithm>
+#include <array>
+#include <cmath>
+#include <limits>
+
+namespace duskgrid::market {
+namespace {
+
+constexpr double kNaN = std::numeric_limits<double>::quiet_NaN();
+// A quoted interval is taken as uniform: standard deviation half-width / sqrt 3.
+constexpr double kUniformDeviation = 0.57735026918962576;
+// What is believed of a rate before any quote: nothing outside +-10 % or so.
+constexpr double kPriorRateDeviation = 0.05;
+constexpr double kLargestRate = 0.5;
+constexpr double kHuber = 1.345;  // 95 % efficient on normal errors
+
+double middle(const ParityPair& p) { return 0.5 * (p.low + p.high); }
+// Locked or tiny spreads keep a finite weight.
+double deviation(const ParityPair& p) {
+  return std::max(0.5 * (p.high - p.low), 1e-9 * p.strike) * kUniformDeviation;
+}
+
+struct RateReading {
+  double rate;
+  double error;  // standard error, infinite when the pairs tell nothing
+};
+
+// The pair where call and put are closest says roughly where the forward is.
+const ParityPair& nearest_pair(std::span<const ParityPair> pairs) {
+  return *std::min_element(pairs.begin(), pairs.end(), [](const auto& a, const auto& b) {
+    return std::abs(middle(a)) < std::abs(middle(b));
+  });
+}
+
+// Huber regression middle = a - D (K - centre) by reweighting; the rate of D and its error.
+RateReading regress_rate(const ExpiryPairs& expiry) {
+  constexpr std::size_t kFewestPairs = 3;
+  constexpr int kRounds = 20;
+  const RateReading nothing{0, std::numeric_limits<double>::infinity()};
+  if (expiry.pairs.size() < kFewestPairs || expiry.american) return nothing;
+  const double centre = nearest_pair(expiry.pairs).strike;
+  std::vector<double> robust(expiry.pairs.size(), 1.0);
+  double slope = 1, error = 0;
+  for (int round = 0; round < kRounds; ++round) {
+    double s0 = 0, s1 = 0, s2 = 0, y0 = 0, y1 = 0;
+    for (std::size_t i = 0; i < robust.size(); ++i) {
+      const ParityPair& p = expiry.pairs[i];
+      const double weight = robust[i] / (deviation(p) * deviation(p));
+      const double x = p.strike - centre;
+      s0 += weight;
+      s1 += weight * x;
+      s2 += weight * x * x;
+      y0 += weight * middle(p);
+      y1 += weight * x * middle(p);
+    }
+    const double determinant = s0 * s2 - s1 * s1;
+    if (!(determinant > 1e-12 * s0 * s2)) return nothing;
+    slope = (s0 * y1 - s1 * y0) / determinant;
+    const double level = (y0 - slope * s1) / s0;
+    error = std::sqrt(s0 / determinant);
+    for (std::size_t i = 0; i < robust.size(); ++i) {
+      const ParityPair& p = expiry.pairs[i];
+      const double r = std::abs(middle(p) - level - slope * (p.strike - centre)) / deviation(p);
+      robust[i] = r > kHuber ? kHuber / r : 1.0;
+    }
+  }
+  const double discount = -slope;
+  if (!(discount > 0)) return nothing;
+  const double rate = -std::log(discount) / expiry.year_fraction;
+  if (std::abs(rate) > kLargestRate) return nothing;
+  return {rate, error / (discount * expiry.year_fraction)};
+}
+
+double blend(const RateReading& own, double other, double other_error) {
+  const double a = 1 / (own.error * own.error), b = 1 / (other_error * other_error);
+  return std::isfinite(a) ? (a * own.rate + b * other) / (a + b) : own.rate;
+}
+
+// The rate common to all expiries, drawn to zero only as far as they tell nothing.
+double common_rate(std::span<const RateReading> readings, double tolerance) {
+  double weight = 1 / (kPriorRateDeviation * kPriorRateDeviation), sum = 0;
+  for (const RateReading& r : readings) {
+    const double w = 1 / (r.error * r.error + tolerance * tolerance);
+    weight += w;
+    sum += w * r.rate;
+  }
+  return sum / weight;
+}
+
+std::vector<double> zero_rates(std::span<const ExpiryPairs> expiries, const KnownMarket& known,
+                               const ParityOptions& options) {
+  std::vector<RateReading> readings;
+  for (const ExpiryPairs& e : expiries) readings.push_back(regress_rate(e));
+  const double common = common_rate(readings, options.rate_tolerance_common);
+  std::vector<double> rates;
+  for (std::size_t i = 0; i < readings.size(); ++i)
+    rates.push_back(known.curve ? blend(readings[i], known.curve->rate(expiries[i].year_fraction),
+                                        options.rate_tolerance_given)
+                                : blend(readings[i], common, options.rate_tolerance_common));
+  return rates;
+}
+
+// What one pair says of the forward once the discount is known.
+struct ForwardInterval {
+  double low, high, weight;
+};
+
+std::vector<ForwardInterval> near_the_money(const ExpiryPairs& expiry, double discount,
+                                            const ParityOptions& options) {
+  const ParityPair& nearest = nearest_pair(expiry.pairs);
+  const double rough = nearest.strike + middle(nearest) / discount;
+  // At the money a straddle is D F s sqrt(2/pi).
+  const double total_vol = nearest.straddle / (0.8 * discount * std::max(rough, nearest.strike));
+  const double reach = std::max(options.near_deviations * total_vol * nearest.strike,
+                                std::abs(nearest.strike - rough));
+  std::vector<ParityPair> sorted(expiry.pairs.begin(), expiry.pairs.end());
+  std::sort(sorted.begin(), sorted.end(), [&](const auto& a, const auto& b) {
+    return std::pair(std::abs(a.strike - rough), a.strike) <
+           std::pair(std::abs(b.strike - rough), b.strike);
+  });
+  std::vector<ForwardInterval> out;
+  for (const ParityPair& p : sorted) {
+    if (!out.empty() && (std::abs(p.strike - rough) > reach ||
+                         out.size() >= static_cast<std::size_t>(options.most_near_pairs)))
+      break;
+    const double d = deviation(p) / discount;
+    out.push_back({p.strike + p.low / discount, p.strike + p.high / discount, 1 / (d * d)});
+  }
+  return out;
+}
+
+double distance_outside(const ForwardInterval& i, double forward) {
+  return std::max({0.0, i.low - forward, forward - i.high});
+}
+
+// Where contradicting intervals leave the least weighted distance: one of their ends.
+double least_broken(std::span<const ForwardInterval> intervals) {
+  double best = kNaN, least = std::numeric_limits<double>::infinity();
+  for (const ForwardInterval& candidate : intervals)
+    for (const double f : {candidate.low, candidate.high}) {
+      double total = 0;
+      for (const ForwardInterval& i : intervals) total += std::sqrt(i.weight) * distance_outside(i, f);
+      if (total < least) {
+        least = total;
+        best = f;
+      }
+    }
+  return best;
+}
+
+void place_forward(std::span<const ForwardInterval> intervals, ForwardEstimate& estimate) {
+  double low = -std::numeric_limits<double>::infinity(), high = -low, weight = 0, sum = 0;
+  for (const ForwardInterval& i : intervals) {
+    low = std::max(low, i.low);
+    high = std::min(high, i.high);
+    weight += i.weight;
+    sum += i.weight * 0.5 * (i.low + i.high);
+  }
+  estimate.lowest_forward = low;
+  estimate.highest_forward = high;
+  // A hair inside the ends, so that rounding in D (F - K) cannot put it outside.
+  const double hair = 1e-9 * (high - low);
+  estimate.forward = low <= high ? std::clamp(sum / weight, low + hair, high - hair)
+                                 : least_broken(intervals);
+  estimate.pairs = static_cast<int>(intervals.size());
+  const double tolerance = 1e-12 * std::abs(estimate.forward);
+  estimate.breaks = static_cast<int>(
+      std::count_if(intervals.begin(), intervals.end(), [&](const ForwardInterval& i) {
+        return distance_outside(i, estimate.forward) > tolerance;
+      }));
+}
+
+// The carry of the nearest expiry that has one, for expiries without pairs.
+double nearest_carry(std::span<const std::optional<ForwardEstimate>> estimates,
+                     std::span<const ExpiryPairs> expiries, double t) {
+  double carry = 0, least = std::numeric_limits<double>::infinity();
+  for (std::size_t i = 0; i < estimates.size(); ++i) {
+    if (!estimates[i] || !estimates[i]->carry) continue;
+    const double distance = std::abs(expiries[i].year_fraction - t);
+    if (distance < least) {
+      least = distance;
+      carry = *estimates[i]->carry;
+    }
+  }
+  return carry;
+}
+
+}  // namespace
+
+std::string_view word(ForwardSource source) {
+  constexpr std::array<std::string_view, 4> kWords{"parity", "given", "curve", "carried"};
+  return kWords[static_cast<std::size_t>(source)];
+}
+
+std::optional<std::string> ParityOptions::problem() const {
+  const auto positive = [](const char* name, double v) -> std::optional<std::string> {
+    if (v > 0 && std::isfinite(v)) return std::nullopt;
+    return fmt::format("{} = {}, must be > 0", name, v);
+  };
+  if (auto p = positive("rate_tolerance_given", rate_tolerance_given)) return p;
+  if (auto p = positive("rate_tolerance_common", rate_tolerance_common)) return p;
+  if (auto p = positive("near_deviations", near_deviations)) return p;
+  if (most_near_pairs < 1) return fmt::format("most_near_pairs = {}, must be >= 1", most_near_pairs);
+  return std::nullopt;
+}
+
+std::vector<std::optional<ForwardEstimate>> estimate_forwards(
+    std::span<const ExpiryPairs> expiries, const KnownMarket& known,
+    const ParityOptions& options) {
+  std::vector<std::optional<ForwardEstimate>> estimates(expiries.size());
+  const auto rates = zero_rates(expiries, known, options);
+  for (std::size_t i = 0; i < expiries.size(); ++i) {
+    const ExpiryPairs& e = expiries[i];
+    const double t = e.year_fraction;
+    ForwardEstimate out{.forward = kNaN,
+                        .discount_factor = std::exp(-rates[i] * t),
+                        .zero_rate = rates[i],
+                        .carry = {},
+                        .lowest_forward = kNaN,
+                        .highest_forward = kNaN};
+    if (!e.pairs.empty()) place_forward(near_the_money(e, out.discount_factor, options), out);
+    if (e.given_forward) {
+      out.forward = *e.given_forward;
+      out.source = ForwardSource::given;
+      out.pairs = out.breaks = 0;
+    }
+    if (!(std::isfinite(out.forward) && out.forward > 0)) continue;
+    if (known.spot) out.carry = rates[i] - std::log(out.forward / *known.spot) / t;
+    estimates[i] = out;
+  }
+  if (!known.spot) return estimates;
+  for (std::size_t i = 0; i < expiries.size(); ++i) {
+    if (estimates[i]) continue;
+    const double t = expiries[i].year_fraction;
+    const double carry = known.carry ? *known.carry : nearest_carry(estimates, expiries, t);
+    estimates[i] = ForwardEstimate{.forward = *known.spot * std::exp((rates[i] - carry) * t),
+                                   .discount_factor = std::exp(-rates[i] * t),
+                                   .zero_rate = rates[i],
+                                   .carry = carry,
+                                   .source = ForwardSource::curve,
+                                   .lowest_forward = kNaN,
+                                   .highest_forward = kNaN};
+  }
+  return estimates;
+}
+
+}  // namespace duskgrid::market

@@ -1,0 +1,77 @@
+// Forwards and discount factors of one underlying from put-call parity on bid/ask
+// intervals. For European prices; of American ones only pairs near the money are used.
+#pragma once
+
+#include <cstdint>
+#include <optional>
+#include <span>
+#include <string>
+#include <string_view>
+#include <vector>
+
+#include "market/curve.h"
+
+namespace duskgrid::market {
+
+// Call and put of one strike. Parity says D (F - K) lies in [low, high] =
+// [call bid - put ask, call ask - put bid], quote currency.
+struct ParityPair {
+  double strike;
+  double low;
+  double high;
+  double straddle;  // call mid + put mid, for how far the money reaches
+};
+
+struct ExpiryPairs {
+  double year_fraction;               // > 0
+  std::vector<ParityPair> pairs;      // by strike
+  std::optional<double> given_forward;
+  bool american = false;              // early exercise: parity holds only near the money
+};
+
+enum class ForwardSource : std::uint8_t { parity, given, curve, carried };
+std::string_view word(ForwardSource source);
+
+struct ForwardEstimate {
+  double forward;          // quote currency
+  double discount_factor;
+  double zero_rate;        // continuous, decimals a year
+  std::optional<double> carry;  // q in F = S exp((r - q) t), when the spot is known
+  int pairs = 0;           // used; 0 when not from parity
+  int breaks = 0;          // near-the-money pairs whose interval excludes the forward
+  ForwardSource source = ForwardSource::parity;
+  // What the near-the-money intervals allow; low > high when they contradict one
+  // another, NaN without a pair.
+  double lowest_forward;
+  double highest_forward;
+};
+
+struct ParityOptions {
+  // Deviation of an expiry's own zero rate from the given curve, or from the rate
+  // common to all expiries, that counts as one standard error. Decimals a year. Range:
+  // > 0. Smaller trusts the curve more.
+  double rate_tolerance_given = 0.0025;
+  double rate_tolerance_common = 0.005;
+  // Pairs near the money: within this many at-the-money deviations, ... Range: > 0.
+  double near_deviations = 1.0;
+  // ... at most so many, nearest first. Range: >= 1.
+  int most_near_pairs = 12;
+  std::optional<std::string> problem() const;
+};
+
+struct KnownMarket {
+  std::optional<double> spot;
+  std::optional<double> carry;         // continuous yield, decimals a year
+  std::optional<ZeroCurve> curve;
+};
+
+// One estimate an expiry (increasing in time), or nothing where there is no forward: none
+// given, no pair, no spot. The discount of an expiry is a robust weighted regression of call minus
+// put on strike, drawn to the curve, or to the rate that all expiries share, in proportion to
+// their errors, so that a short expiry cannot invent a rate. The forward is the spread-weighted mean
+// of the near-the-money pairs held inside the intersection of their intervals, or the point
+// that breaks fewest when they have none in common.
+std::vector<std::optional<ForwardEstimate>> estimate_forwards(
+    std::span<const ExpiryPairs> expiries, const KnownMarket& known, const ParityOptions& options);
+
+}  // namespace duskgrid::market
