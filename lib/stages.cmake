@@ -1,4 +1,33 @@
 # The stages, in the order of the data. Each links only stages listed above it.
 add_stage(quotes
-  SOURCES clean.cc columns.cc instants.cc ledger.cc load.cc osi.cc quote.cc
+  SOURCES chain.cc clean.cc columns.cc instants.cc ledger.cc load.cc osi.cc quote.cc
+    bytes.cc cells.cc contracts.cc encoding.cc memo.cc paths.cc rows.cc spellings.cc
   PRIVATE_NEEDS Boost::iostreams date::date-tz fmt::fmt Threads::Threads)
+
+add_stage(market
+  SOURCES curve.cc dates.cc day_count.cc parity.cc
+  NEEDS duskgrid::quotes PRIVATE_NEEDS fmt::fmt)
+
+add_stage(pricing
+  SOURCES black.cc invert.cc selection.cc
+  NEEDS duskgrid::market PRIVATE_NEEDS Boost::boost fmt::fmt)
+
+add_stage(surface
+  SOURCES backbone.cc surface.cc
+  NEEDS duskgrid::pricing PRIVATE_NEEDS Eigen3::Eigen fmt::fmt)
+
+add_stage(arbitrage
+  SOURCES grid_checks.cc quote_checks.cc surface_checks.cc violation.cc
+  NEEDS duskgrid::surface PRIVATE_NEEDS fmt::fmt)
+
+add_stage(publish
+  SOURCES digest.cc grid.cc grid_file.cc run_folder.cc run_record.cc surface_json.cc tables.cc
+    text.cc
+  NEEDS duskgrid::arbitrage
+  PRIVATE_NEEDS Boost::boost OpenSSL::Crypto fmt::fmt nlohmann_json::nlohmann_json)
+
+add_stage(night
+  SOURCES config.cc mark.cc run.cc
+  NEEDS duskgrid::publish
+  PRIVATE_NEEDS TBB::tbb fmt::fmt nlohmann_json::nlohmann_json tomlplusplus::tomlplusplus)
+target_compile_definitions(duskgrid_night PRIVATE DUSKGRID_VERSION="${PROJECT_VERSION}")

@@ -137,22 +137,12 @@ double distance_outside(const ForwardInterval& i, double forward) {
   return std::max({0.0, i.low - forward, forward - i.high});
 }
 
-// Where contradicting intervals leave the least weighted distance: one of their ends.
-double least_broken(std::span<const ForwardInterval> intervals) {
-  double best = kNaN, least = std::numeric_limits<double>::infinity();
-  for (const ForwardInterval& candidate : intervals)
-    for (const double f : {candidate.low, candidate.high}) {
-      double total = 0;
-      for (const ForwardInterval& i : intervals) total += std::sqrt(i.weight) * distance_outside(i, f);
-      if (total < least) {
-        least = total;
-        best = f;
-      }
-    }
-  return best;
-}
+// What some intervals have in common (low > high when nothing) and their weighted mean.
+struct Meeting {
+  double low, high, mean;
+};
 
-void place_forward(std::span<const ForwardInterval> intervals, ForwardEstimate& estimate) {
+Meeting meet(std::span<const ForwardInterval> intervals) {
   double low = -std::numeric_limits<double>::infinity(), high = -low, weight = 0, sum = 0;
   for (const ForwardInterval& i : intervals) {
     low = std::max(low, i.low);
@@ -160,12 +150,38 @@ void place_forward(std::span<const ForwardInterval> intervals, ForwardEstimate& 
     weight += i.weight;
     sum += i.weight * 0.5 * (i.low + i.high);
   }
-  estimate.lowest_forward = low;
-  estimate.highest_forward = high;
+  return {low, high, sum / weight};
+}
+
+// Of contradicting intervals those that hold one point: as many as possible, then those that
+// leave the others least weighted distance away. Such a point is an end of some interval.
+std::vector<ForwardInterval> largest_agreement(std::span<const ForwardInterval> intervals) {
+  std::vector<ForwardInterval> best;
+  double least = std::numeric_limits<double>::infinity();
+  for (const ForwardInterval& candidate : intervals)
+    for (const double f : {candidate.low, candidate.high}) {
+      std::vector<ForwardInterval> holding;
+      double total = 0;
+      for (const ForwardInterval& i : intervals) {
+        const double distance = distance_outside(i, f);
+        total += std::sqrt(i.weight) * distance;
+        if (distance == 0) holding.push_back(i);
+      }
+      if (holding.size() < best.size() || (holding.size() == best.size() && total >= least)) continue;
+      least = total;
+      best = std::move(holding);
+    }
+  return best;
+}
+
+void place_forward(std::span<const ForwardInterval> intervals, ForwardEstimate& estimate) {
+  Meeting common = meet(intervals);
+  estimate.lowest_forward = common.low;
+  estimate.highest_forward = common.high;
+  if (!(common.low <= common.high)) common = meet(largest_agreement(intervals));
   // A hair inside the ends, so that rounding in D (F - K) cannot put it outside.
-  const double hair = 1e-9 * (high - low);
-  estimate.forward = low <= high ? std::clamp(sum / weight, low + hair, high - hair)
-                                 : least_broken(intervals);
+  const double hair = 1e-9 * (common.high - common.low);
+  estimate.forward = std::clamp(common.mean, common.low + hair, common.high - hair);
   estimate.pairs = static_cast<int>(intervals.size());
   const double tolerance = 1e-12 * std::abs(estimate.forward);
   estimate.breaks = static_cast<int>(

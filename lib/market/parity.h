@@ -69,8 +69,8 @@ struct KnownMarket {
 // given, no pair, no spot. The discount of an expiry is a robust weighted regression of call minus
 // put on strike, drawn to the curve, or to the rate that all expiries share, in proportion to
 // their errors, so that a short expiry cannot invent a rate. The forward is the spread-weighted mean
-// of the near-the-money pairs held inside the intersection of their intervals, or the point
-// that breaks fewest when they have none in common.
+// of the near-the-money pairs held inside the intersection of their intervals; when they have none in
+// common, inside that of the most pairs that agree, and the others are breaks.
 std::vector<std::optional<ForwardEstimate>> estimate_forwards(
     std::span<const ExpiryPairs> expiries, const KnownMarket& known, const ParityOptions& options);
 

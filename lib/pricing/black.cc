@@ -115,26 +115,33 @@ double log_moneyness_of_forward(double forward, double strike) {
                                      : std::log(forward) - std::log(strike);
 }
 
+double scaled_price(double x, double s) {
+  const double h = x / s;
+  const double t = 0.5 * s;
+  if (t < kSeriesHalfVol && x > -kSeriesLogMoneyness)
+    return kInvSqrt2Pi * mills_difference_series(h, t);
+  return 0.5 * (scaled_erfc(-(h + t) * kInvSqrt2) - scaled_erfc(-(h - t) * kInvSqrt2));
+}
+
 double normalised_price(double x, double s) {
   if (s <= 0) return 0;
   const double h = x / s;
   const double t = 0.5 * s;
   const double gauss = std::exp(-0.5 * (h * h + t * t));
-  if (t < kSeriesHalfVol && x > -kSeriesLogMoneyness)
-    return kInvSqrt2Pi * gauss * mills_difference_series(h, t);
-  // Past d1 = 0 the scaled form would multiply an overflow by an underflow.
-  if (h + t > 0)
-    return 0.5 * (std::exp(0.5 * x) * std::erfc(-(h + t) * kInvSqrt2) -
-                  std::exp(-0.5 * x) * std::erfc(-(h - t) * kInvSqrt2));
-  return 0.5 * gauss * (scaled_erfc(-(h + t) * kInvSqrt2) - scaled_erfc(-(h - t) * kInvSqrt2));
+  if (h + t <= 0 || (t < kSeriesHalfVol && x > -kSeriesLogMoneyness))
+    return gauss * scaled_price(x, s);
+  // Past d1 = 0 the scaled form of the first term would multiply an overflow by an underflow.
+  return 0.5 * (std::exp(0.5 * x) * std::erfc(-(h + t) * kInvSqrt2) -
+                gauss * scaled_erfc(-(h - t) * kInvSqrt2));
 }
 
 double normalised_gap(double x, double s) {
   if (s <= 0) return std::exp(0.5 * x);
   const double h = x / s;
   const double t = 0.5 * s;
+  // The scaled form of the second term: plain, erfc underflows while e^{-x/2} is large.
   return 0.5 * (std::exp(0.5 * x) * std::erfc((h + t) * kInvSqrt2) +
-                std::exp(-0.5 * x) * std::erfc(-(h - t) * kInvSqrt2));
+                std::exp(-0.5 * (h * h + t * t)) * scaled_erfc(-(h - t) * kInvSqrt2));
 }
 
 double normalised_vega(double x, double s) {

@@ -26,6 +26,9 @@ double log_moneyness_of_forward(double forward, double strike);
 // b(x, s) of an out-of-the-money option, x <= 0, s >= 0. Relative error of the order
 // of max(1, (x/s)^2) ulp, which is what the conditioning of the inversion leaves.
 double normalised_price(double x, double s);
+// b over its factor exp(-((x/s)^2 + s^2/4) / 2), x < 0 < s <= sqrt(-2x): has digits where b
+// itself is below the smallest double.
+double scaled_price(double x, double s);
 // e^{x/2} - b(x, s), x <= 0: what is missing to the upper bound, without cancellation.
 double normalised_gap(double x, double s);
 // db/ds, x of either sign, s > 0.

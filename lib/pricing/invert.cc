@@ -21,16 +21,26 @@ constexpr std::uintmax_t kMostSteps = 60;
 // Second derivative of b over its first: x^2/s^3 - s/4.
 double vega_slope(double x, double s) { return (x / s) * (x / s) / s - 0.25 * s; }
 
-// ln(b/beta) and two derivatives in s.
+// ln(a/b) of positive numbers, without cancellation where they nearly agree and without overflow
+// of the ratio where they do not.
+double log_ratio(double a, double b) {
+  const double difference = (a - b) / b;
+  return std::abs(difference) < 0.5 ? std::log1p(difference) : std::log(a) - std::log(b);
+}
+
+// ln(b/beta) and two derivatives in s, s <= sqrt(-2x).
 std::tuple<double, double, double> log_price(double x, double beta, double s) {
-  const double b = normalised_price(x, s);
-  // Below the smallest double the logarithm continues along its leading term.
-  if (b < std::numeric_limits<double>::min()) {
-    const double h = x / s;
-    return {-0.5 * h * h - std::log(beta), h * h / s, -3 * h * h / (s * s)};
-  }
-  const double first = normalised_vega(x, s) / b;
-  return {std::log1p((b - beta) / beta), first, first * (vega_slope(x, s) - first)};
+  constexpr double kInvSqrt2Pi = std::numbers::inv_sqrtpi / std::numbers::sqrt2;
+  const double h = x / s;
+  const double exponent = -0.5 * (h * h + 0.25 * s * s);
+  const double scaled = scaled_price(x, s);
+  const double first = kInvSqrt2Pi / scaled;
+  const double b = std::exp(exponent) * scaled;
+  // Near the root the ratio has more digits than the difference of logarithms.
+  const double value = b < std::numeric_limits<double>::min()
+                           ? exponent + std::log(scaled) - std::log(beta)
+                           : log_ratio(b, beta);
+  return {value, first, first * (vega_slope(x, s) - first)};
 }
 
 // b/beta - 1 and two derivatives in s.
@@ -45,13 +55,15 @@ std::tuple<double, double, double> log_gap(double x, double target, double s) {
   if (gap < std::numeric_limits<double>::min())
     return {0.125 * s * s + std::log(target), 0.25 * s, 0.25};
   const double first = normalised_vega(x, s) / gap;
-  return {-std::log1p((gap - target) / target), first, first * (vega_slope(x, s) + first)};
+  return {-log_ratio(gap, target), first, first * (vega_slope(x, s) + first)};
 }
 
-// The small-volatility limit ln b = -(x/s)^2 / 2 solved for s: always below the root's
-// neighbourhood's far end and of the right order.
+// Below the root and of its order: the small-volatility limit ln b = -(x/s)^2 / 2 solved for s
+// or, near the money, what the largest vega 1/sqrt(2 pi) would need.
 double small_vol_guess(double x, double beta) {
-  return -x / std::sqrt(2.0 * std::max(-std::log(beta) + 0.5 * x, 0.25));
+  constexpr double kLeastInverseVega = 2.5066282746310005024;  // sqrt(2 pi)
+  return std::max(-x / std::sqrt(2.0 * std::max(-std::log(beta) + 0.5 * x, 0.25)),
+                  kLeastInverseVega * beta);
 }
 
 }  // namespace

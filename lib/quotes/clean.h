@@ -25,8 +25,11 @@ struct CleanOptions {
 // Sets `reason` (and `note` where the words help) on each readable quote, first rule
 // that applies: expired, too-short, stale, non-standard, duplicate, no-bid, no-ask,
 // crossed, wide. Of a repeated contract (underlying, expiry, strike, put_call) the
-// one kept is the latest quote time, then the narrowest sound spread, then the highest bid, then the
-// lowest file and line; independent of row order up to identical rows. O(n log n).
+// one kept is the latest quote time, then the narrowest sound spread, then the highest
+// bid, then the lowest ask, then the lowest file and line; independent of row order up
+// to identical rows. Quotes that have a reason already are left alone and compete with
+// none. A multiplier is odd when it differs from the one most rows of its underlying
+// state (of equally common ones the smaller is the ordinary one). O(n log n).
 void clean_quotes(QuoteTable& table, Instant as_of, const CleanOptions& options);
 
 }  // namespace duskgrid::quotes

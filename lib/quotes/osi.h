@@ -22,7 +22,8 @@ struct OsiSymbol {
 // Reads the padded form and the form with the padding spaces removed; nothing when
 // it is neither (root of 1 to 6 letters and digits, a date that exists).
 std::optional<OsiSymbol> parse_osi(std::string_view text);
-// The 21-character form; root cut to 6, strike rounded to a thousandth.
+// The 21-character form; root cut to 6, strike rounded to a thousandth. Empty when the
+// form cannot hold the contract: a year outside 2000..2099, a strike outside 0..99999.999.
 std::string format_osi(const OsiSymbol& symbol);
 
 }  // namespace duskgrid::quotes

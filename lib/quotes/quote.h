@@ -30,6 +30,7 @@ struct Quote {
   PutCall put_call = PutCall::call;
   Exercise exercise = Exercise::european;
   QuotedIn quoted_in = QuotedIn::price;
+  bool adjusted = false;         // an adjusted contract: its OSI root ends in a digit
   Reason reason = Reason::none;
   std::int32_t note = -1;         // index into QuoteTable::notes, -1 for none
   Instant expiry = kNoInstant;

@@ -1,0 +1,33 @@
+// duskgrid: a night's option quotes in, arbitrage-free volatility grids out.
+#include <fmt/format.h>
+
+#include <cstdio>
+#include <exception>
+
+#include "commands.h"
+#include "console.h"
+
+int main(int argc, char** argv) {
+  using namespace duskgrid;
+  CLI::App program{
+      "Turns a night's bid/ask option quote files into arbitrage-free implied-volatility\n"
+      "grids, and accounts for every quote and every number in them."};
+  program.set_version_flag("--version", std::string("duskgrid ") + DUSKGRID_VERSION);
+  program.require_subcommand(1);
+  program.footer(
+      "duskgrid COMMAND --help shows the options of a command, with examples.\n"
+      "Marks need independent validation; nothing here is advice to trade.");
+  int status = console::kInternal;
+  commands::add_build(program, status);
+  commands::add_survey(program, status);
+  commands::add_check(program, status);
+  try {
+    program.parse(argc, argv);
+  } catch (const CLI::ParseError& error) {
+    return program.exit(error) == 0 ? console::kDone : console::kUsage;
+  } catch (const std::exception& error) {
+    fmt::print(stderr, "duskgrid: internal error: {}\n", error.what());
+    return console::kInternal;
+  }
+  return status;
+}

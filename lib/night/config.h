@@ -1,0 +1,86 @@
+// The configuration of a night: one TOML file, or defaults. One table of options
+// (options()) feeds the reader, the resolved copy in run.json, and the manual.
+#pragma once
+
+#include <map>
+#include <optional>
+#include <string>
+#include <string_view>
+#include <vector>
+
+#include "market/curve.h"
+#include "market/parity.h"
+#include "pricing/selection.h"
+#include "publish/grid.h"
+#include "quotes/clean.h"
+#include "quotes/load.h"
+#include "surface/backbone.h"
+
+namespace duskgrid::night {
+
+// What a user states about one underlying.
+struct UnderlyingFacts {
+  std::optional<double> spot;                   // quote currency
+  std::optional<double> carry;                  // continuous yield, decimals a year
+  std::map<std::string, double> forwards;       // date or instant as written, to quote currency
+  std::optional<quotes::Exercise> exercise;     // over what its file says by default
+};
+
+struct FlagOptions {
+  // Share of used quotes that may be missed by more than a half-spread beyond the spread before
+  // the underlying is flagged. Range: 0 to 1.
+  double most_missed = 0.1;
+};
+
+struct NightConfig {
+  std::string as_of_text;                       // as written; the command line wins
+  std::string zone;                             // IANA name; empty for the as-of's own offset
+  std::map<std::string, std::string> settlement_times;
+  std::vector<quotes::SourceOptions> sources;
+  std::map<std::string, double> rates;          // tenor or date, to continuous zero rate
+  std::map<std::string, double> discount_factors;
+  std::map<std::string, UnderlyingFacts> underlyings;
+  std::optional<double> spot;                   // of underlyings that have none of their own
+  quotes::CleanOptions clean;
+  market::ParityOptions parity;
+  pricing::SelectionOptions selection;
+  surface::BackboneOptions backbone;
+  publish::GridOptions grid;
+  FlagOptions flags;
+};
+
+// What must be known before a night can run, worked out of its configuration.
+struct ResolvedNight {
+  quotes::AsOf as_of;
+  quotes::TimeRules times;
+  std::optional<market::ZeroCurve> curve;
+};
+
+// One line of the manual.
+struct OptionEntry {
+  std::string_view table;    // "", "source", "clean", "underlying.NAME", ...
+  std::string_view key;
+  std::string range;         // what may stand there
+  std::string fallback;      // default, as written
+  std::string_view meaning;
+};
+std::vector<OptionEntry> options();
+
+// Reads a configuration; file names in it are relative to `folder`. Failure (configuration, at
+// `where`): TOML that cannot be parsed, an unknown key (named, with the nearest known one), a value
+// of the wrong kind or out of range.
+Result<NightConfig> parse_config(std::string_view toml_text, const std::string& where,
+                                 const std::string& folder);
+// The same from a file. Failure no_input when it cannot be read.
+Result<NightConfig> read_config(const std::string& path);
+
+// Failure: usage for a bad or missing as-of, configuration for a bad zone, time or rate.
+Result<ResolvedNight> resolve(const NightConfig& config);
+
+// Every option with the value it has, as JSON text.
+std::string config_to_json(const NightConfig& config);
+
+// The nearest of `known` by edit distance, or empty when none is near.
+std::string nearest(std::string_view word, const std::vector<std::string>& known);
+
+}  // namespace duskgrid::night

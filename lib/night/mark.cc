@@ -1,0 +1,347 @@
+#include "night/mark.h"
+
+#include <fmt/format.h>
+
+#include <algorithm>
+#include <cmath>
+
+#include "arbitrage/quote_checks.h"
+#include "arbitrage/surface_checks.h"
+#include "market/day_count.h"
+#include "pricing/black.h"
+
+namespace duskgrid::night {
+namespace {
+
+using quotes::PutCall;
+using quotes::Quote;
+using quotes::QuotedIn;
+using quotes::Reason;
+
+// An expiry that lies ahead, with what is known of it so far.
+struct OpenSlice {
+  const quotes::ChainSlice* rows;
+  double year_fraction;
+  bool american;
+  std::optional<market::ForwardEstimate> forward;
+};
+
+// Firm sides count toward arbitrage in the quotes whatever else is wrong with a quote, but for
+// crossed, stale, odd or misread ones.
+bool firm_reason(Reason reason) {
+  switch (reason) {
+    case Reason::expired: case Reason::too_short: case Reason::crossed: case Reason::duplicate:
+    case Reason::stale: case Reason::non_standard: case Reason::outlier: case Reason::unreadable:
+      return false;
+    default: return true;
+  }
+}
+
+class Marker {
+ public:
+  Marker(quotes::QuoteTable& table, const quotes::Chain& chain, const NightConfig& config,
+         const ResolvedNight& night)
+      : table_(table), chain_(chain), config_(config), night_(night) {
+    out_.record.name = table.underlyings[chain.underlying];
+    if (const auto found = config.underlyings.find(out_.record.name);
+        found != config.underlyings.end())
+      facts_ = found->second;
+  }
+
+  MarkedUnderlying run() {
+    open_slices();
+    find_forwards();
+    select();
+    fit();
+    judge_fit();
+    check_the_quotes();
+    if (out_.surface) {
+      check_the_surface();
+      sample();
+    }
+    conclude();
+    return std::move(out_);
+  }
+
+ private:
+  Quote& quote(std::uint32_t row) { return table_.quotes[row]; }
+
+  void open_slices() {
+    for (const auto& slice : chain_.slices) {
+      const Reason first = quote(slice.rows.front()).reason;
+      if (first == Reason::expired || first == Reason::too_short) continue;
+      bool american = false;
+      for (const auto row : slice.rows) {
+        if (facts_.exercise) quote(row).exercise = *facts_.exercise;
+        american = american || quote(row).exercise == quotes::Exercise::american;
+      }
+      slices_.push_back({&slice, market::year_fraction(night_.as_of.instant, slice.expiry),
+                         american, {}});
+    }
+  }
+
+  // Sound two-sided call and put of one strike, rows being by strike and call before put.
+  std::vector<market::ParityPair> pairs_of(const quotes::ChainSlice& slice) {
+    const auto sound = [](const Quote& q) {
+      return q.reason == Reason::none && q.quoted_in == QuotedIn::price;
+    };
+    std::vector<market::ParityPair> pairs;
+    for (std::size_t i = 0; i + 1 < slice.rows.size(); ++i) {
+      const Quote &call = quote(slice.rows[i]), &put = quote(slice.rows[i + 1]);
+      if (call.strike != put.strike || call.put_call == put.put_call) continue;
+      if (sound(call) && sound(put))
+        pairs.push_back({call.strike, call.bid - put.ask, call.ask - put.bid,
+                         quotes::mid(call) + quotes::mid(put)});
+    }
+    return pairs;
+  }
+
+  // A forward given for the very instant, or for the local date of the expiry.
+  std::optional<double> given_forward(quotes::Instant expiry) const {
+    const auto date = quotes::format_date(night_.as_of.clock, expiry);
+    for (const auto& [key, forward] : facts_.forwards) {
+      const auto cell = quotes::parse_date_cell(key);
+      if (!cell) continue;
+      const auto instant = quotes::resolve(*cell, night_.as_of.clock, night_.times.default_time);
+      const bool dated = cell->date && !cell->time_of_day;
+      if (instant == expiry ||
+          (dated && quotes::format_date(night_.as_of.clock, instant) == date))
+        return forward;
+    }
+    return std::nullopt;
+  }
+
+  // As stated, else the middle of what the rows say, else the night's.
+  std::optional<double> spot() {
+    if (facts_.spot) return facts_.spot;
+    std::vector<double> prices;
+    for (const auto& slice : chain_.slices)
+      for (const auto row : slice.rows)
+        if (quote(row).underlying_price > 0) prices.push_back(quote(row).underlying_price);
+    if (prices.empty()) return config_.spot;
+    const auto middle = prices.begin() + static_cast<std::ptrdiff_t>(prices.size() / 2);
+    std::nth_element(prices.begin(), middle, prices.end());
+    return *middle;
+  }
+
+  void find_forwards() {
+    spot_ = spot();
+    std::vector<market::ExpiryPairs> pairs;
+    for (const auto& s : slices_)
+      pairs.push_back(
+          {s.year_fraction, pairs_of(*s.rows), given_forward(s.rows->expiry), s.american});
+    const auto found =
+        market::estimate_forwards(pairs, {spot_, facts_.carry, night_.curve}, config_.parity);
+    for (std::size_t i = 0; i < slices_.size(); ++i) {
+      slices_[i].forward = found[i];
+      if (found[i])
+        out_.forwards.push_back({slices_[i].rows->expiry, slices_[i].year_fraction, *found[i]});
+    }
+  }
+
+  void select() {
+    for (const auto& s : slices_) {
+      if (s.forward) {
+        pricing::select_quotes(
+            table_, *s.rows,
+            {s.year_fraction, s.forward->forward, s.forward->discount_factor}, config_.selection);
+        continue;
+      }
+      for (const auto row : s.rows->rows)
+        if (quote(row).reason == Reason::none) quote(row).reason = Reason::no_forward;
+    }
+  }
+
+  double k_of(const Quote& q, const OpenSlice& s) const {
+    return -pricing::log_moneyness_of_forward(s.forward->forward, q.strike);
+  }
+
+  void fit() {
+    surface::Surface surface{out_.record.name, spot_, {}};
+    std::vector<surface::FitSlice> targets;
+    for (const auto& s : slices_) {
+      surface::FitSlice target{s.year_fraction, {}};
+      if (s.forward)
+        for (const auto row : s.rows->rows)
+          if (const Quote& q = quote(row); q.reason == Reason::none)
+            target.quotes.push_back({k_of(q, s), q.vol_mid, 0.5 * (q.vol_ask - q.vol_bid)});
+      if (target.quotes.empty()) continue;
+      const auto [low, high] = std::minmax_element(
+          target.quotes.begin(), target.quotes.end(),
+          [](const auto& a, const auto& b) { return a.k < b.k; });
+      surface.slices.push_back({s.rows->expiry, s.year_fraction, s.forward->forward,
+                                s.forward->discount_factor, {}, low->k, high->k});
+      fitted_.push_back(&s);
+      targets.push_back(std::move(target));
+    }
+    if (targets.empty()) return;
+    const auto fit = surface::fit_backbone(targets, config_.backbone);
+    if (!fit) {
+      flag("fit failed: " + fit.failure().text());
+      return;
+    }
+    for (std::size_t i = 0; i < targets.size(); ++i) surface.slices[i].backbone = fit->slices[i];
+    if (fit->end == surface::FitEnd::stopped_early) flag("fit stopped early");
+    out_.surface = std::move(surface);
+  }
+
+  // vol_fit of every quote of a fitted expiry, and how far used ones are missed.
+  void judge_fit() {
+    if (!out_.surface) return;
+    std::int64_t missed = 0;
+    for (std::size_t i = 0; i < fitted_.size(); ++i) {
+      const auto& slice = out_.surface->slices[i];
+      SliceQuality quality{slice.expiry, 0, 0, 0};
+      for (const auto row : fitted_[i]->rows->rows) {
+        Quote& q = quote(row);
+        const double k = k_of(q, *fitted_[i]);
+        q.vol_fit = std::sqrt(surface::smile_at(slice.backbone, k).w / slice.year_fraction);
+        if (!std::isfinite(q.vol_fit)) q.vol_fit = quotes::kAbsent;
+        if (q.reason != Reason::none) continue;
+        q.miss = miss_of(q);
+        ++quality.used;
+        if (q.miss == 0) ++quality.inside;
+        if (std::abs(q.miss) > 1) ++missed;
+        quality.rms_vol += (q.vol_fit - q.vol_mid) * (q.vol_fit - q.vol_mid);
+      }
+      quality.rms_vol = std::sqrt(quality.rms_vol / static_cast<double>(quality.used));
+      out_.record.used += quality.used;
+      out_.record.inside += quality.inside;
+      out_.quality.push_back(quality);
+    }
+    if (static_cast<double>(missed) >
+        config_.flags.most_missed * static_cast<double>(out_.record.used))
+      flag(fmt::format("{} of {} used quotes missed by over a half-spread", missed,
+                       out_.record.used));
+  }
+
+  static double miss_of(const Quote& q) {
+    constexpr double kLeastHalfSpread = 1e-6;
+    const double half = std::max(0.5 * (q.vol_ask - q.vol_bid), kLeastHalfSpread);
+    if (q.vol_fit > q.vol_ask) return (q.vol_fit - q.vol_ask) / half;
+    if (q.vol_fit < q.vol_bid) return (q.vol_fit - q.vol_bid) / half;
+    return 0;
+  }
+
+  // A firm side as a price; NaN where there is none.
+  static double firm_price(const Quote& q, double side, const OpenSlice& s) {
+    if (!std::isfinite(side) || !(side > 0)) return quotes::kAbsent;
+    if (q.quoted_in == QuotedIn::price) return side;
+    return pricing::black_price(
+        {q.put_call, s.forward->forward, q.strike, s.forward->discount_factor},
+        side * std::sqrt(s.year_fraction));
+  }
+
+  std::vector<arbitrage::QuotedStrike> firm_strikes(const OpenSlice& s) {
+    std::vector<arbitrage::QuotedStrike> strikes;
+    for (const auto row : s.rows->rows) {
+      const Quote& q = quote(row);
+      if (!firm_reason(q.reason)) continue;
+      if (strikes.empty() || strikes.back().strike != q.strike)
+        strikes.push_back({q.strike, quotes::kAbsent, quotes::kAbsent, quotes::kAbsent,
+                           quotes::kAbsent});
+      auto& strike = strikes.back();
+      const bool call = q.put_call == PutCall::call;
+      (call ? strike.call_bid : strike.put_bid) = firm_price(q, q.bid, s);
+      (call ? strike.call_ask : strike.put_ask) = firm_price(q, q.ask, s);
+    }
+    return strikes;
+  }
+
+  void check_the_quotes() {
+    std::vector<arbitrage::QuotedSlice> firm;
+    for (const auto& s : slices_)
+      if (s.forward)
+        firm.push_back({s.rows->expiry, s.year_fraction, s.forward->forward,
+                        s.forward->discount_factor, s.american, firm_strikes(s)});
+    out_.violations = arbitrage::check_quotes(firm);
+    if (!out_.violations.empty())
+      flag(fmt::format("{} arbitrages among the quotes", out_.violations.size()));
+  }
+
+  void check_the_surface() {
+    auto check = arbitrage::check_surface(*out_.surface);
+    if (check.violations.empty()) return;
+    flag(fmt::format("{} arbitrages in the surface", check.violations.size()));
+    std::move(check.violations.begin(), check.violations.end(),
+              std::back_inserter(out_.violations));
+  }
+
+  void sample() {
+    publish::GridInputs inputs{night_.as_of.instant, night_.as_of.clock, {}, {}, false};
+    for (std::size_t i = 0; i < fitted_.size(); ++i) {
+      inputs.used_k.emplace_back();
+      for (const auto row : fitted_[i]->rows->rows) {
+        const Quote& q = quote(row);
+        inputs.listed_strikes.push_back(q.strike);
+        if (q.reason == Reason::none) inputs.used_k.back().push_back(k_of(q, *fitted_[i]));
+      }
+    }
+    auto& strikes = inputs.listed_strikes;
+    std::sort(strikes.begin(), strikes.end());
+    strikes.erase(std::unique(strikes.begin(), strikes.end()), strikes.end());
+    out_.grid = publish::sample_grid(*out_.surface, inputs, config_.grid);
+  }
+
+  void flag(const std::string& what) {
+    if (!out_.record.message.empty()) out_.record.message += "; ";
+    out_.record.message += what;
+  }
+
+  void flag_expiries(const char* what, auto counts) {
+    const auto n = std::count_if(slices_.begin(), slices_.end(), counts);
+    if (n > 0) flag(fmt::format("{} of {} expiries {}", n, slices_.size(), what));
+  }
+
+  // What stopped the quotes of an underlying that has no surface.
+  std::string why_refused() {
+    quotes::LedgerCounts counts;
+    for (const auto& slice : chain_.slices)
+      for (const auto row : slice.rows) counts.add(quote(row).reason);
+    std::string list;
+    for (const auto& entry : quotes::reasons())
+      if (const auto n = counts.by_reason[static_cast<std::size_t>(entry.reason)];
+          n > 0 && entry.reason != Reason::none)
+        list += fmt::format("{}{} {}", list.empty() ? "" : ", ", entry.word, n);
+    return "no usable quote" + (list.empty() ? list : ": " + list);
+  }
+
+  void conclude() {
+    auto& record = out_.record;
+    record.violations = static_cast<std::int64_t>(out_.violations.size());
+    if (!out_.surface) {
+      record.status = publish::Status::refused;
+      if (fitted_.empty()) record.message = why_refused();
+      return;
+    }
+    record.slices = static_cast<std::int64_t>(out_.surface->slices.size());
+    flag_expiries("have no forward", [](const OpenSlice& s) { return !s.forward; });
+    flag_expiries("have no usable quote", [&](const OpenSlice& s) {
+      return s.forward && std::find(fitted_.begin(), fitted_.end(), &s) == fitted_.end();
+    });
+    flag_expiries("have contradicting near-the-money parity",
+                  [](const OpenSlice& s) { return s.forward && s.forward->breaks > 0; });
+    flag_expiries("are american, fitted as european",
+                  [](const OpenSlice& s) { return s.american; });
+    record.status = record.message.empty() ? publish::Status::published : publish::Status::flagged;
+  }
+
+  quotes::QuoteTable& table_;
+  const quotes::Chain& chain_;
+  const NightConfig& config_;
+  const ResolvedNight& night_;
+  UnderlyingFacts facts_;
+  std::optional<double> spot_;
+  std::vector<OpenSlice> slices_;
+  std::vector<const OpenSlice*> fitted_;  // those in the surface, in its order
+  MarkedUnderlying out_;
+};
+
+}  // namespace
+
+MarkedUnderlying mark_underlying(quotes::QuoteTable& table, const quotes::Chain& chain,
+                                 const NightConfig& config, const ResolvedNight& night) {
+  return Marker(table, chain, config, night).run();
+}
+
+}  // namespace duskgrid::night

@@ -1,0 +1,213 @@
+#include "night/run.h"
+
+#include <sys/resource.h>
+#include <tbb/global_control.h>
+#include <tbb/parallel_for_each.h>
+
+#include <algorithm>
+#include <chrono>
+#include <filesystem>
+#include <mutex>
+#include <numeric>
+#include <thread>
+
+#include "publish/digest.h"
+#include "publish/run_folder.h"
+#include "publish/surface_json.h"
+#include "publish/tables.h"
+#include "publish/text.h"
+
+namespace duskgrid::night {
+namespace {
+
+double cpu_seconds() {
+  rusage usage{};
+  getrusage(RUSAGE_SELF, &usage);
+  const auto seconds = [](const timeval& t) {
+    return static_cast<double>(t.tv_sec) + 1e-6 * static_cast<double>(t.tv_usec);
+  };
+  return seconds(usage.ru_utime) + seconds(usage.ru_stime);
+}
+
+std::int64_t peak_memory_bytes() {
+  rusage usage{};
+  getrusage(RUSAGE_SELF, &usage);
+  return usage.ru_maxrss * std::int64_t{1024};
+}
+
+// Times stages and tells of them.
+class Stages {
+ public:
+  explicit Stages(const Progress& progress) : progress_(progress) {}
+
+  void begin(const std::string& stage) {
+    end();
+    name_ = stage;
+    wall_ = std::chrono::steady_clock::now();
+    cpu_ = cpu_seconds();
+    tell(0, 0);
+  }
+  void tell(std::int64_t done, std::int64_t total) const {
+    if (progress_) progress_(name_, done, total);
+  }
+  const std::vector<publish::StageTime>& end() {
+    if (!name_.empty()) {
+      const std::chrono::duration<double> wall = std::chrono::steady_clock::now() - wall_;
+      times_.push_back({name_, wall.count(), cpu_seconds() - cpu_});
+    }
+    name_.clear();
+    return times_;
+  }
+
+ private:
+  const Progress& progress_;
+  std::string name_;
+  std::chrono::steady_clock::time_point wall_;
+  double cpu_ = 0;
+  std::vector<publish::StageTime> times_;
+};
+
+Result<std::vector<publish::InputRecord>> record_inputs(
+    const std::vector<quotes::FileSummary>& files) {
+  std::vector<publish::InputRecord> inputs;
+  for (const auto& file : files) {
+    auto digest = publish::digest_file(file.file);
+    if (!digest) return digest.failure();
+    inputs.push_back({file.file, digest->sha256, digest->bytes, file.rows});
+  }
+  return inputs;
+}
+
+std::vector<MarkedUnderlying> mark_all(quotes::QuoteTable& table, const NightConfig& config,
+                                       const ResolvedNight& night, const Stages& stages) {
+  const auto chains = quotes::group_chains(table);
+  std::vector<MarkedUnderlying> marked(chains.size());
+  std::vector<std::size_t> order(chains.size());
+  std::iota(order.begin(), order.end(), std::size_t{0});
+  // The largest first, so that no thread is left with one at the end.
+  std::stable_sort(order.begin(), order.end(), [&](std::size_t a, std::size_t b) {
+    return chains[a].read > chains[b].read;
+  });
+  std::mutex telling;
+  std::int64_t done = 0;
+  tbb::parallel_for_each(order.begin(), order.end(), [&](std::size_t i) {
+    marked[i] = mark_underlying(table, chains[i], config, night);
+    const std::lock_guard lock(telling);
+    stages.tell(++done, static_cast<std::int64_t>(chains.size()));
+  });
+  return marked;
+}
+
+using publish::RunFile;
+using publish::RunFolder;
+
+// Everything a run folder holds but run.json and timings.json.
+Result<bool> write_tables(RunFolder& folder, const quotes::QuoteTable& table,
+                          const std::vector<MarkedUnderlying>& marked, const NightConfig& config,
+                          const ResolvedNight& night) {
+  const auto& clock = night.as_of.clock;
+  auto written = folder.add("grid.csv", [&](RunFile& file) {
+    file.write(publish::kGridHeader);
+    for (const auto& m : marked)
+      for (const auto& node : m.grid)
+        file.write(publish::grid_line(node, config.grid.axis, m.record.name, night.as_of));
+  });
+  if (written)
+    written = folder.add("ledger.csv", [&](RunFile& file) {
+      file.write(publish::kLedgerHeader);
+      for (const auto& q : table.quotes) file.write(publish::ledger_line(q, table, clock));
+    });
+  if (written)
+    written = folder.add("forwards.csv", [&](RunFile& file) {
+      file.write(publish::kForwardsHeader);
+      for (const auto& m : marked)
+        for (const auto& row : m.forwards)
+          file.write(publish::forwards_line(row, m.record.name, clock));
+    });
+  if (written)
+    written = folder.add("violations.csv", [&](RunFile& file) {
+      file.write(publish::kViolationsHeader);
+      for (const auto& m : marked)
+        for (const auto& violation : m.violations)
+          file.write(publish::violations_line(violation, m.record.name, clock));
+    });
+  for (const auto& m : marked) {
+    if (!written || !m.surface) continue;
+    written = folder.add("surfaces/" + publish::encode_file_name(m.record.name) + ".json",
+                         [&](RunFile& file) {
+                           file.write(publish::surface_to_json({night.as_of, *m.surface}));
+                         });
+  }
+  return written;
+}
+
+// A run that marked nothing must not take the place of one that did.
+std::string folder_name(const RunOptions& options, const ResolvedNight& night,
+                        const std::vector<MarkedUnderlying>& marked) {
+  const auto date = quotes::format_date(night.as_of.clock, night.as_of.instant);
+  const bool any = std::any_of(marked.begin(), marked.end(),
+                               [](const MarkedUnderlying& m) { return m.surface.has_value(); });
+  std::error_code error;
+  return any || !std::filesystem::exists(options.out + "/" + date, error) ? date
+                                                                          : date + "-refused";
+}
+
+quotes::LedgerCounts count_rows(const quotes::QuoteTable& table) {
+  quotes::LedgerCounts counts;
+  for (const auto& q : table.quotes) counts.add(q.reason);
+  return counts;
+}
+
+}  // namespace
+
+Result<NightOutcome> run_night(const NightConfig& config, const RunOptions& options) {
+  const auto night = resolve(config);
+  if (!night) return night.failure();
+  const int machine = static_cast<int>(std::max(1u, std::thread::hardware_concurrency()));
+  const int threads = options.threads > 0 ? options.threads : machine;
+  const tbb::global_control limit(tbb::global_control::max_allowed_parallelism,
+                                  static_cast<std::size_t>(threads));
+  Stages stages(options.progress);
+
+  stages.begin("read");
+  auto loaded = quotes::load_quotes(config.sources, night->times);
+  if (!loaded) return loaded.failure();
+  auto& table = loaded->table;
+  auto inputs = record_inputs(loaded->files);
+  if (!inputs) return inputs.failure();
+  stages.begin("clean");
+  quotes::clean_quotes(table, night->as_of.instant, config.clean);
+  stages.begin("mark");
+  auto marked = mark_all(table, config, *night, stages);
+
+  stages.begin("publish");
+  NightOutcome outcome;
+  outcome.record = {DUSKGRID_VERSION, night->as_of, config_to_json(config), std::move(*inputs), {},
+                    count_rows(table), {}};
+  if (!outcome.record.rows.adds_up())
+    return Failure{Fault::no_convergence, "ledger", "the counts do not add up to the rows read"};
+  for (const auto& m : marked) outcome.record.underlyings.push_back(m.record);
+  auto created = RunFolder::create(options.out, folder_name(options, *night, marked));
+  if (!created) return created.failure();
+  auto& folder = **created;
+  if (auto written = write_tables(folder, table, marked, config, *night); !written)
+    return written.failure();
+  outcome.record.outputs = folder.digests();
+  auto written = folder.add("run.json", [&](RunFile& file) {
+    file.write(publish::run_to_json(outcome.record));
+  });
+  const publish::Timings timings{stages.end(), threads, peak_memory_bytes()};
+  if (written)
+    written = folder.add("timings.json", [&](RunFile& file) {
+      file.write(publish::timings_to_json(timings));
+    });
+  if (written) written = folder.commit();
+  if (!written) return written.failure();
+  outcome.folder = folder.final_path();
+  for (auto& m : marked) m.grid.clear();
+  outcome.underlyings = std::move(marked);
+  outcome.files = std::move(loaded->files);
+  return outcome;
+}
+
+}  // namespace duskgrid::night

@@ -1,0 +1,130 @@
+#include "publish/run_folder.h"
+
+#include <fcntl.h>
+#include <sys/file.h>
+#include <sys/stat.h>
+#include <unistd.h>
+
+#include <cerrno>
+#include <cstring>
+#include <filesystem>
+#include <system_error>
+#include <vector>
+
+namespace duskgrid::publish {
+namespace {
+
+namespace fs = std::filesystem;
+
+constexpr std::size_t kBlock = 1 << 18;
+
+Failure cannot(const std::string& path, const std::string& what) {
+  return {Fault::cannot_create, path, what};
+}
+
+std::string last_error() { return std::strerror(errno); }
+
+bool sync_path(const std::string& path) {
+  const int descriptor = ::open(path.c_str(), O_RDONLY | O_CLOEXEC);
+  if (descriptor < 0) return false;
+  const bool ok = ::fsync(descriptor) == 0;
+  ::close(descriptor);
+  return ok;
+}
+
+// Puts `partial` where `final` is. Where the kernel can swap the two names there is no
+// instant without a folder of that name; elsewhere the old one steps aside first.
+bool swap_in(const std::string& partial, const std::string& final) {
+  struct stat found{};
+  if (::lstat(final.c_str(), &found) != 0) return ::rename(partial.c_str(), final.c_str()) == 0;
+  if (::renameat2(AT_FDCWD, partial.c_str(), AT_FDCWD, final.c_str(), RENAME_EXCHANGE) == 0)
+    return true;
+  const std::string aside = partial + ".old";
+  if (::rename(final.c_str(), aside.c_str()) != 0) return false;
+  if (::rename(partial.c_str(), final.c_str()) == 0) {
+    std::error_code ignored;
+    fs::remove_all(aside, ignored);
+    return true;
+  }
+  ::rename(aside.c_str(), final.c_str());
+  return false;
+}
+
+}  // namespace
+
+void RunFile::write(std::string_view text) {
+  buffer_ += text;
+  if (buffer_.size() >= kBlock) flush();
+}
+
+void RunFile::flush() {
+  sum_.add(buffer_);
+  std::size_t done = 0;
+  while (done < buffer_.size() && error_.empty()) {
+    const ssize_t n = ::write(descriptor_, buffer_.data() + done, buffer_.size() - done);
+    if (n > 0) done += static_cast<std::size_t>(n);
+    else if (errno != EINTR) error_ = last_error();
+  }
+  buffer_.clear();
+}
+
+RunFolder::RunFolder(std::string out, std::string name)
+    : out_(std::move(out)), final_(out_ + "/" + name), partial_(out_ + "/.partial-" + name) {}
+
+RunFolder::~RunFolder() {
+  std::error_code ignored;
+  if (lock_ >= 0) fs::remove_all(partial_, ignored);
+  if (lock_ >= 0) ::close(lock_);
+}
+
+Result<std::unique_ptr<RunFolder>> RunFolder::create(const std::string& out,
+                                                     const std::string& name) {
+  std::unique_ptr<RunFolder> folder(new RunFolder(out, name));
+  std::error_code error;
+  fs::create_directories(out, error);
+  if (error) return cannot(out, "the output folder cannot be made: " + error.message());
+  const std::string lock = out + "/.lock";
+  folder->lock_ = ::open(lock.c_str(), O_RDWR | O_CREAT | O_CLOEXEC, 0644);
+  if (folder->lock_ < 0) return cannot(out, "cannot be written to: " + last_error());
+  if (::flock(folder->lock_, LOCK_EX | LOCK_NB) != 0) {
+    ::close(folder->lock_);
+    folder->lock_ = -1;
+    return cannot(out, "another run is writing here; wait for it or choose another --out");
+  }
+  fs::remove_all(folder->partial_, error);
+  if (!error) fs::create_directories(folder->partial_, error);
+  if (error) return cannot(folder->partial_, error.message());
+  return folder;
+}
+
+Result<bool> RunFolder::open(RunFile& file, const std::string& path) {
+  const fs::path full = fs::path(partial_) / path;
+  std::error_code error;
+  fs::create_directories(full.parent_path(), error);
+  if (error) return cannot(full.parent_path(), error.message());
+  file.descriptor_ = ::open(full.c_str(), O_WRONLY | O_CREAT | O_EXCL | O_CLOEXEC, 0644);
+  if (file.descriptor_ < 0) return cannot(full, last_error());
+  return true;
+}
+
+Result<bool> RunFolder::close(RunFile& file, const std::string& path) {
+  file.flush();
+  if (file.error_.empty() && ::fsync(file.descriptor_) != 0) file.error_ = last_error();
+  ::close(file.descriptor_);
+  if (!file.error_.empty()) return cannot(final_ + "/" + path, file.error_);
+  digests_[path] = file.sum_.hex();
+  return true;
+}
+
+Result<bool> RunFolder::commit() {
+  std::error_code error;
+  for (const auto& entry : fs::recursive_directory_iterator(partial_, error))
+    if (entry.is_directory() && !sync_path(entry.path())) return cannot(entry.path(), last_error());
+  if (error) return cannot(partial_, error.message());
+  if (!sync_path(partial_)) return cannot(partial_, last_error());
+  if (!swap_in(partial_, final_)) return cannot(final_, "cannot be replaced: " + last_error());
+  sync_path(out_);
+  return true;
+}
+
+}  // namespace duskgrid::publish

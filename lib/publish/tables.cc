@@ -1,0 +1,117 @@
+#include "publish/tables.h"
+
+#include <fmt/format.h>
+
+#include "publish/text.h"
+
+namespace duskgrid::publish {
+namespace {
+
+// One line of cells. Text is quoted and guarded, numbers are shortest round trip.
+class Line {
+ public:
+  Line& text(std::string_view cell) { return raw(csv_text(cell)); }
+  Line& number(double cell) { return raw(csv_number(cell)); }
+  Line& count(std::int64_t cell) { return raw(fmt::format("{}", cell)); }
+  // Words and instants of our own: nothing in them to quote.
+  Line& raw(std::string_view cell) {
+    if (!first_) out_ += ',';
+    first_ = false;
+    out_ += cell;
+    return *this;
+  }
+  Line& empty(int cells) {
+    for (int i = 0; i < cells; ++i) raw("");
+    return *this;
+  }
+  std::string end() { return std::move(out_) + '\n'; }
+
+ private:
+  std::string out_;
+  bool first_ = true;
+};
+
+}  // namespace
+
+std::string grid_line(const GridNode& node, Axis axis, std::string_view underlying,
+                      const quotes::AsOf& as_of) {
+  return Line()
+      .raw(quotes::format_instant(as_of.clock, as_of.instant))
+      .text(underlying)
+      .raw(quotes::format_instant(as_of.clock, node.expiry))
+      .raw(node.tenor)
+      .number(node.year_fraction)
+      .number(node.forward)
+      .number(node.discount_factor)
+      .raw(word(axis))
+      .number(node.point)
+      .number(node.strike)
+      .number(node.vol)
+      .empty(2)  // the band
+      .raw(word(node.support))
+      .end();
+}
+
+std::string ledger_line(const quotes::Quote& q, const quotes::QuoteTable& table,
+                        const quotes::Clock& clock) {
+  Line line;
+  line.text(table.files[q.file]).count(q.line);
+  if (q.reason == quotes::Reason::unreadable) {
+    line.empty(8);
+  } else {
+    line.text(table.underlyings[q.underlying])
+        .raw(quotes::format_instant(clock, q.expiry))
+        .number(q.strike)
+        .raw(q.put_call == quotes::PutCall::call ? "C" : "P")
+        .raw(q.exercise == quotes::Exercise::european ? "european" : "american")
+        .raw(q.quoted_in == quotes::QuotedIn::price ? "price" : "vol")
+        .number(q.bid)
+        .number(q.ask);
+  }
+  return line.raw(word(quotes::state_of(q.reason)))
+      .raw(word(q.reason))
+      .text(q.note < 0 ? std::string_view() : table.notes[q.note])
+      .number(q.vol_bid)
+      .number(q.vol_ask)
+      .number(q.vol_fit)
+      .number(q.miss)
+      .end();
+}
+
+std::string forwards_line(const ForwardRow& row, std::string_view underlying,
+                          const quotes::Clock& clock) {
+  const auto& e = row.estimate;
+  return Line()
+      .text(underlying)
+      .raw(quotes::format_instant(clock, row.expiry))
+      .number(row.year_fraction)
+      .number(e.forward)
+      .number(e.discount_factor)
+      .number(e.zero_rate)
+      .number(e.carry.value_or(quotes::kAbsent))
+      .count(e.pairs)
+      .count(e.breaks)
+      .raw(word(e.source))
+      .end();
+}
+
+std::string violations_line(const arbitrage::Violation& v, std::string_view underlying,
+                            const quotes::Clock& clock) {
+  Line line;
+  line.text(underlying)
+      .raw(word(v.scope))
+      .raw(word(v.kind))
+      .raw(quotes::format_instant(clock, v.expiry))
+      .raw(v.expiry_2 == quotes::kNoInstant ? "" : quotes::format_instant(clock, v.expiry_2));
+  for (std::size_t i = 0; i < 3; ++i)
+    line.number(i < v.strikes.size() ? v.strikes[i] : quotes::kAbsent);
+  // The legs may start with a plus or a minus that is no formula: the guard keeps spreadsheets from
+  // running them, as for any text.
+  return line.number(v.amount)
+      .number(v.vol_points)
+      .number(v.half_spreads)
+      .text(format_legs(v.legs, clock))
+      .end();
+}
+
+}  // namespace duskgrid::publish

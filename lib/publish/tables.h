@@ -1,0 +1,44 @@
+// The CSV tables of a run. Each has a header line and one writer a row; columns are described
+// in docs/formats.md.
+#pragma once
+
+#include <string>
+#include <string_view>
+
+#include "arbitrage/violation.h"
+#include "market/parity.h"
+#include "publish/grid.h"
+#include "quotes/instants.h"
+#include "quotes/quote.h"
+
+namespace duskgrid::publish {
+
+inline constexpr std::string_view kGridHeader =
+    "as_of,underlying,expiry,tenor,year_fraction,forward,discount_factor,axis,point,strike,vol,"
+    "vol_low,vol_high,support\n";
+inline constexpr std::string_view kLedgerHeader =
+    "file,line,underlying,expiry,strike,put_call,exercise,quoted_in,bid,ask,state,reason,note,"
+    "vol_bid,vol_ask,vol_fit,miss\n";
+inline constexpr std::string_view kForwardsHeader =
+    "underlying,expiry,year_fraction,forward,discount_factor,zero_rate,carry,pairs,breaks,source\n";
+inline constexpr std::string_view kViolationsHeader =
+    "underlying,scope,kind,expiry,expiry_2,strike_1,strike_2,strike_3,amount,vol_points,"
+    "half_spreads,legs\n";
+
+struct ForwardRow {
+  quotes::Instant expiry;
+  double year_fraction;
+  market::ForwardEstimate estimate;
+};
+
+// Lines with their line feed. Numbers that do not exist are empty cells.
+std::string grid_line(const GridNode& node, Axis axis, std::string_view underlying,
+                      const quotes::AsOf& as_of);
+std::string ledger_line(const quotes::Quote& quote, const quotes::QuoteTable& table,
+                        const quotes::Clock& clock);
+std::string forwards_line(const ForwardRow& row, std::string_view underlying,
+                          const quotes::Clock& clock);
+std::string violations_line(const arbitrage::Violation& violation, std::string_view underlying,
+                            const quotes::Clock& clock);
+
+}  // namespace duskgrid::publish

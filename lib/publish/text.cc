@@ -1,0 +1,75 @@
+#include "publish/text.h"
+
+#include <fmt/format.h>
+
+#include <charconv>
+#include <cmath>
+
+namespace duskgrid::publish {
+namespace {
+
+constexpr std::string_view kRunByASpreadsheet = "=+-@\t\r";
+
+bool plain(char c) {
+  return (c >= 'a' && c <= 'z') || (c >= 'A' && c <= 'Z') || (c >= '0' && c <= '9') || c == '_' ||
+         c == '-';
+}
+
+}  // namespace
+
+std::string csv_text(std::string_view text) {
+  std::string out;
+  if (!text.empty() && kRunByASpreadsheet.find(text.front()) != std::string_view::npos) out = '\'';
+  out += text;
+  if (out.find_first_of(",\"\r\n") == std::string::npos) return out;
+  std::string quoted = "\"";
+  for (const char c : out) {
+    if (c == '"') quoted += '"';
+    quoted += c;
+  }
+  return quoted + '"';
+}
+
+std::string unguarded(std::string_view cell) {
+  const bool guarded = cell.size() > 1 && cell[0] == '\'' &&
+                       kRunByASpreadsheet.find(cell[1]) != std::string_view::npos;
+  return std::string(guarded ? cell.substr(1) : cell);
+}
+
+std::string csv_number(double value) {
+  // Adding zero turns a negative zero into zero.
+  return std::isfinite(value) ? fmt::format("{}", value + 0.0) : std::string();
+}
+
+std::string encode_file_name(std::string_view name) {
+  if (name.empty()) return "%";
+  std::string out;
+  for (std::size_t i = 0; i < name.size(); ++i) {
+    const bool inner_dot = name[i] == '.' && i > 0;
+    if (plain(name[i]) || inner_dot) out += name[i];
+    else out += fmt::format("%{:02X}", static_cast<unsigned char>(name[i]));
+  }
+  return out;
+}
+
+std::optional<std::string> decode_file_name(std::string_view file_name) {
+  if (file_name == "%") return std::string();
+  std::string out;
+  for (std::size_t i = 0; i < file_name.size(); ++i) {
+    if (file_name[i] != '%') {
+      out += file_name[i];
+      continue;
+    }
+    unsigned value = 0;
+    const char* first = file_name.data() + i + 1;
+    if (i + 2 >= file_name.size()) return std::nullopt;
+    const auto [end, error] = std::from_chars(first, first + 2, value, 16);
+    if (error != std::errc{} || end != first + 2) return std::nullopt;
+    out += static_cast<char>(value);
+    i += 2;
+  }
+  if (encode_file_name(out) != file_name) return std::nullopt;
+  return out;
+}
+
+}  // namespace duskgrid::publish

@@ -1,0 +1,123 @@
+// From the cells of a row to its contracts: one Quote, or two for a call-put row. Not
+// for splitting rows (rows.h) nor for judging quotes (clean.h).
+#pragma once
+
+#include <array>
+#include <cstdint>
+#include <map>
+#include <optional>
+#include <string>
+#include <string_view>
+#include <vector>
+
+#include "quotes/cells.h"
+#include "quotes/columns.h"
+#include "quotes/load.h"
+#include "quotes/memo.h"
+#include "quotes/osi.h"
+#include "quotes/quote.h"
+#include "quotes/result.h"
+
+namespace duskgrid::quotes {
+
+// Why a contract is unreadable, or a remark on one that is not.
+enum class Note : std::uint8_t {
+  none,
+  open_quote,
+  cell_count,
+  no_underlying,
+  bad_underlying,
+  no_expiry,
+  bad_expiry,
+  bad_expiry_time,
+  no_strike,
+  bad_strike,
+  strike_not_positive,
+  no_put_call,
+  bad_put_call,
+  bad_symbol,
+  bad_bid,
+  bad_ask,
+  bad_bid_vol,
+  bad_ask_vol,
+  bad_price,
+  bad_exercise,
+  unknown_settlement,
+};
+inline constexpr std::size_t kNoteCount = 21;
+std::string_view text(Note note);
+
+// Reads the rows of one file. `names` and `table` are shared by all files of a load.
+class ContractReader {
+ public:
+  ContractReader(const SourceOptions& options, const TimeRules& rules, const ColumnMap& columns,
+                 std::size_t header_cells, QuoteTable& table, NameIndex& names);
+
+  // A fixed value that no row could use, or a price column without a half-spread.
+  std::optional<Failure> problem() const;
+
+  // Quotes that each row becomes.
+  int contracts_per_row() const { return contracts_per_row_; }
+
+  // Adds the quotes of a row. Returns how many of them are unreadable. `cells` is
+  // changed and restored.
+  int add_row(std::vector<std::string_view>& cells, std::int32_t file, std::int64_t line);
+  // Adds quotes for a row that could not be split. Returns how many.
+  int add_unreadable(Note note, std::int32_t file, std::int64_t line);
+
+ private:
+  // Where the fields of one side stand in a row, -1 for those absent. Fixed values
+  // come behind the cells of the file.
+  struct SideColumns {
+    std::array<int, kFieldCount> index;
+    QuotedIn quoted_in = QuotedIn::price;
+    bool from_price = false;    // bid and ask are made from one price
+    bool needs_symbol = false;  // the symbol carries part of the contract
+    int at(Field field) const { return index[static_cast<std::size_t>(field)]; }
+    bool has(Field field) const { return at(field) >= 0; }
+  };
+  SideColumns side_columns(const ColumnMap& columns, Side side) const;
+  std::optional<Failure> problem_with_fixed(const std::string& word, const std::string& text) const;
+
+  std::string_view cell(Field field) const;
+  double optional_number(Field field, double scale = 1) const;
+  bool read_number(Field field, double scale, double& to) const;
+
+  Note read_contract(Quote& quote);
+  Note read_symbol();
+  Note read_underlying(Quote& quote);
+  Note read_put_call(Quote& quote) const;
+  Note read_strike(Quote& quote) const;
+  Note read_expiry(Quote& quote);
+  Note read_time_of_day(TimeOfDay& time);
+  Note read_exercise(Quote& quote) const;
+  Note read_quotes(Quote& quote) const;
+  Note read_price(Quote& quote) const;
+  void read_extras(Quote& quote);
+  double read_underlying_price() const;
+  void mark_unreadable(Quote& quote, std::int32_t note) const;
+  std::int32_t note_number(Note note);
+  std::int32_t cell_count_note(std::size_t cells);
+
+  const SourceOptions& options_;
+  QuoteTable& table_;
+  NameIndex& names_;
+  CellRules rules_;
+  std::map<std::string, std::chrono::seconds> settlement_times_;
+  std::chrono::seconds default_time_;
+  DateMemo expiries_, quote_times_, plain_dates_;
+
+  std::size_t header_cells_;
+  int contracts_per_row_;
+  std::vector<std::string_view> fixed_;
+  std::array<SideColumns, 2> sides_;  // the second for the put of a call-put row
+  std::array<std::int32_t, kNoteCount> note_numbers_;
+  std::map<std::size_t, std::int32_t> cell_count_notes_;
+
+  // The row being read.
+  const std::vector<std::string_view>* cells_ = nullptr;
+  const SideColumns* side_ = nullptr;
+  std::optional<OsiSymbol> symbol_;
+};
+
+}  // namespace duskgrid::quotes

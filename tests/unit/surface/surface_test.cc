@@ -1,0 +1,121 @@
+#include "surface/surface.h"
+
+#include <gtest/gtest.h>
+
+#include <cmath>
+
+namespace duskgrid::surface {
+namespace {
+
+// A handful of products and an exponential of numbers of order 1: relative.
+constexpr double kRounding = 1e-14;
+
+Surface made(std::optional<double> spot = 100) {
+  return {"HALYRD",
+          spot,
+          {{quotes::Instant{}, 0.25, 101, 0.99, {0.01, -0.5, 0.15}, -0.3, 0.2},
+           {quotes::Instant{}, 0.75, 103, 0.97, {0.03, -0.4, 0.25}, -0.5, 0.3},
+           {quotes::Instant{}, 2.00, 107, 0.91, {0.09, -0.3, 0.45}, -0.8, 0.6}}};
+}
+
+TEST(SmileAtTime, AtASliceIsTheSlice) {
+  const Surface s = made();
+  for (const Slice& slice : s.slices) {
+    const TimedSmile smile = smile_at_time(s, slice.year_fraction);
+    EXPECT_EQ(smile.parameters.theta, slice.backbone.theta);
+    EXPECT_EQ(smile.parameters.rho, slice.backbone.rho);
+    EXPECT_EQ(smile.parameters.psi, slice.backbone.psi);
+    EXPECT_EQ(smile.shift, 0);
+  }
+}
+
+TEST(SmileAtTime, HalfWayBetweenSlicesThetaPsiAndRhoPsiAreMeans) {
+  const TimedSmile smile = smile_at_time(made(), 0.5);
+  EXPECT_DOUBLE_EQ(smile.parameters.theta, 0.02);
+  EXPECT_DOUBLE_EQ(smile.parameters.psi, 0.2);
+  EXPECT_DOUBLE_EQ(smile.parameters.rho * smile.parameters.psi, 0.5 * (-0.075 - 0.1));
+}
+
+TEST(SmileAtTime, VarianceIsContinuousAcrossSlices) {
+  const Surface s = made();
+  constexpr double kStep = 1e-9;
+  for (const Slice& slice : s.slices)
+    for (const double k : {-0.5, 0.0, 0.3})
+      // Slopes in time are below 1 a year here.
+      for (const double t : {slice.year_fraction - kStep, slice.year_fraction + kStep})
+        EXPECT_NEAR(point_at(s, k, t).w, smile_at(slice.backbone, k).w, kStep) << k << ' ' << t;
+}
+
+TEST(SmileAtTime, BeforeTheFirstSliceItsVolatilitiesHold) {
+  const Surface s = made();
+  for (const double k : {-0.4, 0.0, 0.2})
+    for (const double t : {1e-4, 0.1, 0.2499})
+      EXPECT_NEAR(vol_at(s, k, t), vol_at(s, k, 0.25), kRounding) << k << ' ' << t;
+}
+
+TEST(SmileAtTime, AfterTheLastSliceEveryStrikeGainsTheSameVariance) {
+  const Surface s = made();
+  for (const double k : {-1.0, 0.0, 0.7}) {
+    const SmilePoint last = point_at(s, k, 2.0), later = point_at(s, k, 3.0);
+    EXPECT_NEAR(later.w - last.w, 0.09 / 2, kRounding) << k;
+    EXPECT_EQ(later.dw_dk, last.dw_dk) << k;
+    EXPECT_EQ(later.d2w_dk2, last.d2w_dk2) << k;
+  }
+  EXPECT_NEAR(vol_at(s, 0, 9.0), vol_at(s, 0, 2.0), kRounding);
+}
+
+TEST(SmileAtTime, TwoFlatSlicesStayFlatBetween) {
+  Surface s = made();
+  s.slices[0].backbone = {0.01, 0.2, 0};
+  s.slices[1].backbone = {0.03, -0.7, 0};
+  for (const double k : {-1.0, 0.0, 1.0}) EXPECT_DOUBLE_EQ(point_at(s, k, 0.5).w, 0.02);
+}
+
+TEST(SmileAtTime, OneSliceServesEveryTime) {
+  Surface s = made();
+  s.slices.resize(1);
+  EXPECT_NEAR(vol_at(s, 0.1, 0.05), vol_at(s, 0.1, 0.25), kRounding);
+  EXPECT_NEAR(vol_at(s, 0.0, 4.0), vol_at(s, 0.0, 0.25), kRounding);
+}
+
+TEST(CarriedAt, AtASliceIsTheSlices) {
+  const Carried c = carried_at(made(), 0.75);
+  EXPECT_EQ(c.forward, 103);
+  EXPECT_EQ(c.discount_factor, 0.97);
+}
+
+TEST(CarriedAt, BetweenSlicesLogarithmsAreLinear) {
+  const Carried c = carried_at(made(), 0.5);
+  EXPECT_NEAR(c.forward, std::sqrt(101.0 * 103.0), 103 * kRounding);
+  EXPECT_NEAR(c.discount_factor, std::sqrt(0.99 * 0.97), kRounding);
+}
+
+TEST(CarriedAt, BeforeTheFirstSliceTheLineStartsAtSpotAndOne) {
+  const Carried c = carried_at(made(), 0.125);
+  EXPECT_NEAR(c.forward, std::sqrt(100.0 * 101.0), 101 * kRounding);
+  EXPECT_NEAR(c.discount_factor, std::sqrt(0.99), kRounding);
+}
+
+TEST(CarriedAt, WithoutASpotTheFirstTwoSlicesGrowthHoldsBeforeThem) {
+  const Carried c = carried_at(made({}), 0.125);
+  EXPECT_NEAR(c.forward, 101 * std::pow(103.0 / 101.0, -0.25), 101 * kRounding);
+  Surface one = made({});
+  one.slices.resize(1);
+  EXPECT_NEAR(carried_at(one, 0.125).forward, 101, 101 * kRounding);
+}
+
+TEST(CarriedAt, BeyondTheLastSliceTheLastGrowthGoesOn) {
+  const Carried c = carried_at(made(), 3.25);
+  EXPECT_NEAR(c.forward, 107.0 * 107.0 / 103.0, 107 * kRounding);
+  EXPECT_NEAR(c.discount_factor, 0.91 * 0.91 / 0.97, kRounding);
+}
+
+TEST(CarriedAt, OneSliceGoesOnAtItsOwnRates) {
+  Surface s = made();
+  s.slices.resize(1);
+  EXPECT_NEAR(carried_at(s, 0.5).forward, 101.0 * 101.0 / 100.0, 102 * kRounding);
+  EXPECT_NEAR(carried_at(s, 0.5).discount_factor, 0.99 * 0.99, kRounding);
+}
+
+}  // namespace
+}  // namespace duskgrid::surface
