@@ -3,7 +3,6 @@
 #include <algorithm>
 #include <cmath>
 #include <limits>
-#include <optional>
 
 #include "pricing/invert.h"
 
@@ -72,16 +71,14 @@ class Finder {
     check_boxes(slice);
   }
 
-  // Breaks between an early slice and every later one; a strike is reported once.
-  void check_calendar(std::span<const QuotedSlice> slices, std::size_t early, PutCall side) {
-    const auto rungs = ladder(slices[early], side);
-    std::vector<bool> reported(rungs.size(), false);
-    for (std::size_t late = early + 1; late < slices.size(); ++late) {
-      const auto later = ladder(slices[late], side);
-      for (std::size_t i = 0; i < rungs.size(); ++i)
-        if (!reported[i])
-          reported[i] = check_calendar_at(slices[early], rungs[i], slices[late], later, side);
-    }
+  // Neighbouring expiries first. A wider pair is news only where no narrower one has sold the same
+  // early quote or bought the same late one.
+  void check_calendars(std::span<const QuotedSlice> slices, PutCall side) {
+    std::vector<TimedLadder> ladders;
+    for (const QuotedSlice& s : slices) ladders.emplace_back(s, side);
+    for (std::size_t gap = 1; gap < ladders.size(); ++gap)
+      for (std::size_t early = 0; early + gap < ladders.size(); ++early)
+        check_calendar_pair(ladders[early], ladders[early + gap], side, gap);
   }
 
  private:
@@ -133,24 +130,22 @@ class Finder {
 
   void check_pairs(const QuotedSlice& slice, PutCall side, const std::vector<Rung>& rungs,
                    bool buy_lower, double width_value) {
-    // Start of the stretch above the last adjacent break: a wider pair within it is news.
-    std::size_t start = 0;
+    // What a strike brings to any pair with a higher one.
+    const auto lead = [&](std::size_t i) {
+      const double width = width_value * rungs[i].strike;
+      return buy_lower ? width - rungs[i].ask : rungs[i].bid + width;
+    };
+    // The best below the neighbour since the last break: a wider pair within that stretch is news.
+    const std::size_t none = rungs.size();
+    std::size_t best = none;
     for (std::size_t j = 1; j < rungs.size(); ++j) {
-      if (record_pair(slice, side, rungs[j - 1], rungs[j], buy_lower, width_value)) {
-        start = j;
-        continue;
-      }
-      std::size_t best = j;
-      double most = 0;
-      for (std::size_t i = start; i + 1 < j; ++i) {
-        const double amount = pair_amount(rungs[i], rungs[j], buy_lower, width_value);
-        if (amount > most) {
-          most = amount;
-          best = i;
-        }
-      }
-      if (best < j && record_pair(slice, side, rungs[best], rungs[j], buy_lower, width_value))
-        start = j;
+      const bool broken =
+          record_pair(slice, side, rungs[j - 1], rungs[j], buy_lower, width_value) ||
+          (best != none && record_pair(slice, side, rungs[best], rungs[j], buy_lower, width_value));
+      if (broken)
+        best = none;
+      else if (std::isfinite(lead(j - 1)) && (best == none || lead(best) < lead(j - 1)))
+        best = j - 1;
     }
   }
 
@@ -249,33 +244,60 @@ class Finder {
             sell(1, pb, PutCall::put, e), buy(1, pa, PutCall::put, e)});
   }
 
-  bool check_calendar_at(const QuotedSlice& early, const Rung& rung, const QuotedSlice& late,
-                         const std::vector<Rung>& later, PutCall side) {
-    if (!std::isfinite(rung.bid) || early.american != late.american) return false;
-    // At equal K/F a later option is worth more in units of its own D F.
-    const double ratio = early.american ? 1.0 : late.forward / early.forward;
-    const double quantity =
-        early.american ? 1.0
-                       : early.discount_factor * early.forward / (late.discount_factor * late.forward);
-    const double strike = rung.strike * ratio;
-    const auto upper = std::lower_bound(later.begin(), later.end(), strike * (1 - 1e-12),
-                                        [](const Rung& r, double k) { return r.strike < k; });
-    if (upper == later.end()) return false;
-    if (std::abs(upper->strike - strike) <= 1e-12 * strike)
-      return record(early, Kind::calendar, rung.bid - quantity * upper->ask,
-                    {rung.strike, upper->strike},
-                    {sell(1, rung, side, early.expiry), buy(quantity, *upper, side, late.expiry)},
-                    late.expiry);
-    if (upper == later.begin()) return false;
-    const Rung& lower = *(upper - 1);
-    const double weight = (upper->strike - strike) / (upper->strike - lower.strike);
-    const double cost = quantity * (weight * lower.ask + (1 - weight) * upper->ask);
-    return record(early, Kind::calendar, rung.bid - cost,
-                  {rung.strike, lower.strike, upper->strike},
-                  {sell(1, rung, side, early.expiry),
-                   buy(quantity * weight, lower, side, late.expiry),
-                   buy(quantity * (1 - weight), *upper, side, late.expiry)},
-                  late.expiry);
+  // One side of a slice, and the narrowest gap in expiries at which each quote was part of a
+  // calendar break, 0 for never.
+  struct TimedLadder {
+    TimedLadder(const QuotedSlice& of, PutCall side)
+        : slice(&of), rungs(ladder(of, side)), sold(rungs.size(), 0), bought(rungs.size(), 0) {}
+    const QuotedSlice* slice;
+    std::vector<Rung> rungs;
+    std::vector<std::size_t> sold, bought;
+  };
+
+  void check_calendar_pair(TimedLadder& early, TimedLadder& late, PutCall side, std::size_t gap) {
+    if (early.slice->american != late.slice->american) return;
+    for (std::size_t i = 0; i < early.rungs.size(); ++i)
+      if (early.sold[i] == 0 && std::isfinite(early.rungs[i].bid))
+        check_calendar_at(early, i, late, side, gap);
+  }
+
+  void check_calendar_at(TimedLadder& early, std::size_t i, TimedLadder& late, PutCall side,
+                         std::size_t gap) {
+    const QuotedSlice &first = *early.slice, &second = *late.slice;
+    const Rung& rung = early.rungs[i];
+    // At equal K/F a later option is worth more in units of its own D F; an American one at equal K.
+    const bool american = first.american;
+    const double quantity = american ? 1.0
+                                     : first.discount_factor * first.forward /
+                                           (second.discount_factor * second.forward);
+    const double strike = american ? rung.strike : rung.strike * second.forward / first.forward;
+    const auto next = std::lower_bound(late.rungs.begin(), late.rungs.end(), strike * (1 - 1e-12),
+                                       [](const Rung& r, double k) { return r.strike < k; });
+    if (next == late.rungs.end()) return;
+    const auto upper = static_cast<std::size_t>(next - late.rungs.begin());
+    const bool same = std::abs(next->strike - strike) <= 1e-12 * strike;
+    if (!same && upper == 0) return;
+    const std::size_t lower = same ? upper : upper - 1;
+    const auto told = [&](std::size_t j) { return late.bought[j] > 0 && late.bought[j] < gap; };
+    if (told(lower) || told(upper)) return;
+
+    const Rung &a = late.rungs[lower], &b = late.rungs[upper];
+    std::vector<double> strikes{rung.strike, a.strike};
+    std::vector<Leg> legs{sell(1, rung, side, first.expiry)};
+    double cost = quantity * a.ask;
+    if (same) {
+      legs.push_back(buy(quantity, a, side, second.expiry));
+    } else {
+      const double weight = (b.strike - strike) / (b.strike - a.strike);
+      cost = quantity * (weight * a.ask + (1 - weight) * b.ask);
+      strikes.push_back(b.strike);
+      legs.push_back(buy(quantity * weight, a, side, second.expiry));
+      legs.push_back(buy(quantity * (1 - weight), b, side, second.expiry));
+    }
+    if (!record(first, Kind::calendar, rung.bid - cost, std::move(strikes), std::move(legs),
+                second.expiry))
+      return;
+    early.sold[i] = late.bought[lower] = late.bought[upper] = gap;
   }
 
   double tolerance_;
@@ -286,10 +308,8 @@ class Finder {
 
 std::vector<Violation> check_quotes(std::span<const QuotedSlice> slices, double tolerance) {
   Finder finder(tolerance);
-  for (std::size_t i = 0; i < slices.size(); ++i) {
-    finder.check_slice(slices[i]);
-    for (const PutCall side : {PutCall::call, PutCall::put}) finder.check_calendar(slices, i, side);
-  }
+  for (const QuotedSlice& slice : slices) finder.check_slice(slice);
+  for (const PutCall side : {PutCall::call, PutCall::put}) finder.check_calendars(slices, side);
   return finder.take();
 }
 

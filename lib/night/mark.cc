@@ -27,11 +27,11 @@ struct OpenSlice {
 };
 
 // Firm sides count toward arbitrage in the quotes whatever else is wrong with a quote, but for
-// crossed, stale, odd or misread ones.
+// crossed, stale, odd or misread ones. An outlier is where arbitrage shows first.
 bool firm_reason(Reason reason) {
   switch (reason) {
     case Reason::expired: case Reason::too_short: case Reason::crossed: case Reason::duplicate:
-    case Reason::stale: case Reason::non_standard: case Reason::outlier: case Reason::unreadable:
+    case Reason::stale: case Reason::non_standard: case Reason::unreadable:
       return false;
     default: return true;
   }

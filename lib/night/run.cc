@@ -106,16 +106,18 @@ Result<bool> write_tables(RunFolder& folder, const quotes::QuoteTable& table,
                           const std::vector<MarkedUnderlying>& marked, const NightConfig& config,
                           const ResolvedNight& night) {
   const auto& clock = night.as_of.clock;
+  publish::InstantTexts instants(clock);
   auto written = folder.add("grid.csv", [&](RunFile& file) {
     file.write(publish::kGridHeader);
     for (const auto& m : marked)
       for (const auto& node : m.grid)
-        file.write(publish::grid_line(node, config.grid.axis, m.record.name, night.as_of));
+        file.write(publish::grid_line(node, config.grid.axis, m.record.name,
+                                      night.as_of.instant, instants));
   });
   if (written)
     written = folder.add("ledger.csv", [&](RunFile& file) {
       file.write(publish::kLedgerHeader);
-      for (const auto& q : table.quotes) file.write(publish::ledger_line(q, table, clock));
+      for (const auto& q : table.quotes) file.write(publish::ledger_line(q, table, instants));
     });
   if (written)
     written = folder.add("forwards.csv", [&](RunFile& file) {

@@ -46,7 +46,8 @@ void fill_vols(Quote& q, const SliceMarket& m) {
 void judge_bounds(Quote& q, const SliceMarket& m) {
   if (q.reason != Reason::none || q.quoted_in == QuotedIn::vol) return;
   const BlackTerms terms = terms_of(q, m);
-  if (q.bid >= upper_bound(terms)) q.reason = Reason::above_bound;
+  // An ask out there has no volatility either.
+  if (q.bid >= upper_bound(terms) || q.ask >= upper_bound(terms)) q.reason = Reason::above_bound;
   else if (q.ask <= discounted_intrinsic(terms)) q.reason = Reason::below_intrinsic;
 }
 

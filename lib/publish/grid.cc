@@ -26,6 +26,8 @@ struct When {
   int slice;  // index when a listed expiry, else -1
 };
 
+bool positive(double v) { return std::isfinite(v) && v > 0; }
+
 std::vector<When> times_of(const surface::Surface& surface, const GridInputs& inputs,
                            const GridOptions& options) {
   std::vector<When> times;
@@ -39,6 +41,8 @@ std::vector<When> times_of(const surface::Surface& surface, const GridInputs& in
     const double t = market::year_fraction(inputs.as_of, expiry);
     if (!(t > 0)) continue;
     const auto carried = surface::carried_at(surface, t);
+    // Growth carried on for centuries may leave the range of numbers.
+    if (!positive(carried.forward) || !positive(carried.discount_factor)) continue;
     times.push_back({expiry, options.tenor_words[i], t, carried.forward, carried.discount_factor, -1});
   }
   std::stable_sort(times.begin(), times.end(), [](const When& a, const When& b) {
@@ -222,7 +226,7 @@ std::vector<GridNode> sample_grid(const surface::Surface& surface, const GridInp
     for (std::size_t i = 0; i < nodes.size(); ++i) {
       const double vol = axis.total_vol(nodes[i].k) / std::sqrt(when.year_fraction);
       const double strike = axis.strike_of(nodes[i]);
-      if (!std::isfinite(vol) || !std::isfinite(strike)) continue;
+      if (!positive(vol) || !positive(strike)) continue;
       grid.push_back({when.expiry, when.tenor, when.year_fraction, when.forward,
                       when.discount_factor, nodes[i].point, strike, vol,
                       support_of(surface, inputs, when, nodes, i)});

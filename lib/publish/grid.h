@@ -55,7 +55,8 @@ struct GridNode {
 
 // Nodes by time (a listed expiry before a tenor of the same instant), then by strike. Every time has
 // a node at k = 0, added when the points have none. A delta that the smile does not reach within
-// 40 deviations, or a node with no finite volatility, is left out.
+// 40 deviations, a node without a finite positive strike and volatility, and a tenor without a
+// finite positive forward and discount factor, are left out.
 std::vector<GridNode> sample_grid(const surface::Surface& surface, const GridInputs& inputs,
                                   const GridOptions& options);
 

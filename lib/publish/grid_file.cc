@@ -59,11 +59,13 @@ quotes::DateCell date_cell(const char* cell, const char* name) {
 class GridBuilder {
  public:
   void add(const Row& row) {
-    arbitrage::VolSlice slice = slice_of(row);
+    const arbitrage::VolSlice slice = slice_of(row);
     const arbitrage::VolNode node{positive_number(row.strike, "strike"), positive_number(row.vol, "vol")};
     const std::string name = unguarded(row.underlying ? row.underlying : "");
     const auto key = std::pair(name, slice.year_fraction);
-    auto& found = slices_.try_emplace(key, std::move(slice)).first->second;
+    auto& found = slices_.try_emplace(key, slice).first->second;
+    if (found.forward != slice.forward || found.discount_factor != slice.discount_factor)
+      throw BadRow{"forward or discount_factor differs from a line before of the same time"};
     found.nodes.push_back(node);
   }
 
@@ -102,7 +104,8 @@ class GridBuilder {
     if (last.empty() || last != text) {
       cell = date_cell(text, name);
       last = text;
-      if (cell.offset) clock_.offset = *cell.offset;
+      if (cell.offset && !clock_known_) clock_.offset = *cell.offset;
+      clock_known_ = clock_known_ || cell.offset;
     }
     return cell;
   }
@@ -135,6 +138,7 @@ class GridBuilder {
   }
 
   quotes::Clock clock_;
+  bool clock_known_ = false;
   std::string last_as_of_, last_expiry_;
   quotes::DateCell as_of_cell_, expiry_cell_;
   std::map<std::pair<std::string, double>, arbitrage::VolSlice> slices_;

@@ -8,6 +8,7 @@
 #include <cerrno>
 #include <cstring>
 #include <filesystem>
+#include <string_view>
 #include <system_error>
 #include <vector>
 
@@ -17,6 +18,9 @@ namespace {
 namespace fs = std::filesystem;
 
 constexpr std::size_t kBlock = 1 << 18;
+// A folder being written, and one that made way for it.
+constexpr std::string_view kPartial = ".partial-";
+constexpr std::string_view kAside = ".old";
 
 Failure cannot(const std::string& path, const std::string& what) {
   return {Fault::cannot_create, path, what};
@@ -39,7 +43,7 @@ bool swap_in(const std::string& partial, const std::string& final) {
   if (::lstat(final.c_str(), &found) != 0) return ::rename(partial.c_str(), final.c_str()) == 0;
   if (::renameat2(AT_FDCWD, partial.c_str(), AT_FDCWD, final.c_str(), RENAME_EXCHANGE) == 0)
     return true;
-  const std::string aside = partial + ".old";
+  const std::string aside = partial + std::string(kAside);
   if (::rename(final.c_str(), aside.c_str()) != 0) return false;
   if (::rename(partial.c_str(), final.c_str()) == 0) {
     std::error_code ignored;
@@ -48,6 +52,24 @@ bool swap_in(const std::string& partial, const std::string& final) {
   }
   ::rename(aside.c_str(), final.c_str());
   return false;
+}
+
+// What killed runs left in `out`, the lock being ours. A folder that stepped aside for one that
+// never came goes back to its place.
+bool clear_leftovers(const fs::path& out, std::error_code& error) {
+  std::vector<std::string> names;
+  for (fs::directory_iterator at(out, error), end; !error && at != end; at.increment(error))
+    names.push_back(at->path().filename());
+  for (const auto& name : names) {
+    if (error || !name.starts_with(kPartial)) continue;
+    if (name.ends_with(kAside)) {
+      const fs::path home =
+          out / name.substr(kPartial.size(), name.size() - kPartial.size() - kAside.size());
+      if (!fs::exists(fs::symlink_status(home))) fs::rename(out / name, home, error);
+    }
+    if (!error) fs::remove_all(out / name, error);
+  }
+  return !error;
 }
 
 }  // namespace
@@ -69,7 +91,7 @@ void RunFile::flush() {
 }
 
 RunFolder::RunFolder(std::string out, std::string name)
-    : out_(std::move(out)), final_(out_ + "/" + name), partial_(out_ + "/.partial-" + name) {}
+    : out_(std::move(out)), final_(out_ + "/" + name), partial_(out_ + "/" + std::string(kPartial) + name) {}
 
 RunFolder::~RunFolder() {
   std::error_code ignored;
@@ -91,8 +113,7 @@ Result<std::unique_ptr<RunFolder>> RunFolder::create(const std::string& out,
     folder->lock_ = -1;
     return cannot(out, "another run is writing here; wait for it or choose another --out");
   }
-  fs::remove_all(folder->partial_, error);
-  if (!error) fs::create_directories(folder->partial_, error);
+  if (clear_leftovers(out, error)) fs::create_directories(folder->partial_, error);
   if (error) return cannot(folder->partial_, error.message());
   return folder;
 }

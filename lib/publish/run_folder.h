@@ -32,7 +32,7 @@ class RunFile {
 // file cannot be written.
 class RunFolder {
  public:
-  // Will become out/name. What a killed run left half-written is cleared away.
+  // Will become out/name. What killed runs left half-written in `out` is cleared away.
   static Result<std::unique_ptr<RunFolder>> create(const std::string& out, const std::string& name);
   ~RunFolder();
   RunFolder(const RunFolder&) = delete;

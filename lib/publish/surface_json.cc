@@ -24,8 +24,13 @@ ordered_json slice_to_json(const surface::Slice& s, const quotes::Clock& clock) 
   return out;
 }
 
+// The library would also make a number of true and false.
+double number_of(const ordered_json& in) {
+  return in.is_number() ? in.get<double>() : quotes::kAbsent;
+}
+
 surface::Slice slice_from_json(const ordered_json& in, const quotes::Clock& clock) {
-  const auto number = [&](const char* key) { return in.at(key).get<double>(); };
+  const auto number = [&](const char* key) { return number_of(in.at(key)); };
   surface::Slice s{};
   const auto cell = quotes::parse_date_cell(in.at("expiry").get<std::string>());
   s.expiry = cell ? quotes::resolve(*cell, clock, std::chrono::hours{16}) : quotes::kNoInstant;
@@ -86,7 +91,7 @@ Result<StoredSurface> surface_from_json(std::string_view text, const std::string
     if (!as_of) return refuse(as_of.failure().text());
     StoredSurface stored{*as_of, {}};
     stored.surface.underlying = in.at("underlying").get<std::string>();
-    if (!in.at("spot").is_null()) stored.surface.spot = in.at("spot").get<double>();
+    if (!in.at("spot").is_null()) stored.surface.spot = number_of(in.at("spot"));
     for (const auto& s : in.at("slices"))
       stored.surface.slices.push_back(slice_from_json(s, as_of->clock));
     if (const auto problem = problem_of(stored.surface); !problem.empty()) return refuse(problem);

@@ -33,12 +33,18 @@ class Line {
 
 }  // namespace
 
+const std::string& InstantTexts::of(quotes::Instant instant) {
+  const auto [found, added] = texts_.try_emplace(instant.time_since_epoch().count());
+  if (added) found->second = quotes::format_instant(clock_, instant);
+  return found->second;
+}
+
 std::string grid_line(const GridNode& node, Axis axis, std::string_view underlying,
-                      const quotes::AsOf& as_of) {
+                      quotes::Instant as_of, InstantTexts& instants) {
   return Line()
-      .raw(quotes::format_instant(as_of.clock, as_of.instant))
+      .raw(instants.of(as_of))
       .text(underlying)
-      .raw(quotes::format_instant(as_of.clock, node.expiry))
+      .raw(instants.of(node.expiry))
       .raw(node.tenor)
       .number(node.year_fraction)
       .number(node.forward)
@@ -53,14 +59,14 @@ std::string grid_line(const GridNode& node, Axis axis, std::string_view underlyi
 }
 
 std::string ledger_line(const quotes::Quote& q, const quotes::QuoteTable& table,
-                        const quotes::Clock& clock) {
+                        InstantTexts& instants) {
   Line line;
   line.text(table.files[q.file]).count(q.line);
   if (q.reason == quotes::Reason::unreadable) {
     line.empty(8);
   } else {
     line.text(table.underlyings[q.underlying])
-        .raw(quotes::format_instant(clock, q.expiry))
+        .raw(instants.of(q.expiry))
         .number(q.strike)
         .raw(q.put_call == quotes::PutCall::call ? "C" : "P")
         .raw(q.exercise == quotes::Exercise::european ? "european" : "american")

@@ -2,8 +2,11 @@
 // in docs/formats.md.
 #pragma once
 
+#include <cstdint>
 #include <string>
 #include <string_view>
+#include <unordered_map>
+#include <utility>
 
 #include "arbitrage/violation.h"
 #include "market/parity.h"
@@ -31,11 +34,23 @@ struct ForwardRow {
   market::ForwardEstimate estimate;
 };
 
+// Instants as text on one clock. Each is worked out once: a table of a million lines has a few
+// hundred.
+class InstantTexts {
+ public:
+  explicit InstantTexts(quotes::Clock clock) : clock_(std::move(clock)) {}
+  const std::string& of(quotes::Instant instant);
+
+ private:
+  quotes::Clock clock_;
+  std::unordered_map<std::int64_t, std::string> texts_;  // by seconds
+};
+
 // Lines with their line feed. Numbers that do not exist are empty cells.
 std::string grid_line(const GridNode& node, Axis axis, std::string_view underlying,
-                      const quotes::AsOf& as_of);
+                      quotes::Instant as_of, InstantTexts& instants);
 std::string ledger_line(const quotes::Quote& quote, const quotes::QuoteTable& table,
-                        const quotes::Clock& clock);
+                        InstantTexts& instants);
 std::string forwards_line(const ForwardRow& row, std::string_view underlying,
                           const quotes::Clock& clock);
 std::string violations_line(const arbitrage::Violation& violation, std::string_view underlying,

@@ -2,6 +2,7 @@
 
 #include <fmt/format.h>
 
+#include <algorithm>
 #include <charconv>
 #include <cmath>
 
@@ -15,11 +16,34 @@ bool plain(char c) {
          c == '-';
 }
 
+bool run_by_a_spreadsheet(std::string_view text) {
+  return !text.empty() && kRunByASpreadsheet.find(text.front()) != std::string_view::npos;
+}
+
+// Apostrophes and then what a spreadsheet would run: one more apostrophe is put on and taken off.
+bool needs_guard(std::string_view text) {
+  return run_by_a_spreadsheet(text.substr(std::min(text.find_first_not_of('\''), text.size())));
+}
+
+std::string in_folders(const std::string& name) {
+  std::string out;
+  for (std::size_t i = 0; i < name.size(); i += kLongestFileName) {
+    if (i > 0) out += "%/";
+    out += name.substr(i, kLongestFileName);
+  }
+  return out;
+}
+
+std::string out_of_folders(std::string_view file_name) {
+  std::string out(file_name);
+  for (std::size_t i = 0; (i = out.find("%/", i)) != std::string::npos;) out.erase(i, 2);
+  return out;
+}
+
 }  // namespace
 
 std::string csv_text(std::string_view text) {
-  std::string out;
-  if (!text.empty() && kRunByASpreadsheet.find(text.front()) != std::string_view::npos) out = '\'';
+  std::string out = needs_guard(text) ? "'" : "";
   out += text;
   if (out.find_first_of(",\"\r\n") == std::string::npos) return out;
   std::string quoted = "\"";
@@ -31,8 +55,7 @@ std::string csv_text(std::string_view text) {
 }
 
 std::string unguarded(std::string_view cell) {
-  const bool guarded = cell.size() > 1 && cell[0] == '\'' &&
-                       kRunByASpreadsheet.find(cell[1]) != std::string_view::npos;
+  const bool guarded = cell.starts_with('\'') && needs_guard(cell);
   return std::string(guarded ? cell.substr(1) : cell);
 }
 
@@ -49,20 +72,21 @@ std::string encode_file_name(std::string_view name) {
     if (plain(name[i]) || inner_dot) out += name[i];
     else out += fmt::format("%{:02X}", static_cast<unsigned char>(name[i]));
   }
-  return out;
+  return in_folders(out);
 }
 
 std::optional<std::string> decode_file_name(std::string_view file_name) {
   if (file_name == "%") return std::string();
+  const std::string joined = out_of_folders(file_name);
   std::string out;
-  for (std::size_t i = 0; i < file_name.size(); ++i) {
-    if (file_name[i] != '%') {
-      out += file_name[i];
+  for (std::size_t i = 0; i < joined.size(); ++i) {
+    if (joined[i] != '%') {
+      out += joined[i];
       continue;
     }
     unsigned value = 0;
-    const char* first = file_name.data() + i + 1;
-    if (i + 2 >= file_name.size()) return std::nullopt;
+    const char* first = joined.data() + i + 1;
+    if (i + 2 >= joined.size()) return std::nullopt;
     const auto [end, error] = std::from_chars(first, first + 2, value, 16);
     if (error != std::errc{} || end != first + 2) return std::nullopt;
     out += static_cast<char>(value);

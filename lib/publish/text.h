@@ -9,7 +9,8 @@
 namespace duskgrid::publish {
 
 // A text cell for CSV (RFC 4180 quoting). A cell that a spreadsheet would run (first
-// character = + - @ tab or carriage return) gets a leading apostrophe.
+// character = + - @ tab or carriage return) gets a leading apostrophe, and so does one that
+// would be taken for a guarded cell.
 std::string csv_text(std::string_view text);
 // The text of such a cell once unquoted: the guarding apostrophe taken off again.
 std::string unguarded(std::string_view cell);
@@ -17,8 +18,10 @@ std::string unguarded(std::string_view cell);
 // negative zero.
 std::string csv_number(double value);
 
-// A name as a file name, and back: letters, digits, _ and - stay, and a dot inside; every other byte is
-// %XX in upper-case hexadecimal. Empty gives "%". Never "." or "..", never longer than three times the name.
+// A name as a file name, and back: letters, digits, _ and - stay, and a dot inside; every
+// other byte is %XX in upper-case hexadecimal. Empty gives "%". Never "." or "..". What would be
+// longer than kLongestFileName becomes folders: "%/" stands after every so many bytes but the last.
+inline constexpr std::size_t kLongestFileName = 240;  // file systems stop at 255, endings included
 std::string encode_file_name(std::string_view name);
 // Nothing for text that encode_file_name() does not give.
 std::optional<std::string> decode_file_name(std::string_view file_name);

@@ -163,15 +163,34 @@ class FileLoad {
     prefer_huge_pages(quotes.data(), quotes.capacity() * sizeof(Quote));
   }
 
+  // A stray quotation mark swallows the lines to the next one, which may even come out
+  // with the right number of cells. It shows in that the lines have delimiters
+  // enough to be rows each, which lines of a remark hardly have.
+  bool hides_rows(const Row& row) const {
+    const std::string_view text(row.text, row.size);
+    std::ptrdiff_t lines = 0;
+    for (std::size_t at = 0; at <= text.size();) {
+      const std::size_t end = std::min(text.find('\n', at), text.size());
+      lines += end > at;
+      at = end + 1;
+    }
+    const auto delimiters = std::count(text.begin(), text.end(), summary_.delimiter);
+    return delimiters >= lines * static_cast<std::ptrdiff_t>(header_cells_ - 1);
+  }
+
   void add(RowReader& rows, const Row& row, ContractReader& contracts) {
     const auto file = static_cast<std::int32_t>(loaded_.table.files.size() - 1);
     bool open_quote = row.open_quote;
+    if (row.joined && hides_rows(row)) {
+      rows.split_joined();
+      open_quote = true;
+    }
     if (!open_quote) {
       split_row(row, summary_.delimiter, cells_);
-      // A stray quotation mark swallows the lines to the next one; a row that runs over
-      // lines is believed only when it comes out whole.
-      open_quote = row.joined && cells_.size() != header_cells_;
-      if (open_quote) rows.split_joined();
+      if (row.joined && cells_.size() != header_cells_) {
+        rows.split_joined();
+        open_quote = true;
+      }
     }
     const int unreadable = open_quote ? contracts.add_unreadable(Note::open_quote, file, row.line)
                                       : contracts.add_row(cells_, file, row.line);

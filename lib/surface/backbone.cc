@@ -23,9 +23,9 @@ constexpr double kLeastGrowth = 1e-12;
 // Short of 1 so that the strict inequalities of the parametrisation stay strict after rounding.
 constexpr double kLargestC = 0.9999;
 // Pulls, in half-spreads per unit, on what a slice with under five quotes cannot tell: towards its
-// neighbour with a thousandth of the weight of a quote, and weaker still towards no smile.
-constexpr double kThinPull = 1e-3;
-constexpr double kFlatPull = 1e-4;
+// neighbour with a four-hundredth of the weight of a quote, and weaker still towards no smile.
+constexpr double kThinPull = 0.05;
+constexpr double kFlatPull = 0.005;
 constexpr std::size_t kTellsAlone = 5;
 
 template <class T>
@@ -240,7 +240,8 @@ VectorXd damped_step(const VectorXd& q, const MatrixXd& hessian, const VectorXd&
 Descent descend(const Problem& problem, VectorXd q, const Box& box, int most_iterations) {
   constexpr double kFirstDamping = 1e-3;
   constexpr double kLargestDamping = 1e12;
-  constexpr double kSettled = 1e-13;  // relative fall of the cost
+  constexpr double kSettled = 1e-13;     // relative fall of the cost, or
+  constexpr double kNegligible = 1e-10;  // a fall worth 1e-5 of a half-spread
   constexpr int kSettledSteps = 3;
   q = box.clamp(q);
   double cost = problem.cost(q);
@@ -259,7 +260,7 @@ Descent descend(const Problem& problem, VectorXd q, const Box& box, int most_ite
         damping *= 4;
         continue;
       }
-      settled = cost - trial_cost <= kSettled * cost ? settled + 1 : 0;
+      settled = cost - trial_cost <= kSettled * cost + kNegligible ? settled + 1 : 0;
       q = trial;
       cost = trial_cost;
       damping = std::max(damping / 8, 1e-15);

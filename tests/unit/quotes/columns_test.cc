@@ -360,6 +360,13 @@ TEST(MapColumns, SymbolColumnOfOtherTextMissesTheContract) {
       holds(failure_text(map, Fault::not_quotes), "no column for expiry, strike, put_call;"));
 }
 
+TEST(MapColumns, ColumnStatedAsUnderlyingIsNeverTakenAsOsiSymbol) {
+  const auto map = map_columns({"symbol", "bid", "ask"}, {"QNOR310620C00260000", "1", "2"},
+                               Layout::automatic, {{"underlying", "symbol"}}, {});
+  EXPECT_TRUE(
+      holds(failure_text(map, Fault::configuration), "no column for expiry, strike, put_call;"));
+}
+
 TEST(MapColumns, HeaderNeedingEscapesIsShownAsToml) {
   const auto map = map_of({"best\"bid\"\\", "line\nfeed"});
   const std::string text = failure_text(map, Fault::not_quotes);

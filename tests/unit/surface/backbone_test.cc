@@ -132,7 +132,7 @@ TEST(FitBackbone, OneQuoteGivesALevel) {
 }
 
 TEST(FitBackbone, OneToFourQuotesAreMetAndBesideAFullSliceTakeItsShape) {
-  const SliceParameters full{0.01, -0.6, 0.14}, later{0.022, -0.6, 0.24};
+  const SliceParameters full{0.01, -0.6, 0.14}, later{0.022, -0.6, 0.22};
   for (int count = 1; count <= 4; ++count) {
     const std::vector<FitSlice> slices{sampled(full, 0.25), sampled(later, 0.5, count, 1.0)};
     const auto fit = fit_backbone(slices, {});
