@@ -36,15 +36,17 @@ Result<bool> take_spots(const BuildArguments& args, night::NightConfig& config) 
     const auto [stop, error] = std::from_chars(number.data(), end, spot);
     if (error != std::errc{} || stop != end || !(spot > 0) || !std::isfinite(spot))
       return Failure{Fault::usage, "", "--spot = " + text + ", must be a price or NAME=PRICE"};
-    if (equals == std::string::npos) config.spot = spot;
-    else config.underlyings[text.substr(0, equals)].spot = spot;
+    if (equals == std::string::npos)
+      config.spot = spot;
+    else
+      config.underlyings[text.substr(0, equals)].spot = spot;
   }
   return true;
 }
 
 std::string percent(std::int64_t part, std::int64_t whole) {
-  return whole > 0 ? fmt::format("{:.1f} %", 100.0 * static_cast<double>(part) /
-                                                  static_cast<double>(whole))
+  return whole > 0 ? fmt::format("{:.1f} %",
+                                 100.0 * static_cast<double>(part) / static_cast<double>(whole))
                    : "";
 }
 
@@ -60,8 +62,7 @@ std::vector<const MarkedUnderlying*> by_concern(const std::vector<MarkedUnderlyi
 
 void print_underlyings(const night::NightOutcome& outcome) {
   constexpr std::size_t kMostRows = 40;
-  console::Table table(
-      {"underlying", "status", ">expiries", ">used", ">inside", ">violations"});
+  console::Table table({"underlying", "status", ">expiries", ">used", ">inside", ">violations"});
   const auto order = by_concern(outcome.underlyings);
   for (std::size_t i = 0; i < std::min(order.size(), kMostRows); ++i) {
     const auto& r = order[i]->record;
@@ -70,9 +71,10 @@ void print_underlyings(const night::NightOutcome& outcome) {
                grouped(r.violations)});
     table.remark(console::wrapped(r.message, 78, 2));
   }
-  fmt::print(stderr, "{}", table.text());
+  if (!order.empty()) fmt::print(stderr, "{}", table.text());
   if (order.size() > kMostRows)
-    fmt::print(stderr, "and {} more, in run.json\n", grouped(static_cast<std::int64_t>(order.size() - kMostRows)));
+    fmt::print(stderr, "and {} more, in run.json\n",
+               grouped(static_cast<std::int64_t>(order.size() - kMostRows)));
 }
 
 void print_slices(const night::NightOutcome& outcome) {
@@ -86,7 +88,7 @@ void print_slices(const night::NightOutcome& outcome) {
 }
 
 void print_rows(const quotes::LedgerCounts& rows) {
-  fmt::print(stderr, "\n{} rows read = {} used + {} spare + {} dropped\n", grouped(rows.read),
+  fmt::print(stderr, "\n{} contracts read = {} used + {} spare + {} dropped\n", grouped(rows.read),
              grouped(rows.used), grouped(rows.spare), grouped(rows.dropped));
   std::string reasons;
   for (const auto& entry : quotes::reasons())
@@ -159,10 +161,13 @@ void add_build(CLI::App& program, int& status) {
       ->capture_default_str();
   command->add_flag("--slices", args->slices, "Show how well each expiry is met");
   command->add_flag("--quiet", args->quiet, "No progress and no summary");
-  command->add_flag_callback("--options", [] {
-    print_options();
-    throw CLI::Success();
-  }, "List the keys of a configuration and stop");
+  command->add_flag_callback(
+      "--options",
+      [] {
+        print_options();
+        throw CLI::Success();
+      },
+      "List the keys of a configuration and stop");
   command->footer(
       "Prints the folder published on standard output, the summary on standard error.\n\n"
       "Examples:\n"

@@ -39,7 +39,7 @@ Result<bool> check_grid_file(const std::string& path, double tolerance, Tally& t
   for (const auto& grid : file->grids) {
     const auto found = arbitrage::check_grid(grid.slices, tolerance);
     tally.print(found, grid.underlying, file->clock);
-    fmt::print(stderr, "{}: {} times, {} arbitrages\n",
+    fmt::print(stderr, "{}: {} expiries and tenors, arbitrages found: {}\n",
                grid.underlying.empty() ? path : grid.underlying, grid.slices.size(), found.size());
   }
   return true;
@@ -50,7 +50,7 @@ Result<bool> check_surface_file(const std::string& path, const std::string& text
   if (!stored) return stored.failure();
   const auto check = arbitrage::check_surface(stored->surface);
   tally.print(check.violations, stored->surface.underlying, stored->as_of.clock);
-  fmt::print(stderr, "{}: {} slices, {} arbitrages on dense points, least g {:.3g}\n",
+  fmt::print(stderr, "{}: {} expiries, arbitrages found on dense points: {}, least g {:.3g}\n",
              stored->surface.underlying, stored->surface.slices.size(), check.violations.size(),
              check.least_durrleman);
   return true;
@@ -83,9 +83,10 @@ void add_check(CLI::App& program, int& status) {
       program.add_subcommand("check", "Look for arbitrage in grids, ours or others', and surfaces");
   auto args = std::make_shared<CheckArguments>();
   command
-      ->add_option("files", args->files,
-                   "grid.csv (needs strike, vol, forward, and year_fraction or as_of and expiry) or "
-                   "surfaces/NAME.json")
+      ->add_option(
+          "files", args->files,
+          "grid.csv (needs strike, vol, forward, and year_fraction or as_of and expiry) or "
+          "surfaces/NAME.json")
       ->required();
   command
       ->add_option("--tolerance", args->tolerance,

@@ -11,9 +11,10 @@ Failure usage(const std::string& what) { return {Fault::usage, "", what}; }
 
 void InputArguments::add_to(CLI::App& command) {
   command
-      .add_option("inputs", inputs,
-                  "Quote files (CSV, gzip or zstd, globs in quotes), or a configuration NIGHT.toml, "
-                  "or both when its one [[source]] names no files")
+      .add_option(
+          "inputs", inputs,
+          "Quote files (CSV, gzip or zstd, globs in quotes), or a configuration NIGHT.toml, "
+          "or both when its one [[source]] names no files")
       ->required();
   command.add_option("--as-of", as_of,
                      "Instant the quotes stand for, 2031-03-14T16:00:00-05:00; a date alone is "
@@ -39,12 +40,14 @@ Result<night::NightConfig> InputArguments::config() const {
   if (!files.empty() && config.sources.empty()) config.sources.emplace_back();
   if (!files.empty()) {
     if (config.sources.size() != 1 || !config.sources[0].files.empty())
-      return usage("files on the command line need a configuration whose one [[source]] names none");
+      return usage(
+          "files on the command line need a configuration whose one [[source]] names none");
     config.sources[0].files = files;
   }
   if (config.sources.empty()) return usage("no quote files: name them here or in [[source]] files");
   for (const auto& source : config.sources)
-    if (source.files.empty()) return usage("a [[source]] has no files; name them on the command line");
+    if (source.files.empty())
+      return usage("a [[source]] has no files; name them on the command line");
   if (!as_of.empty()) config.as_of_text = as_of;
   if (!zone.empty()) config.zone = zone;
   return config;

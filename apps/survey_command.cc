@@ -76,8 +76,8 @@ ChainFacts facts_of(const quotes::QuoteTable& table, const quotes::Chain& chain)
 }
 
 void print_chains(const quotes::QuoteTable& table, const quotes::Clock& clock) {
-  console::Table out({"underlying", ">expiries", "first", "last", ">strikes", ">quotes",
-                      ">two-sided"});
+  console::Table out(
+      {"underlying", ">expiries", "first", "last", ">strikes", ">quotes", ">two-sided"});
   std::int64_t american = 0;
   for (const auto& chain : quotes::group_chains(table)) {
     const auto facts = facts_of(table, chain);

@@ -9,7 +9,8 @@ namespace duskgrid::arbitrage {
 namespace {
 
 QuotedSlice priced(const VolSlice& slice) {
-  QuotedSlice out{slice.expiry, slice.year_fraction, slice.forward, slice.discount_factor, false, {}};
+  QuotedSlice out{
+      slice.expiry, slice.year_fraction, slice.forward, slice.discount_factor, false, {}};
   for (const auto& node : slice.nodes) {
     const double call = pricing::black_price(
         {quotes::PutCall::call, slice.forward, node.strike, slice.discount_factor},

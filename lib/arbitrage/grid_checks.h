@@ -16,10 +16,10 @@ struct VolNode {
 
 struct VolSlice {
   quotes::Instant expiry;
-  double year_fraction;         // > 0
-  double forward;               // quote currency, > 0
-  double discount_factor;       // > 0
-  std::vector<VolNode> nodes;   // by strike, increasing
+  double year_fraction;        // > 0
+  double forward;              // quote currency, > 0
+  double discount_factor;      // > 0
+  std::vector<VolNode> nodes;  // by strike, increasing
 };
 
 // Prices every node as a call with no spread and looks for bounds, vertical, butterfly and calendar

@@ -103,8 +103,8 @@ class Finder {
     return true;
   }
 
-  // Of a call, the dearer strike is the lower one: selling the higher above the lower is free money, and
-  // so is selling the lower for more than D dK above the higher. Of a put, mirrored.
+  // Of a call, the dearer strike is the lower one: selling the higher above the lower is free
+  // money, and so is selling the lower for more than D dK above the higher. Of a put, mirrored.
   void check_verticals(const QuotedSlice& slice, PutCall side, const std::vector<Rung>& rungs) {
     const double width_value = slice.american ? 1.0 : slice.discount_factor;
     const bool call = side == PutCall::call;
@@ -166,7 +166,8 @@ class Finder {
     const auto hull = lower_hull(rungs);
     for (std::size_t h = 0; h + 1 < hull.size(); ++h) {
       const std::size_t a = hull[h], c = hull[h + 1];
-      if (std::any_of(broken.begin(), broken.end(), [&](auto j) { return a <= j && j <= c; })) continue;
+      if (std::any_of(broken.begin(), broken.end(), [&](auto j) { return a <= j && j <= c; }))
+        continue;
       for (std::size_t j = a + 1; j < c; ++j) {
         const bool adjacent = j == a + 1 && c == j + 1;
         if (!adjacent) record_butterfly(slice, side, rungs[a], rungs[j], rungs[c]);
@@ -210,10 +211,12 @@ class Finder {
       const double value = s.discount_factor * (s.forward - q.strike);
       const Rung call{q.strike, q.call_bid, q.call_ask}, put{q.strike, q.put_bid, q.put_ask};
       record(s, Kind::parity, value - (q.call_ask - q.put_bid), {q.strike},
-             {buy(1, call, PutCall::call, s.expiry), sell(1, put, PutCall::put, s.expiry),
+             {buy(1, call, PutCall::call, s.expiry),
+              sell(1, put, PutCall::put, s.expiry),
               {-1, LegType::forward, s.forward, s.expiry, 0}});
       record(s, Kind::parity, (q.call_bid - q.put_ask) - value, {q.strike},
-             {sell(1, call, PutCall::call, s.expiry), buy(1, put, PutCall::put, s.expiry),
+             {sell(1, call, PutCall::call, s.expiry),
+              buy(1, put, PutCall::put, s.expiry),
               {1, LegType::forward, s.forward, s.expiry, 0}});
     }
   }
@@ -265,7 +268,8 @@ class Finder {
                          std::size_t gap) {
     const QuotedSlice &first = *early.slice, &second = *late.slice;
     const Rung& rung = early.rungs[i];
-    // At equal K/F a later option is worth more in units of its own D F; an American one at equal K.
+    // At equal K/F a later option is worth more in units of its own D F; an American one at equal
+    // K.
     const bool american = first.american;
     const double quantity = american ? 1.0
                                      : first.discount_factor * first.forward /

@@ -18,10 +18,10 @@ struct QuotedStrike {
 
 struct QuotedSlice {
   quotes::Instant expiry;
-  double year_fraction;    // > 0
-  double forward;          // quote currency
+  double year_fraction;  // > 0
+  double forward;        // quote currency
   double discount_factor;
-  bool american = false;   // early exercise: only the breaks that hold for it are looked for
+  bool american = false;  // early exercise: only the breaks that hold for it are looked for
   std::vector<QuotedStrike> strikes;  // increasing
 };
 

@@ -28,8 +28,8 @@ std::vector<Stage> stages_of(const surface::Surface& surface) {
   std::vector<Stage> out;
   const auto add = [&](double t, quotes::Instant expiry) {
     const auto carried = surface::carried_at(surface, t);
-    out.push_back({t, expiry, surface::smile_at_time(surface, t), carried.forward,
-                   carried.discount_factor});
+    out.push_back(
+        {t, expiry, surface::smile_at_time(surface, t), carried.forward, carried.discount_factor});
   };
   for (std::size_t i = 0; i < surface.slices.size(); ++i) {
     const auto& s = surface.slices[i];
@@ -50,11 +50,10 @@ double call_price(const Stage& stage, double k) {
 
 double vol_points(const Stage& stage, double k, double amount) {
   const double vol = std::sqrt(surface::point_at(stage.smile, k).w / stage.t);
-  const double vega =
-      pricing::black_greeks({PutCall::call, stage.forward, stage.forward * std::exp(k),
-                             stage.discount_factor},
-                            vol, stage.t)
-          .vega;
+  const double vega = pricing::black_greeks({PutCall::call, stage.forward,
+                                             stage.forward * std::exp(k), stage.discount_factor},
+                                            vol, stage.t)
+                          .vega;
   const double points = 100 * amount / vega;
   return std::isfinite(points) ? points : kNaN;
 }
@@ -68,8 +67,7 @@ Violation butterfly_at(const Stage& stage, double k, double step) {
   Leg lower = call_leg(stage, 1, k - step), upper = call_leg(stage, 1, k + step);
   lower.quantity = (upper.strike - middle.strike) / (upper.strike - lower.strike);
   upper.quantity = 1 - lower.quantity;
-  const double amount =
-      middle.price - lower.quantity * lower.price - upper.quantity * upper.price;
+  const double amount = middle.price - lower.quantity * lower.price - upper.quantity * upper.price;
   return {.scope = Scope::surface,
           .kind = Kind::butterfly,
           .expiry = stage.expiry,
@@ -140,9 +138,9 @@ class Checker {
   }
 
   void check_butterflies(const Stage& stage) {
-    const double least = scan(
-        [&](double k) { return surface::durrleman(surface::point_at(stage.smile, k), k); },
-        [&](double k) { out_.violations.push_back(butterfly_at(stage, k, step_)); });
+    const double least =
+        scan([&](double k) { return surface::durrleman(surface::point_at(stage.smile, k), k); },
+             [&](double k) { out_.violations.push_back(butterfly_at(stage, k, step_)); });
     out_.least_durrleman = std::min(out_.least_durrleman, least);
   }
 

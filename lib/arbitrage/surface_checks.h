@@ -24,6 +24,7 @@ struct SurfaceCheck {
 
 // Looks at every slice and half way between slices (where the time rule is at work).
 // g and the steps of w may fall short of zero by rounding only.
-SurfaceCheck check_surface(const surface::Surface& surface, const SurfaceCheckOptions& options = {});
+SurfaceCheck check_surface(const surface::Surface& surface,
+                           const SurfaceCheckOptions& options = {});
 
 }  // namespace duskgrid::arbitrage

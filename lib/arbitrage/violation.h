@@ -20,11 +20,11 @@ std::string_view word(Kind kind);
 enum class LegType : std::uint8_t { call, put, forward };
 
 struct Leg {
-  double quantity;          // plus buys, minus sells
+  double quantity;  // plus buys, minus sells
   LegType type;
-  double strike;            // of a forward: the agreed price
+  double strike;  // of a forward: the agreed price
   quotes::Instant expiry;
-  double price;             // paid or received now per unit, quote currency; 0 for a forward
+  double price;  // paid or received now per unit, quote currency; 0 for a forward
   double half_spread = std::numeric_limits<double>::quiet_NaN();  // of the price, if two-sided
 };
 
@@ -33,10 +33,10 @@ struct Violation {
   Kind kind;
   quotes::Instant expiry;
   quotes::Instant expiry_2 = quotes::kNoInstant;  // of calendar violations
-  std::vector<double> strikes;                    // one to three, increasing (of the calendar: early, then late)
-  double amount;       // present value locked in per unit of the legs, > 0, quote currency
-  double vol_points;   // the amount over the vega of the sold leg, in 0.01 of vol; NaN if none
-  double half_spreads; // the amount over the legs' half-spreads together; NaN if unknown
+  std::vector<double> strikes;  // one to three, increasing (of the calendar: early, then late)
+  double amount;                // present value locked in per unit of the legs, > 0, quote currency
+  double vol_points;    // the amount over the vega of the sold leg, in 0.01 of vol; NaN if none
+  double half_spreads;  // the amount over the legs' half-spreads together; NaN if unknown
   std::vector<Leg> legs;
 };
 

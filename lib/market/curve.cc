@@ -22,9 +22,9 @@ Result<ZeroCurve> ZeroCurve::make(std::vector<ZeroPoint> points) {
 }
 
 double ZeroCurve::rate(double t) const {
-  const auto next = std::lower_bound(
-      points_.begin(), points_.end(), t,
-      [](const ZeroPoint& p, double v) { return p.year_fraction < v; });
+  const auto next =
+      std::lower_bound(points_.begin(), points_.end(), t,
+                       [](const ZeroPoint& p, double v) { return p.year_fraction < v; });
   if (next == points_.begin()) return next->rate;
   if (next == points_.end()) return points_.back().rate;
   const auto previous = next - 1;

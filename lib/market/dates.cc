@@ -11,10 +11,14 @@ std::optional<Tenor> parse_tenor(std::string_view text) {
   const auto [end, error] = std::from_chars(text.data(), last, count);
   if (error != std::errc{} || end != last || count < 1) return std::nullopt;
   switch (*last) {
-    case 'd': case 'D': return Tenor{count, TenorUnit::day};
-    case 'w': case 'W': return Tenor{count, TenorUnit::week};
-    case 'm': case 'M': return Tenor{count, TenorUnit::month};
-    case 'y': case 'Y': return Tenor{count, TenorUnit::year};
+    case 'd':
+    case 'D': return Tenor{count, TenorUnit::day};
+    case 'w':
+    case 'W': return Tenor{count, TenorUnit::week};
+    case 'm':
+    case 'M': return Tenor{count, TenorUnit::month};
+    case 'y':
+    case 'Y': return Tenor{count, TenorUnit::year};
     default: return std::nullopt;
   }
 }

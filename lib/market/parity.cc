@@ -167,7 +167,8 @@ std::vector<ForwardInterval> largest_agreement(std::span<const ForwardInterval> 
         total += std::sqrt(i.weight) * distance;
         if (distance == 0) holding.push_back(i);
       }
-      if (holding.size() < best.size() || (holding.size() == best.size() && total >= least)) continue;
+      if (holding.size() < best.size() || (holding.size() == best.size() && total >= least))
+        continue;
       least = total;
       best = std::move(holding);
     }
@@ -184,10 +185,9 @@ void place_forward(std::span<const ForwardInterval> intervals, ForwardEstimate& 
   estimate.forward = std::clamp(common.mean, common.low + hair, common.high - hair);
   estimate.pairs = static_cast<int>(intervals.size());
   const double tolerance = 1e-12 * std::abs(estimate.forward);
-  estimate.breaks = static_cast<int>(
-      std::count_if(intervals.begin(), intervals.end(), [&](const ForwardInterval& i) {
-        return distance_outside(i, estimate.forward) > tolerance;
-      }));
+  estimate.breaks = static_cast<int>(std::count_if(
+      intervals.begin(), intervals.end(),
+      [&](const ForwardInterval& i) { return distance_outside(i, estimate.forward) > tolerance; }));
 }
 
 // The carry of the nearest expiry that has one, for expiries without pairs.
@@ -220,13 +220,14 @@ std::optional<std::string> ParityOptions::problem() const {
   if (auto p = positive("rate_tolerance_given", rate_tolerance_given)) return p;
   if (auto p = positive("rate_tolerance_common", rate_tolerance_common)) return p;
   if (auto p = positive("near_deviations", near_deviations)) return p;
-  if (most_near_pairs < 1) return fmt::format("most_near_pairs = {}, must be >= 1", most_near_pairs);
+  if (most_near_pairs < 1)
+    return fmt::format("most_near_pairs = {}, must be >= 1", most_near_pairs);
   return std::nullopt;
 }
 
-std::vector<std::optional<ForwardEstimate>> estimate_forwards(
-    std::span<const ExpiryPairs> expiries, const KnownMarket& known,
-    const ParityOptions& options) {
+std::vector<std::optional<ForwardEstimate>> estimate_forwards(std::span<const ExpiryPairs> expiries,
+                                                              const KnownMarket& known,
+                                                              const ParityOptions& options) {
   std::vector<std::optional<ForwardEstimate>> estimates(expiries.size());
   const auto rates = zero_rates(expiries, known, options);
   for (std::size_t i = 0; i < expiries.size(); ++i) {

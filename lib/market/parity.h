@@ -23,22 +23,22 @@ struct ParityPair {
 };
 
 struct ExpiryPairs {
-  double year_fraction;               // > 0
-  std::vector<ParityPair> pairs;      // by strike
+  double year_fraction;           // > 0
+  std::vector<ParityPair> pairs;  // by strike
   std::optional<double> given_forward;
-  bool american = false;              // early exercise: parity holds only near the money
+  bool american = false;  // early exercise: parity holds only near the money
 };
 
 enum class ForwardSource : std::uint8_t { parity, given, curve, carried };
 std::string_view word(ForwardSource source);
 
 struct ForwardEstimate {
-  double forward;          // quote currency
+  double forward;  // quote currency
   double discount_factor;
-  double zero_rate;        // continuous, decimals a year
+  double zero_rate;             // continuous, decimals a year
   std::optional<double> carry;  // q in F = S exp((r - q) t), when the spot is known
-  int pairs = 0;           // used; 0 when not from parity
-  int breaks = 0;          // near-the-money pairs whose interval excludes the forward
+  int pairs = 0;                // used; 0 when not from parity
+  int breaks = 0;               // near-the-money pairs whose interval excludes the forward
   ForwardSource source = ForwardSource::parity;
   // What the near-the-money intervals allow; low > high when they contradict one
   // another, NaN without a pair.
@@ -61,17 +61,18 @@ struct ParityOptions {
 
 struct KnownMarket {
   std::optional<double> spot;
-  std::optional<double> carry;         // continuous yield, decimals a year
+  std::optional<double> carry;  // continuous yield, decimals a year
   std::optional<ZeroCurve> curve;
 };
 
-// One estimate an expiry (increasing in time), or nothing where there is no forward: none
-// given, no pair, no spot. The discount of an expiry is a robust weighted regression of call minus
-// put on strike, drawn to the curve, or to the rate that all expiries share, in proportion to
-// their errors, so that a short expiry cannot invent a rate. The forward is the spread-weighted mean
-// of the near-the-money pairs held inside the intersection of their intervals; when they have none in
+// One estimate an expiry (increasing in time), or nothing where there is no forward: none given, no
+// pair, no spot. The discount of an expiry is a robust weighted regression of call minus put on
+// strike, drawn to the curve, or to the rate that all expiries share, in proportion to their
+// errors, so that a short expiry cannot invent a rate. The forward is the spread-weighted mean of
+// the near-the-money pairs held inside the intersection of their intervals; when they have none in
 // common, inside that of the most pairs that agree, and the others are breaks.
-std::vector<std::optional<ForwardEstimate>> estimate_forwards(
-    std::span<const ExpiryPairs> expiries, const KnownMarket& known, const ParityOptions& options);
+std::vector<std::optional<ForwardEstimate>> estimate_forwards(std::span<const ExpiryPairs> expiries,
+                                                              const KnownMarket& known,
+                                                              const ParityOptions& options);
 
 }  // namespace duskgrid::market

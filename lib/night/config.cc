@@ -10,8 +10,8 @@
 #include <numeric>
 #include <sstream>
 
-#include "market/day_count.h"
 #include "market/dates.h"
+#include "market/day_count.h"
 #include "night/config_fields.h"
 
 namespace duskgrid::night {
@@ -22,7 +22,8 @@ using quotes::Layout;
 using quotes::SourceOptions;
 
 // Reference to a member, for const and mutable targets alike.
-#define DUSKGRID_AT(member) [](auto& target) -> auto& { return target.member; }
+#define DUSKGRID_AT(member) \
+  [](auto& target) -> auto& { return target.member; }
 
 std::string_view word(Exercise exercise) {
   return exercise == Exercise::european ? "european" : "american";
@@ -58,8 +59,8 @@ const std::vector<Field<NightConfig>>& night_fields() {
                          "price of every underlying that neither its table nor its file gives",
                          DUSKGRID_AT(spot), to_number),
       field<NightConfig>("rates", "table of tenor or date = number",
-                         "continuous zero rates, decimals a year",
-                         DUSKGRID_AT(rates), to_number_map),
+                         "continuous zero rates, decimals a year", DUSKGRID_AT(rates),
+                         to_number_map),
       field<NightConfig>("discount_factors", "table of tenor or date = number > 0",
                          "discount factors, in place of or beside rates",
                          DUSKGRID_AT(discount_factors), to_number_map),
@@ -82,9 +83,12 @@ const std::vector<Field<SourceOptions>>& source_fields() {
          return layout.has_value();
        },
        [](const S& s) { return ordered_json(quotes::word(s.layout)); }},
-      field<S>("delimiter", "one of , ; or tab", "what stands between cells; found when absent", DUSKGRID_AT(delimiter), to_letter),
+      field<S>("delimiter", "one of , ; or tab", "what stands between cells; found when absent",
+               DUSKGRID_AT(delimiter), to_letter),
       field<S>("decimal", ". or ,", "decimal mark", DUSKGRID_AT(decimal), to_letter),
-      field<S>("thousands", "one character", "mark accepted between groups of three digits", DUSKGRID_AT(thousands), to_letter),
+      field<S>("thousands", "one of , . ' _ or space",
+               "mark accepted between groups of three digits; the point where decimal is the comma",
+               DUSKGRID_AT(thousands), to_letter),
       field<S>("date_format", "letters d m Y y b H M S after %",
                "how dates are written when not ISO, YYYYMMDD or Unix seconds",
                DUSKGRID_AT(date_format), to_text),
@@ -100,8 +104,8 @@ const std::vector<Field<SourceOptions>>& source_fields() {
       field<S>("half_spread", ">= 0, quote currency",
                "half-spread to assume where a file has one price a contract",
                DUSKGRID_AT(half_spread_absolute), to_number),
-      field<S>("half_spread_relative", ">= 0, fraction of the price",
-               "added to half_spread", DUSKGRID_AT(half_spread_relative), to_number),
+      field<S>("half_spread_relative", ">= 0, fraction of the price", "added to half_spread",
+               DUSKGRID_AT(half_spread_relative), to_number),
       {"exercise", "european or american", "exercise style where no column says",
        [](S& s, const toml::node& node) {
          const auto exercise = to_exercise(node);
@@ -112,8 +116,8 @@ const std::vector<Field<SourceOptions>>& source_fields() {
       field<S>("columns", "table of field = \"header\"",
                "which header carries a field, where the ordinary words do not show it",
                DUSKGRID_AT(columns), to_text_map),
-      field<S>("fixed", "table of field = \"text\"",
-               "what the file lacks, the same for every row", DUSKGRID_AT(fixed), to_text_map),
+      field<S>("fixed", "table of field = \"text\"", "what the file lacks, the same for every row",
+               DUSKGRID_AT(fixed), to_text_map),
   };
   return fields;
 }
@@ -161,13 +165,15 @@ const std::vector<Field<market::ParityOptions>>& parity_fields() {
                "deviation of an expiry's own zero rate from the given curve that counts as one "
                "standard error",
                DUSKGRID_AT(rate_tolerance_given), to_number),
-      field<P>("rate_tolerance_common", "> 0, decimals a year",
-               "the same, from the rate all expiries share where no curve is given",
-               DUSKGRID_AT(rate_tolerance_common), to_number),
+      field<P>(
+          "rate_tolerance_common", "> 0, decimals a year",
+          "deviation of an expiry's own zero rate from the rate all expiries share, where no curve "
+          "is given, that counts as one standard error",
+          DUSKGRID_AT(rate_tolerance_common), to_number),
       field<P>("near_deviations", "> 0",
                "pairs near the money lie within this many at-the-money deviations",
                DUSKGRID_AT(near_deviations), to_number),
-      field<P>("most_near_pairs", ">= 1", "and are at most so many, nearest first",
+      field<P>("most_near_pairs", ">= 1", "most pairs near the money, nearest first",
                DUSKGRID_AT(most_near_pairs), to_count),
   };
   return fields;
@@ -286,20 +292,21 @@ std::optional<Failure> unknown_key(const Place& place, const toml::node& node, s
 // Reads every key of `table` that `fields` knows; `others` takes the rest and returns true for
 // those it knows.
 template <class Target, class Others>
-std::optional<Failure> read_table(const toml::table& table, const std::vector<Field<Target>>& fields,
-                                  Target& target, const Place& place, Others others,
+std::optional<Failure> read_table(const toml::table& table,
+                                  const std::vector<Field<Target>>& fields, Target& target,
+                                  const Place& place, Others others,
                                   std::vector<std::string> known = {}) {
   for (const auto& f : fields) known.emplace_back(f.key);
   for (const auto& [key, node] : table) {
-    const auto found = std::find_if(fields.begin(), fields.end(),
-                                    [&, &name = key](const auto& f) { return f.key == name.str(); });
+    const auto found = std::find_if(fields.begin(), fields.end(), [&, &name = key](const auto& f) {
+      return f.key == name.str();
+    });
     if (found == fields.end()) {
       if (others(key.str())) continue;
       return unknown_key(place, node, key.str(), known);
     }
     if (!found->read(target, node))
-      return place.failure(
-          node, fmt::format("{} must be {}", place.full(key.str()), found->range));
+      return place.failure(node, fmt::format("{} must be {}", place.full(key.str()), found->range));
   }
   return std::nullopt;
 }
@@ -319,6 +326,8 @@ std::optional<Failure> read_sources(const toml::node& node, NightConfig& config,
   for (const auto& item : *node.as_array()) {
     SourceOptions source;
     if (auto failure = read_plain(item, source_fields(), source, place)) return failure;
+    // Where the comma is the decimal mark the point is what groups digits.
+    if (source.decimal == ',' && !item.as_table()->contains("thousands")) source.thousands = '.';
     if (const auto problem = source.problem()) return place.failure(item, "source: " + *problem);
     for (auto& file : source.files)
       if (!folder.empty() && !std::filesystem::path(file).is_absolute())
@@ -362,8 +371,7 @@ std::optional<Failure> read_night(const toml::table& table, NightConfig& config,
   const auto is_table = [&](std::string_view key) {
     return std::find(tables.begin(), tables.end(), key) != tables.end();
   };
-  if (auto failure =
-          read_table(table, night_fields(), config, Place{where, ""}, is_table, tables))
+  if (auto failure = read_table(table, night_fields(), config, Place{where, ""}, is_table, tables))
     return failure;
   if (const auto* node = table.get("source"))
     if (auto failure = read_sources(*node, config, where, folder)) return failure;
@@ -487,7 +495,8 @@ Result<NightConfig> parse_config(std::string_view toml_text, const std::string& 
                    fmt::format("{} line {}", where, error.source().begin.line),
                    std::string(error.description())};
   }
-  if (const auto problem = problem_of(config)) return Failure{Fault::configuration, where, *problem};
+  if (const auto problem = problem_of(config))
+    return Failure{Fault::configuration, where, *problem};
   return config;
 }
 
@@ -504,8 +513,9 @@ Result<ResolvedNight> resolve(const NightConfig& config) {
   quotes::Clock zone{config.zone, {}};
   if (const auto problem = zone.problem()) return Failure{Fault::configuration, "", *problem};
   if (config.as_of_text.empty())
-    return Failure{Fault::usage, "",
-                   "no as-of: say --as-of 2031-03-14T16:00:00-05:00, or as_of in the configuration"};
+    return Failure{
+        Fault::usage, "",
+        "no as-of: say --as-of 2031-03-14T16:00:00-05:00, or as_of in the configuration"};
   auto as_of = quotes::parse_as_of(config.as_of_text, config.zone);
   if (!as_of) return as_of.failure();
   ResolvedNight night{*as_of, {as_of->clock, std::chrono::hours{16}, {}}, {}};

@@ -20,10 +20,10 @@ namespace duskgrid::night {
 
 // What a user states about one underlying.
 struct UnderlyingFacts {
-  std::optional<double> spot;                   // quote currency
-  std::optional<double> carry;                  // continuous yield, decimals a year
-  std::map<std::string, double> forwards;       // date or instant as written, to quote currency
-  std::optional<quotes::Exercise> exercise;     // over what its file says by default
+  std::optional<double> spot;                // quote currency
+  std::optional<double> carry;               // continuous yield, decimals a year
+  std::map<std::string, double> forwards;    // date or instant as written, to quote currency
+  std::optional<quotes::Exercise> exercise;  // over what its file says by default
 };
 
 struct FlagOptions {
@@ -33,14 +33,14 @@ struct FlagOptions {
 };
 
 struct NightConfig {
-  std::string as_of_text;                       // as written; the command line wins
-  std::string zone;                             // IANA name; empty for the as-of's own offset
+  std::string as_of_text;  // as written; the command line wins
+  std::string zone;        // IANA name; empty for the as-of's own offset
   std::map<std::string, std::string> settlement_times;
   std::vector<quotes::SourceOptions> sources;
-  std::map<std::string, double> rates;          // tenor or date, to continuous zero rate
+  std::map<std::string, double> rates;  // tenor or date, to continuous zero rate
   std::map<std::string, double> discount_factors;
   std::map<std::string, UnderlyingFacts> underlyings;
-  std::optional<double> spot;                   // of underlyings that have none of their own
+  std::optional<double> spot;  // of underlyings that have none of their own
   quotes::CleanOptions clean;
   market::ParityOptions parity;
   pricing::SelectionOptions selection;
@@ -58,10 +58,10 @@ struct ResolvedNight {
 
 // One line of the manual.
 struct OptionEntry {
-  std::string_view table;    // "", "source", "clean", "underlying.NAME", ...
+  std::string_view table;  // "", "source", "clean", "underlying.NAME", ...
   std::string_view key;
-  std::string range;         // what may stand there
-  std::string fallback;      // default, as written
+  std::string range;     // what may stand there
+  std::string fallback;  // default, as written
   std::string_view meaning;
 };
 std::vector<OptionEntry> options();

@@ -21,7 +21,7 @@ using nlohmann::ordered_json;
 template <class Target>
 struct Field {
   std::string_view key;
-  std::string range;          // what may stand there, for the manual and for messages
+  std::string range;  // what may stand there, for the manual and for messages
   std::string_view meaning;
   std::function<bool(Target&, const toml::node&)> read;  // false: not what may stand there
   std::function<ordered_json(const Target&)> write;

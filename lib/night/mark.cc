@@ -30,11 +30,20 @@ struct OpenSlice {
 // crossed, stale, odd or misread ones. An outlier is where arbitrage shows first.
 bool firm_reason(Reason reason) {
   switch (reason) {
-    case Reason::expired: case Reason::too_short: case Reason::crossed: case Reason::duplicate:
-    case Reason::stale: case Reason::non_standard: case Reason::unreadable:
-      return false;
+    case Reason::expired:
+    case Reason::too_short:
+    case Reason::crossed:
+    case Reason::duplicate:
+    case Reason::stale:
+    case Reason::non_standard:
+    case Reason::unreadable: return false;
     default: return true;
   }
+}
+
+// "1 arbitrage", "2 arbitrages".
+std::string counted(std::size_t n, const char* what) {
+  return fmt::format("{} {}{}", n, what, n == 1 ? "" : "s");
 }
 
 class Marker {
@@ -75,8 +84,8 @@ class Marker {
         if (facts_.exercise) quote(row).exercise = *facts_.exercise;
         american = american || quote(row).exercise == quotes::Exercise::american;
       }
-      slices_.push_back({&slice, market::year_fraction(night_.as_of.instant, slice.expiry),
-                         american, {}});
+      slices_.push_back(
+          {&slice, market::year_fraction(night_.as_of.instant, slice.expiry), american, {}});
     }
   }
 
@@ -104,8 +113,7 @@ class Marker {
       if (!cell) continue;
       const auto instant = quotes::resolve(*cell, night_.as_of.clock, night_.times.default_time);
       const bool dated = cell->date && !cell->time_of_day;
-      if (instant == expiry ||
-          (dated && quotes::format_date(night_.as_of.clock, instant) == date))
+      if (instant == expiry || (dated && quotes::format_date(night_.as_of.clock, instant) == date))
         return forward;
     }
     return std::nullopt;
@@ -142,9 +150,9 @@ class Marker {
   void select() {
     for (const auto& s : slices_) {
       if (s.forward) {
-        pricing::select_quotes(
-            table_, *s.rows,
-            {s.year_fraction, s.forward->forward, s.forward->discount_factor}, config_.selection);
+        pricing::select_quotes(table_, *s.rows,
+                               {s.year_fraction, s.forward->forward, s.forward->discount_factor},
+                               config_.selection);
         continue;
       }
       for (const auto row : s.rows->rows)
@@ -166,11 +174,16 @@ class Marker {
           if (const Quote& q = quote(row); q.reason == Reason::none)
             target.quotes.push_back({k_of(q, s), q.vol_mid, 0.5 * (q.vol_ask - q.vol_bid)});
       if (target.quotes.empty()) continue;
-      const auto [low, high] = std::minmax_element(
-          target.quotes.begin(), target.quotes.end(),
-          [](const auto& a, const auto& b) { return a.k < b.k; });
-      surface.slices.push_back({s.rows->expiry, s.year_fraction, s.forward->forward,
-                                s.forward->discount_factor, {}, low->k, high->k});
+      const auto [low, high] =
+          std::minmax_element(target.quotes.begin(), target.quotes.end(),
+                              [](const auto& a, const auto& b) { return a.k < b.k; });
+      surface.slices.push_back({s.rows->expiry,
+                                s.year_fraction,
+                                s.forward->forward,
+                                s.forward->discount_factor,
+                                {},
+                                low->k,
+                                high->k});
       fitted_.push_back(&s);
       targets.push_back(std::move(target));
     }
@@ -238,8 +251,8 @@ class Marker {
       const Quote& q = quote(row);
       if (!firm_reason(q.reason)) continue;
       if (strikes.empty() || strikes.back().strike != q.strike)
-        strikes.push_back({q.strike, quotes::kAbsent, quotes::kAbsent, quotes::kAbsent,
-                           quotes::kAbsent});
+        strikes.push_back(
+            {q.strike, quotes::kAbsent, quotes::kAbsent, quotes::kAbsent, quotes::kAbsent});
       auto& strike = strikes.back();
       const bool call = q.put_call == PutCall::call;
       (call ? strike.call_bid : strike.put_bid) = firm_price(q, q.bid, s);
@@ -256,13 +269,13 @@ class Marker {
                         s.forward->discount_factor, s.american, firm_strikes(s)});
     out_.violations = arbitrage::check_quotes(firm);
     if (!out_.violations.empty())
-      flag(fmt::format("{} arbitrages among the quotes", out_.violations.size()));
+      flag(fmt::format("{} among the quotes", counted(out_.violations.size(), "arbitrage")));
   }
 
   void check_the_surface() {
     auto check = arbitrage::check_surface(*out_.surface);
     if (check.violations.empty()) return;
-    flag(fmt::format("{} arbitrages in the surface", check.violations.size()));
+    flag(fmt::format("{} in the surface", counted(check.violations.size(), "arbitrage")));
     std::move(check.violations.begin(), check.violations.end(),
               std::back_inserter(out_.violations));
   }
@@ -290,7 +303,7 @@ class Marker {
 
   void flag_expiries(const char* what, auto counts) {
     const auto n = std::count_if(slices_.begin(), slices_.end(), counts);
-    if (n > 0) flag(fmt::format("{} of {} expiries {}", n, slices_.size(), what));
+    if (n > 0) flag(fmt::format("{}: {} of {} expiries", what, n, slices_.size()));
   }
 
   // What stopped the quotes of an underlying that has no surface.
@@ -315,14 +328,17 @@ class Marker {
       return;
     }
     record.slices = static_cast<std::int64_t>(out_.surface->slices.size());
-    flag_expiries("have no forward", [](const OpenSlice& s) { return !s.forward; });
-    flag_expiries("have no usable quote", [&](const OpenSlice& s) {
+    flag_expiries("no forward", [](const OpenSlice& s) { return !s.forward; });
+    flag_expiries("no usable quote", [&](const OpenSlice& s) {
       return s.forward && std::find(fitted_.begin(), fitted_.end(), &s) == fitted_.end();
     });
-    flag_expiries("have contradicting near-the-money parity",
+    flag_expiries("call-put parity broken near the money",
                   [](const OpenSlice& s) { return s.forward && s.forward->breaks > 0; });
-    flag_expiries("are american, fitted as european",
-                  [](const OpenSlice& s) { return s.american; });
+    flag_expiries("american fitted as european", [](const OpenSlice& s) { return s.american; });
+    // Early exercise hides the rate in the quotes, so it has to be given.
+    if (!night_.curve)
+      flag_expiries("american without rates, discounted at the rate of the european expiries or 0",
+                    [](const OpenSlice& s) { return s.american; });
     record.status = record.message.empty() ? publish::Status::published : publish::Status::flagged;
   }
 

@@ -16,8 +16,8 @@ namespace duskgrid::night {
 struct SliceQuality {
   quotes::Instant expiry;
   std::int64_t used;
-  std::int64_t inside;      // used quotes whose spread the surface meets
-  double rms_vol;           // of vol_fit - vol_mid over used quotes, decimals a year
+  std::int64_t inside;  // used quotes whose spread the surface meets
+  double rms_vol;       // of vol_fit - vol_mid over used quotes, decimals a year
 };
 
 struct MarkedUnderlying {

@@ -85,9 +85,8 @@ std::vector<MarkedUnderlying> mark_all(quotes::QuoteTable& table, const NightCon
   std::vector<std::size_t> order(chains.size());
   std::iota(order.begin(), order.end(), std::size_t{0});
   // The largest first, so that no thread is left with one at the end.
-  std::stable_sort(order.begin(), order.end(), [&](std::size_t a, std::size_t b) {
-    return chains[a].read > chains[b].read;
-  });
+  std::stable_sort(order.begin(), order.end(),
+                   [&](std::size_t a, std::size_t b) { return chains[a].read > chains[b].read; });
   std::mutex telling;
   std::int64_t done = 0;
   tbb::parallel_for_each(order.begin(), order.end(), [&](std::size_t i) {
@@ -111,8 +110,8 @@ Result<bool> write_tables(RunFolder& folder, const quotes::QuoteTable& table,
     file.write(publish::kGridHeader);
     for (const auto& m : marked)
       for (const auto& node : m.grid)
-        file.write(publish::grid_line(node, config.grid.axis, m.record.name,
-                                      night.as_of.instant, instants));
+        file.write(publish::grid_line(node, config.grid.axis, m.record.name, night.as_of.instant,
+                                      instants));
   });
   if (written)
     written = folder.add("ledger.csv", [&](RunFile& file) {
@@ -184,8 +183,13 @@ Result<NightOutcome> run_night(const NightConfig& config, const RunOptions& opti
 
   stages.begin("publish");
   NightOutcome outcome;
-  outcome.record = {DUSKGRID_VERSION, night->as_of, config_to_json(config), std::move(*inputs), {},
-                    count_rows(table), {}};
+  outcome.record = {DUSKGRID_VERSION,
+                    night->as_of,
+                    config_to_json(config),
+                    std::move(*inputs),
+                    {},
+                    count_rows(table),
+                    {}};
   if (!outcome.record.rows.adds_up())
     return Failure{Fault::no_convergence, "ledger", "the counts do not add up to the rows read"};
   for (const auto& m : marked) outcome.record.underlyings.push_back(m.record);
@@ -195,14 +199,12 @@ Result<NightOutcome> run_night(const NightConfig& config, const RunOptions& opti
   if (auto written = write_tables(folder, table, marked, config, *night); !written)
     return written.failure();
   outcome.record.outputs = folder.digests();
-  auto written = folder.add("run.json", [&](RunFile& file) {
-    file.write(publish::run_to_json(outcome.record));
-  });
+  auto written = folder.add(
+      "run.json", [&](RunFile& file) { file.write(publish::run_to_json(outcome.record)); });
   const publish::Timings timings{stages.end(), threads, peak_memory_bytes()};
   if (written)
-    written = folder.add("timings.json", [&](RunFile& file) {
-      file.write(publish::timings_to_json(timings));
-    });
+    written = folder.add("timings.json",
+                         [&](RunFile& file) { file.write(publish::timings_to_json(timings)); });
   if (written) written = folder.commit();
   if (!written) return written.failure();
   outcome.folder = folder.final_path();

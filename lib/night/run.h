@@ -26,9 +26,10 @@ struct RunOptions {
 
 struct NightOutcome {
   publish::RunRecord record;
-  std::vector<MarkedUnderlying> underlyings;  // by name; without their grids, which are in the folder
+  std::vector<MarkedUnderlying>
+      underlyings;  // by name; without their grids, which are in the folder
   std::vector<quotes::FileSummary> files;
-  std::string folder;                         // where it was published
+  std::string folder;  // where it was published
 };
 
 // Loads, cleans, marks every underlying and publishes. The folder is <out>/<local date of the

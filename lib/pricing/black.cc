@@ -42,11 +42,10 @@ double erf_near_zero(double x) {
 
 // exp(x^2) erfc(x) on [0.46875, 4].
 double scaled_erfc_middle(double x) {
-  constexpr std::array<double, 9> kP{5.64188496988670089e-1, 8.88314979438837594e00,
-                                     6.61191906371416295e01, 2.98635138197400131e02,
-                                     8.81952221241769090e02, 1.71204761263407058e03,
-                                     2.05107837782607147e03, 1.23033935479799725e03,
-                                     2.15311535474403846e-8};
+  constexpr std::array<double, 9> kP{
+      5.64188496988670089e-1, 8.88314979438837594e00, 6.61191906371416295e01,
+      2.98635138197400131e02, 8.81952221241769090e02, 1.71204761263407058e03,
+      2.05107837782607147e03, 1.23033935479799725e03, 2.15311535474403846e-8};
   constexpr std::array<double, 8> kQ{1.57449261107098347e01, 1.17693950891312499e02,
                                      5.37181101862009858e02, 1.62138957456669019e03,
                                      3.29079923573345963e03, 4.36261909014324716e03,
@@ -101,7 +100,8 @@ double mills_difference_series(double h, double t) {
 double scaled_erfc(double x) {
   const double magnitude = std::abs(x);
   if (magnitude <= 0.46875) return std::exp(x * x) * (1.0 - erf_near_zero(x));
-  const double positive = magnitude <= 4.0 ? scaled_erfc_middle(magnitude) : scaled_erfc_tail(magnitude);
+  const double positive =
+      magnitude <= 4.0 ? scaled_erfc_middle(magnitude) : scaled_erfc_tail(magnitude);
   return x > 0 ? positive : 2.0 * std::exp(x * x) - positive;
 }
 

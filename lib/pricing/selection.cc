@@ -47,8 +47,10 @@ void judge_bounds(Quote& q, const SliceMarket& m) {
   if (q.reason != Reason::none || q.quoted_in == QuotedIn::vol) return;
   const BlackTerms terms = terms_of(q, m);
   // An ask out there has no volatility either.
-  if (q.bid >= upper_bound(terms) || q.ask >= upper_bound(terms)) q.reason = Reason::above_bound;
-  else if (q.ask <= discounted_intrinsic(terms)) q.reason = Reason::below_intrinsic;
+  if (q.bid >= upper_bound(terms) || q.ask >= upper_bound(terms))
+    q.reason = Reason::above_bound;
+  else if (q.ask <= discounted_intrinsic(terms))
+    q.reason = Reason::below_intrinsic;
 }
 
 bool out_of_the_money(const Quote& q, double forward) {
@@ -88,8 +90,8 @@ class SliceSelection {
     const auto nearest = *std::min_element(used.begin(), used.end(), [&](auto a, auto b) {
       return std::abs(k_of(a)) < std::abs(k_of(b));
     });
-    const double reach =
-        far_deviations * at(nearest).vol_mid * std::sqrt(market_.year_fraction) + std::abs(k_of(nearest));
+    const double reach = far_deviations * at(nearest).vol_mid * std::sqrt(market_.year_fraction) +
+                         std::abs(k_of(nearest));
     for (const auto i : used)
       if (std::abs(k_of(i)) > reach) at(i).reason = Reason::far_wing;
   }

@@ -34,7 +34,7 @@ std::string Sha256::hex() {
 
 Result<FileDigest> digest_file(const std::string& path) {
   const std::unique_ptr<std::FILE, int (*)(std::FILE*)> file(std::fopen(path.c_str(), "rb"),
-                                                            &std::fclose);
+                                                             &std::fclose);
   if (!file) return Failure{Fault::no_input, path, "cannot be opened for reading"};
   Sha256 sum;
   std::int64_t bytes = 0;

@@ -33,8 +33,8 @@ std::vector<When> times_of(const surface::Surface& surface, const GridInputs& in
   std::vector<When> times;
   for (std::size_t i = 0; i < surface.slices.size(); ++i) {
     const auto& s = surface.slices[i];
-    times.push_back({s.expiry, "", s.year_fraction, s.forward, s.discount_factor,
-                     static_cast<int>(i)});
+    times.push_back(
+        {s.expiry, "", s.year_fraction, s.forward, s.discount_factor, static_cast<int>(i)});
   }
   for (std::size_t i = 0; i < options.tenors.size(); ++i) {
     const auto expiry = market::add_tenor(inputs.as_of, options.tenors[i], inputs.clock);
@@ -43,7 +43,8 @@ std::vector<When> times_of(const surface::Surface& surface, const GridInputs& in
     const auto carried = surface::carried_at(surface, t);
     // Growth carried on for centuries may leave the range of numbers.
     if (!positive(carried.forward) || !positive(carried.discount_factor)) continue;
-    times.push_back({expiry, options.tenor_words[i], t, carried.forward, carried.discount_factor, -1});
+    times.push_back(
+        {expiry, options.tenor_words[i], t, carried.forward, carried.discount_factor, -1});
   }
   std::stable_sort(times.begin(), times.end(), [](const When& a, const When& b) {
     return std::pair(a.expiry, !a.tenor.empty()) < std::pair(b.expiry, !b.tenor.empty());
@@ -149,9 +150,9 @@ bool quoted_within(const std::vector<double>& used_k, std::pair<double, double> 
 std::pair<double, double> quoted_range(const surface::Surface& surface, const When& when) {
   const auto& slices = surface.slices;
   if (when.slice >= 0) return {slices[when.slice].k_low, slices[when.slice].k_high};
-  const auto next = std::lower_bound(
-      slices.begin(), slices.end(), when.year_fraction,
-      [](const surface::Slice& s, double t) { return s.year_fraction < t; });
+  const auto next =
+      std::lower_bound(slices.begin(), slices.end(), when.year_fraction,
+                       [](const surface::Slice& s, double t) { return s.year_fraction < t; });
   if (next == slices.end()) return {slices.back().k_low, slices.back().k_high};
   if (next == slices.begin() || next->year_fraction == when.year_fraction)
     return {next->k_low, next->k_high};
@@ -168,7 +169,8 @@ Support support_of(const surface::Surface& surface, const GridInputs& inputs, co
   const bool outside_time = when.year_fraction < surface.slices.front().year_fraction ||
                             when.year_fraction > surface.slices.back().year_fraction;
   if (outside_time || nodes[i].k < low || nodes[i].k > high) return Support::extrapolated;
-  const bool observed = when.slice >= 0 && quoted_within(inputs.used_k[when.slice], cell_of(nodes, i));
+  const bool observed =
+      when.slice >= 0 && quoted_within(inputs.used_k[when.slice], cell_of(nodes, i));
   return observed ? Support::observed : Support::interpolated;
 }
 
@@ -208,7 +210,9 @@ std::optional<std::string> GridOptions::problem() const {
   for (const double p : points) {
     if (!std::isfinite(p) || (positive && p <= 0) || (axis == Axis::delta && p >= 1))
       return fmt::format("points has {}, must be {} on the {} axis", p,
-                         axis == Axis::delta ? "between 0 and 1" : positive ? "> 0" : "finite",
+                         axis == Axis::delta ? "between 0 and 1"
+                         : positive          ? "> 0"
+                                             : "finite",
                          word(axis));
   }
   return std::nullopt;

@@ -36,27 +36,27 @@ std::vector<double> default_points(Axis axis);
 // What the grid must know of an underlying beside its surface.
 struct GridInputs {
   quotes::Instant as_of;
-  quotes::Clock clock;                               // for tenors
-  std::vector<std::vector<double>> used_k;           // a slice: ln(K/F) of used quotes, increasing
-  std::vector<double> listed_strikes;                // increasing
-  bool carried = false;                              // the surface is an earlier night's
+  quotes::Clock clock;                      // for tenors
+  std::vector<std::vector<double>> used_k;  // a slice: ln(K/F) of used quotes, increasing
+  std::vector<double> listed_strikes;       // increasing
+  bool carried = false;                     // the surface is an earlier night's
 };
 
 struct GridNode {
   quotes::Instant expiry;
-  std::string tenor;        // empty at a listed expiry
+  std::string tenor;  // empty at a listed expiry
   double year_fraction;
   double forward, discount_factor;
-  double point;             // on the axis
+  double point;  // on the axis
   double strike;
-  double vol;               // decimals a year
+  double vol;  // decimals a year
   Support support;
 };
 
-// Nodes by time (a listed expiry before a tenor of the same instant), then by strike. Every time has
-// a node at k = 0, added when the points have none. A delta that the smile does not reach within
-// 40 deviations, a node without a finite positive strike and volatility, and a tenor without a
-// finite positive forward and discount factor, are left out.
+// Nodes by time (a listed expiry before a tenor of the same instant), then by strike. Every time
+// has a node at k = 0, added when the points have none. A delta that the smile does not reach
+// within 40 deviations, a node without a finite positive strike and volatility, and a tenor without
+// a finite positive forward and discount factor, are left out.
 std::vector<GridNode> sample_grid(const surface::Surface& surface, const GridInputs& inputs,
                                   const GridOptions& options);
 

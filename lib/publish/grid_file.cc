@@ -60,7 +60,8 @@ class GridBuilder {
  public:
   void add(const Row& row) {
     const arbitrage::VolSlice slice = slice_of(row);
-    const arbitrage::VolNode node{positive_number(row.strike, "strike"), positive_number(row.vol, "vol")};
+    const arbitrage::VolNode node{positive_number(row.strike, "strike"),
+                                  positive_number(row.vol, "vol")};
     const std::string name = unguarded(row.underlying ? row.underlying : "");
     const auto key = std::pair(name, slice.year_fraction);
     auto& found = slices_.try_emplace(key, slice).first->second;
@@ -73,22 +74,21 @@ class GridBuilder {
     GridFile file{clock_, {}};
     for (auto& [key, slice] : slices_) {
       auto& nodes = slice.nodes;
-      std::sort(nodes.begin(), nodes.end(),
-                [](const VolNode& a, const VolNode& b) {
-                  return std::pair(a.strike, a.vol) < std::pair(b.strike, b.vol);
-                });
-      const auto twice = std::adjacent_find(
-          nodes.begin(), nodes.end(),
-          [](const VolNode& a, const VolNode& b) { return a.strike == b.strike && a.vol != b.vol; });
+      std::sort(nodes.begin(), nodes.end(), [](const VolNode& a, const VolNode& b) {
+        return std::pair(a.strike, a.vol) < std::pair(b.strike, b.vol);
+      });
+      const auto twice =
+          std::adjacent_find(nodes.begin(), nodes.end(), [](const VolNode& a, const VolNode& b) {
+            return a.strike == b.strike && a.vol != b.vol;
+          });
       if (twice != nodes.end())
         return Failure{Fault::not_quotes, path,
                        fmt::format("strike {} has two volatilities at one expiry", twice->strike)};
       // A tenor may fall on a listed expiry.
-      nodes.erase(std::unique(nodes.begin(), nodes.end(),
-                              [](const VolNode& a, const VolNode& b) {
-                                return a.strike == b.strike;
-                              }),
-                  nodes.end());
+      nodes.erase(
+          std::unique(nodes.begin(), nodes.end(),
+                      [](const VolNode& a, const VolNode& b) { return a.strike == b.strike; }),
+          nodes.end());
       if (file.grids.empty() || file.grids.back().underlying != key.first)
         file.grids.push_back({key.first, {}});
       file.grids.back().slices.push_back(std::move(slice));
@@ -119,9 +119,8 @@ class GridBuilder {
     if (row.expiry)
       slice.expiry =
           quotes::resolve(dated(last_expiry_, expiry_cell_, row.expiry, "expiry"), clock_, kClose);
-    slice.year_fraction = row.year_fraction
-                              ? positive_number(row.year_fraction, "year_fraction")
-                              : market::year_fraction(as_of, slice.expiry);
+    slice.year_fraction = row.year_fraction ? positive_number(row.year_fraction, "year_fraction")
+                                            : market::year_fraction(as_of, slice.expiry);
     if (!(slice.year_fraction > 0)) throw BadRow{"expiry is not after as_of"};
     if (!row.expiry) slice.expiry = instant_after(as_of, slice.year_fraction);
     slice.forward = positive_number(row.forward, "forward");
@@ -147,9 +146,7 @@ class GridBuilder {
 }  // namespace
 
 Result<GridFile> read_grid(const std::string& path) {
-  const auto refuse = [&](const std::string& why) {
-    return Failure{Fault::not_quotes, path, why};
-  };
+  const auto refuse = [&](const std::string& why) { return Failure{Fault::not_quotes, path, why}; };
   std::error_code error;
   if (!std::filesystem::is_regular_file(path, error))
     return Failure{Fault::no_input, path, "is missing or not a file"};
@@ -157,19 +154,20 @@ Result<GridFile> read_grid(const std::string& path) {
   try {
     io::CSVReader<8, io::trim_chars<' '>, io::double_quote_escape<',', '"'>> reader(path);
     reader.read_header(io::ignore_extra_column | io::ignore_missing_column, "as_of", "underlying",
-                       "expiry", "year_fraction", "forward", "discount_factor", "strike",
-                       "vol");
+                       "expiry", "year_fraction", "forward", "discount_factor", "strike", "vol");
     for (const char* needed : {"strike", "vol", "forward"})
       if (!reader.has_column(needed))
-        return refuse(fmt::format("has no column '{}'; a grid needs strike, vol, forward and "
-                                  "year_fraction (or as_of and expiry)", needed));
+        return refuse(
+            fmt::format("has no column '{}'; a grid needs strike, vol, forward and "
+                        "year_fraction (or as_of and expiry)",
+                        needed));
     const bool dated = reader.has_column("as_of") && reader.has_column("expiry");
     if (!dated && !reader.has_column("year_fraction"))
       return refuse("has neither year_fraction nor both as_of and expiry");
     GridBuilder builder;
     Row row;
-    while (reader.read_row(row.as_of, row.underlying, row.expiry, row.year_fraction,
-                           row.forward, row.discount_factor, row.strike, row.vol)) {
+    while (reader.read_row(row.as_of, row.underlying, row.expiry, row.year_fraction, row.forward,
+                           row.discount_factor, row.strike, row.vol)) {
       line = reader.get_file_line();
       builder.add(row);
     }

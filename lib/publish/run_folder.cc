@@ -39,7 +39,7 @@ bool sync_path(const std::string& path) {
 // Puts `partial` where `final` is. Where the kernel can swap the two names there is no
 // instant without a folder of that name; elsewhere the old one steps aside first.
 bool swap_in(const std::string& partial, const std::string& final) {
-  struct stat found{};
+  struct stat found {};
   if (::lstat(final.c_str(), &found) != 0) return ::rename(partial.c_str(), final.c_str()) == 0;
   if (::renameat2(AT_FDCWD, partial.c_str(), AT_FDCWD, final.c_str(), RENAME_EXCHANGE) == 0)
     return true;
@@ -65,7 +65,8 @@ bool clear_leftovers(const fs::path& out, std::error_code& error) {
     if (name.ends_with(kAside)) {
       const fs::path home =
           out / name.substr(kPartial.size(), name.size() - kPartial.size() - kAside.size());
-      if (!fs::exists(fs::symlink_status(home))) fs::rename(out / name, home, error);
+      std::error_code ignored;
+      if (!fs::exists(fs::symlink_status(home, ignored))) fs::rename(out / name, home, error);
     }
     if (!error) fs::remove_all(out / name, error);
   }
@@ -84,14 +85,18 @@ void RunFile::flush() {
   std::size_t done = 0;
   while (done < buffer_.size() && error_.empty()) {
     const ssize_t n = ::write(descriptor_, buffer_.data() + done, buffer_.size() - done);
-    if (n > 0) done += static_cast<std::size_t>(n);
-    else if (errno != EINTR) error_ = last_error();
+    if (n > 0)
+      done += static_cast<std::size_t>(n);
+    else if (errno != EINTR)
+      error_ = last_error();
   }
   buffer_.clear();
 }
 
 RunFolder::RunFolder(std::string out, std::string name)
-    : out_(std::move(out)), final_(out_ + "/" + name), partial_(out_ + "/" + std::string(kPartial) + name) {}
+    : out_(std::move(out)),
+      final_(out_ + "/" + name),
+      partial_(out_ + "/" + std::string(kPartial) + name) {}
 
 RunFolder::~RunFolder() {
   std::error_code ignored;

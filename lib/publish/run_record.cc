@@ -21,7 +21,8 @@ ordered_json underlying_to_json(const UnderlyingRecord& u) {
   out["used"] = u.used;
   out["inside"] = u.inside;
   out["violations"] = u.violations;
-  out["carried_from"] = u.carried_from.empty() ? ordered_json(nullptr) : ordered_json(u.carried_from);
+  out["carried_from"] =
+      u.carried_from.empty() ? ordered_json(nullptr) : ordered_json(u.carried_from);
   out["message"] = u.message;
   return out;
 }
@@ -64,9 +65,8 @@ std::string timings_to_json(const Timings& timings) {
   ordered_json out;
   out["stages"] = ordered_json::array();
   for (const auto& s : timings.stages)
-    out["stages"].push_back(ordered_json::object({{"stage", s.stage},
-                                                  {"wall_seconds", s.wall_seconds},
-                                                  {"cpu_seconds", s.cpu_seconds}}));
+    out["stages"].push_back(ordered_json::object(
+        {{"stage", s.stage}, {"wall_seconds", s.wall_seconds}, {"cpu_seconds", s.cpu_seconds}}));
   out["threads"] = timings.threads;
   out["peak_memory_bytes"] = timings.peak_memory_bytes;
   return text_of(out);

@@ -24,19 +24,19 @@ struct InputRecord {
 struct UnderlyingRecord {
   std::string name;
   Status status = Status::refused;
-  bool certified = false;       // proved free of arbitrage, not only looked at on points
+  bool certified = false;  // proved free of arbitrage, not only looked at on points
   std::int64_t slices = 0;
-  std::int64_t used = 0;        // quotes in the fit
-  std::int64_t inside = 0;      // of those, how many the surface meets inside bid-ask
+  std::int64_t used = 0;    // quotes in the fit
+  std::int64_t inside = 0;  // of those, how many the surface meets inside bid-ask
   std::int64_t violations = 0;
-  std::string carried_from;     // as-of of the night carried, empty when not
-  std::string message;          // why flagged or refused, in a few words
+  std::string carried_from;  // as-of of the night carried, empty when not
+  std::string message;       // why flagged or refused, in a few words
 };
 
 struct RunRecord {
   std::string version;
   quotes::AsOf as_of;
-  std::string configuration;    // JSON text, as resolved
+  std::string configuration;  // JSON text, as resolved
   std::vector<InputRecord> inputs;
   std::map<std::string, std::string> outputs;  // path in the folder to SHA-256
   quotes::LedgerCounts rows;

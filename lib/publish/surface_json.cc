@@ -56,8 +56,8 @@ std::string problem_of(const surface::Surface& surface) {
       return "year_fraction must be > 0 and increase from slice to slice";
     if (!positive(s.forward) || !positive(s.discount_factor))
       return "forward and discount_factor must be > 0";
-    if (!positive(s.backbone.theta) || !(std::abs(s.backbone.rho) < 1) ||
-        !(s.backbone.psi >= 0) || !std::isfinite(s.backbone.psi))
+    if (!positive(s.backbone.theta) || !(std::abs(s.backbone.rho) < 1) || !(s.backbone.psi >= 0) ||
+        !std::isfinite(s.backbone.psi))
       return "theta must be > 0, rho between -1 and 1, psi >= 0";
     if (!std::isfinite(s.k_low) || !std::isfinite(s.k_high) || s.k_low > s.k_high)
       return "k_low must not be above k_high";
@@ -86,7 +86,8 @@ Result<StoredSurface> surface_from_json(std::string_view text, const std::string
   };
   try {
     const auto in = ordered_json::parse(text);
-    if (in.at("form").get<std::string>() != kForm) return refuse("form is not " + std::string(kForm));
+    if (in.at("form").get<std::string>() != kForm)
+      return refuse("form is not " + std::string(kForm));
     auto as_of = quotes::parse_as_of(in.at("as_of").get<std::string>(), "");
     if (!as_of) return refuse(as_of.failure().text());
     StoredSurface stored{*as_of, {}};

@@ -69,8 +69,10 @@ std::string encode_file_name(std::string_view name) {
   std::string out;
   for (std::size_t i = 0; i < name.size(); ++i) {
     const bool inner_dot = name[i] == '.' && i > 0;
-    if (plain(name[i]) || inner_dot) out += name[i];
-    else out += fmt::format("%{:02X}", static_cast<unsigned char>(name[i]));
+    if (plain(name[i]) || inner_dot)
+      out += name[i];
+    else
+      out += fmt::format("%{:02X}", static_cast<unsigned char>(name[i]));
   }
   return in_folders(out);
 }

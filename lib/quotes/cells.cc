@@ -7,7 +7,7 @@
 namespace duskgrid::quotes {
 namespace {
 
-constexpr std::size_t kLongestName = 128;
+constexpr std::size_t kLongestName = 80;
 // Grouped numbers are rewritten in a buffer of this size. Any double, written in full
 // with its groups, of a size a market quotes, is far shorter.
 constexpr std::size_t kLongestRewritten = 64;

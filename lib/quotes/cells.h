@@ -48,7 +48,8 @@ std::optional<PutCall> parse_put_call(std::string_view cell);
 // European, American, E, A in any case, or the codes of FIX field 1194: 0 European, 1 American.
 std::optional<Exercise> parse_exercise(std::string_view cell);
 
-// A name as files write it: 1 to 128 bytes, no control characters.
+// A name as files write it: 1 to 80 bytes, no control characters (three times as many make a file
+// name).
 bool is_name(std::string_view text);
 
 }  // namespace duskgrid::quotes

@@ -14,9 +14,9 @@ struct ChainSlice {
 };
 
 struct Chain {
-  std::int32_t underlying;          // index into QuoteTable::underlyings
-  std::vector<ChainSlice> slices;   // by expiry
-  std::int64_t read = 0;            // contracts under this name, unreadable ones included
+  std::int32_t underlying;         // index into QuoteTable::underlyings
+  std::vector<ChainSlice> slices;  // by expiry
+  std::int64_t read = 0;           // readable contracts under this name
 };
 
 // One chain for every underlying named, in the order of their names (bytes), whatever the order of

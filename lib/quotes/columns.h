@@ -18,10 +18,29 @@ std::string_view word(Layout layout);
 // Every field a column can carry. In a call-put row the quote fields come once for
 // each side, as call_bid, put_bid and so on.
 enum class Field {
-  underlying, expiry, expiry_time, strike, put_call, osi_symbol,
-  bid, ask, bid_vol, ask_vol, price, bid_size, ask_size, volume, open_interest,
-  quote_time, underlying_price, underlying_bid, underlying_ask,
-  exercise, settlement, multiplier, currency,
+  underlying,
+  expiry,
+  expiry_time,
+  strike,
+  put_call,
+  osi_symbol,
+  bid,
+  ask,
+  bid_vol,
+  ask_vol,
+  price,
+  bid_size,
+  ask_size,
+  volume,
+  open_interest,
+  quote_time,
+  underlying_price,
+  underlying_bid,
+  underlying_ask,
+  exercise,
+  settlement,
+  multiplier,
+  currency,
 };
 inline constexpr int kFieldCount = 23;
 enum class Side { both, call, put };  // `both` for fields that belong to the row

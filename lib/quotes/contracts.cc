@@ -9,12 +9,22 @@
 namespace duskgrid::quotes {
 namespace {
 
+// An adjusted contract is of the name before the digit that marks it (common practice), so that
+// it is accounted for there and not as a name of its own.
+std::string_view underlying_of(const OsiSymbol& symbol) {
+  std::string_view root = symbol.root;
+  const auto last_letter = root.find_last_not_of("0123456789");
+  if (symbol.adjusted && last_letter != std::string_view::npos)
+    root = root.substr(0, last_letter + 1);
+  return root;
+}
+
 constexpr std::array<std::string_view, kNoteCount> kTexts{
     "",
     "a quotation mark is never closed",
     "wrong number of cells",
     "no underlying",
-    "underlying is no name of 1 to 128 bytes without control characters",
+    "underlying is no name of 1 to 80 bytes without control characters",
     "no expiry",
     "expiry is not a date",
     "expiry time is not a time of day",
@@ -96,8 +106,8 @@ ContractReader::SideColumns ContractReader::side_columns(const ColumnMap& column
     const int column = own >= 0 ? own : columns.find(field);
     if (column >= 0) found.index[i] = column;
   }
-  const bool in_prices = found.has(Field::bid) || found.has(Field::ask);
-  const bool in_vols = found.has(Field::bid_vol) || found.has(Field::ask_vol);
+  const bool in_prices = found.has(Field::bid) && found.has(Field::ask);
+  const bool in_vols = found.has(Field::bid_vol) && found.has(Field::ask_vol);
   if (!in_prices && in_vols) found.quoted_in = QuotedIn::vol;
   found.from_price = !in_prices && !in_vols;
   found.needs_symbol =
@@ -117,7 +127,7 @@ std::optional<Failure> ContractReader::problem_with_fixed(const std::string& wor
   };
   if (!slot) return unless(false, "the value of any field");
   switch (slot->first) {
-    case Field::underlying: return unless(is_name(cell), "a name of 1 to 128 bytes");
+    case Field::underlying: return unless(is_name(cell), "a name of 1 to 80 bytes");
     case Field::expiry:
     case Field::quote_time:
       return unless(parse_date_cell(cell, options_.date_format).has_value(), "a date");
@@ -246,7 +256,7 @@ Note ContractReader::read_symbol() {
 
 Note ContractReader::read_underlying(Quote& quote) {
   const bool own = side_->has(Field::underlying);
-  const std::string_view name = own ? cell(Field::underlying) : symbol_->root;
+  const std::string_view name = own ? cell(Field::underlying) : underlying_of(*symbol_);
   if (name.empty()) return Note::no_underlying;
   if (!is_name(name)) return Note::bad_underlying;
   quote.underlying = names_.index_of(name);

@@ -15,8 +15,8 @@ namespace duskgrid::quotes {
 // Where local dates and times are read and written: a zone of the IANA time zone
 // database when named, else a fixed offset from UTC.
 struct Clock {
-  std::string zone;                    // IANA name; empty for the fixed offset
-  std::chrono::minutes offset{0};      // used when zone is empty
+  std::string zone;                            // IANA name; empty for the fixed offset
+  std::chrono::minutes offset{0};              // used when zone is empty
   std::optional<std::string> problem() const;  // "zone = X, must be ..." or nothing
 };
 
@@ -34,10 +34,10 @@ std::string format_date(const Clock& clock, Instant instant);
 
 // What a date cell said, before a clock makes it an instant.
 struct DateCell {
-  std::optional<std::chrono::year_month_day> date;      // absent for Unix seconds
-  std::optional<std::chrono::seconds> time_of_day;      // absent when the cell has only a date
-  std::optional<std::chrono::minutes> offset;           // stated in the cell (Z is 0)
-  std::optional<Instant> instant;                       // Unix seconds
+  std::optional<std::chrono::year_month_day> date;  // absent for Unix seconds
+  std::optional<std::chrono::seconds> time_of_day;  // absent when the cell has only a date
+  std::optional<std::chrono::minutes> offset;       // stated in the cell (Z is 0)
+  std::optional<Instant> instant;                   // Unix seconds
 };
 
 // Reads 2031-06-20, 20310620, 2031-06-20T16:00[:00][Z|+hh:mm|+hhmm], a space for

@@ -8,7 +8,7 @@ namespace {
 constexpr std::array<ReasonEntry, kReasonCount> kReasons{{
     {Reason::none, State::used, "", "in the fit"},
     {Reason::in_the_money, State::spare, "in-the-money",
-     "sound, but the other side of the strike carries it"},
+     "sound, but no better than the side of the strike that is out of the money"},
     {Reason::far_wing, State::spare, "far-wing",
      "sound, but further from the money than the configured number of deviations"},
     {Reason::thinned, State::spare, "thinned",
@@ -26,7 +26,7 @@ constexpr std::array<ReasonEntry, kReasonCount> kReasons{{
     {Reason::below_intrinsic, State::dropped, "below-intrinsic",
      "the ask is at or below intrinsic value: no volatility is that low"},
     {Reason::above_bound, State::dropped, "above-bound",
-     "the bid is at or above the largest price any volatility gives"},
+     "the bid, or the ask, is at or above the largest price any volatility gives"},
     {Reason::duplicate, State::dropped, "duplicate",
      "the same contract again; the latest, then the tightest, is kept"},
     {Reason::stale, State::dropped, "stale", "quoted longer before the as-of than configured"},

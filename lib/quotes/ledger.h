@@ -14,9 +14,23 @@ enum class State : std::uint8_t { used, spare, dropped };
 
 enum class Reason : std::uint8_t {
   none,  // of used quotes only
-  in_the_money, far_wing, thinned,                                       // spare
-  unreadable, expired, too_short, no_bid, no_ask, crossed, wide,         // dropped
-  below_intrinsic, above_bound, duplicate, stale, non_standard, outlier, no_forward,
+  in_the_money,
+  far_wing,
+  thinned,  // spare
+  unreadable,
+  expired,
+  too_short,
+  no_bid,
+  no_ask,
+  crossed,
+  wide,  // dropped
+  below_intrinsic,
+  above_bound,
+  duplicate,
+  stale,
+  non_standard,
+  outlier,
+  no_forward,
 };
 inline constexpr std::size_t kReasonCount = 18;
 

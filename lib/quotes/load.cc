@@ -92,8 +92,10 @@ class FileLoad {
  private:
   std::optional<Failure> read_rows(RowReader& rows) {
     Row row;
+    // An empty file is a night without quotes, not a broken one.
     if (!rows.next(row)) {
-      return not_quotes(path_, "has no text; expected a header row and quotes");
+      loaded_.table.files.push_back(path_);
+      return std::nullopt;
     }
     if (row.open_quote) {
       return not_quotes(path_, "a quotation mark in the header row is never closed");
@@ -219,7 +221,7 @@ std::optional<std::string> problem_with_sizes(const SourceOptions& options) {
     return fmt::format("{} = {}, must be above 0", word, value);
   }
   const std::array<std::pair<const char*, double>, 2> spreads{
-      {{"half_spread_absolute", options.half_spread_absolute},
+      {{"half_spread", options.half_spread_absolute},
        {"half_spread_relative", options.half_spread_relative}}};
   for (const auto& [word, value] : spreads) {
     if (std::isnan(value) || (std::isfinite(value) && value >= 0)) continue;
@@ -247,7 +249,8 @@ std::optional<Failure> problem_with_rules(const TimeRules& rules) {
 std::optional<Failure> problem_with(const std::vector<SourceOptions>& sources,
                                     const TimeRules& rules) {
   for (const SourceOptions& options : sources) {
-    const auto problem = options.problem();
+    auto problem = options.problem();
+    if (!problem && options.files.empty()) problem = "files = [], must name a file";
     if (problem) return Failure{Fault::configuration, "source", *problem};
   }
   return problem_with_rules(rules);
@@ -277,7 +280,6 @@ std::optional<std::string> SourceOptions::problem() const {
   const auto one_of = [](char c, std::string_view allowed) {
     return allowed.find(c) != std::string_view::npos;
   };
-  if (files.empty()) return "files = [], must name a file";
   if (delimiter != 0 && !one_of(delimiter, ",;\t")) {
     return fmt::format("delimiter = \"{}\", must be , ; or tab", delimiter);
   }

@@ -16,7 +16,7 @@ namespace duskgrid::quotes {
 
 // A group of files of one habit.
 struct SourceOptions {
-  std::vector<std::string> files;              // paths or globs (* ? [])
+  std::vector<std::string> files;  // paths or globs (* ? [])
   Layout layout = Layout::automatic;
   char delimiter = 0;                          // 0 finds it among , ; tab
   char decimal = '.';                          // '.' or ','
@@ -27,13 +27,13 @@ struct SourceOptions {
   std::vector<std::string> null_words;         // beside NA, N/A, null, nan, none, - and empty
   double strike_scale = 1;                     // multiply what is read; all > 0
   double price_scale = 1;
-  double vol_scale = 1;                        // 0.01 when vols are written in percent
+  double vol_scale = 1;  // 0.01 when vols are written in percent
   // For files with one `price`: bid and ask are price -+ half_spread, where
   // half_spread = half_spread_absolute + half_spread_relative * price. Both >= 0 and
   // one stated, else a file with only a price is refused.
-  double half_spread_absolute = kAbsent;       // quote currency
-  double half_spread_relative = kAbsent;       // fraction of the price
-  Exercise exercise = Exercise::european;      // where no column says
+  double half_spread_absolute = kAbsent;   // quote currency
+  double half_spread_relative = kAbsent;   // fraction of the price
+  Exercise exercise = Exercise::european;  // where no column says
   std::optional<std::string> problem() const;
 };
 
@@ -48,8 +48,8 @@ struct TimeRules {
 // What one file turned out to be.
 struct FileSummary {
   std::string file;
-  std::int64_t bytes = 0;       // as stored
-  std::string compression;      // "none", "gzip", "zstd"
+  std::int64_t bytes = 0;   // as stored
+  std::string compression;  // "none", "gzip", "zstd"
   char delimiter = ',';
   ColumnMap columns;
   std::int64_t rows = 0;        // data rows
@@ -62,14 +62,13 @@ struct LoadedQuotes {
   std::vector<FileSummary> files;
 };
 
-// Reads all sources in order (globs sorted by name, a file named twice read once). fast-cpp-csv-parser splits
-// lines and cells; a quoted cell may hold line feeds, and the quote keeps the first
-// line's number. Compression is known by content. UTF-8 with or without a
-// byte-order mark, LF or CRLF. Failures: no_input for a missing or unreadable file,
-// a folder, or a glob that matches nothing; not_quotes for empty files, text that is
-// no CSV, other encodings (named), NUL bytes, damaged compression, lines past 1 MiB;
-// configuration for bad options. One bad file fails the load: a night that
-// silently lacks a file is worse than none.
+// Reads all sources in order (globs sorted by name, a file named twice read once).
+// fast-cpp-csv-parser splits lines and cells; a quoted cell may hold line feeds, and the quote
+// keeps the first line's number. Compression is known by content. UTF-8 with or without a
+// byte-order mark, LF or CRLF. An empty file has no rows. Failures: no_input for a missing or
+// unreadable file, a folder, or a glob that matches nothing; not_quotes for text that is no CSV,
+// other encodings (named), NUL bytes, damaged compression, lines past 1 MiB; configuration for bad
+// options. One bad file fails the load: a night that silently lacks a file is worse than none.
 Result<LoadedQuotes> load_quotes(const std::vector<SourceOptions>& sources, const TimeRules& rules);
 
 }  // namespace duskgrid::quotes

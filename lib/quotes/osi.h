@@ -15,8 +15,8 @@ struct OsiSymbol {
   std::string root;  // spaces trimmed
   std::chrono::year_month_day expiry;
   PutCall put_call;
-  double strike;     // quote currency
-  bool adjusted;     // the root ends in a digit: an adjusted contract (common practice)
+  double strike;  // quote currency
+  bool adjusted;  // the root ends in a digit: an adjusted contract (common practice)
 };
 
 // Reads the padded form and the form with the padding spaces removed; nothing when

@@ -30,26 +30,26 @@ struct Quote {
   PutCall put_call = PutCall::call;
   Exercise exercise = Exercise::european;
   QuotedIn quoted_in = QuotedIn::price;
-  bool adjusted = false;         // an adjusted contract: its OSI root ends in a digit
+  bool adjusted = false;  // an adjusted contract: its OSI root ends in a digit
   Reason reason = Reason::none;
-  std::int32_t note = -1;         // index into QuoteTable::notes, -1 for none
+  std::int32_t note = -1;  // index into QuoteTable::notes, -1 for none
   Instant expiry = kNoInstant;
   Instant quote_time = kNoInstant;
-  double strike = kAbsent;        // quote currency, after the stated scale
-  double bid = kAbsent;           // price in quote currency, or vol in decimals a year
+  double strike = kAbsent;  // quote currency, after the stated scale
+  double bid = kAbsent;     // price in quote currency, or vol in decimals a year
   double ask = kAbsent;
-  double bid_size = kAbsent;      // contracts
+  double bid_size = kAbsent;  // contracts
   double ask_size = kAbsent;
   double volume = kAbsent;
   double open_interest = kAbsent;
   double underlying_price = kAbsent;
   double multiplier = kAbsent;
   // Filled by later stages; vols in decimals a year.
-  double vol_bid = kAbsent;       // 0 for a bid at or below intrinsic
+  double vol_bid = kAbsent;  // 0 for a bid at or below intrinsic
   double vol_mid = kAbsent;
   double vol_ask = kAbsent;
   double vol_fit = kAbsent;
-  double miss = kAbsent;          // signed distance outside the spread, half-spreads of vol
+  double miss = kAbsent;  // signed distance outside the spread, half-spreads of vol
 };
 
 struct QuoteTable {

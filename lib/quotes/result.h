@@ -32,7 +32,7 @@ struct Failure {
 template <class T>
 class [[nodiscard]] Result {
  public:
-  Result(T value) : held_(std::move(value)) {}           // NOLINT(google-explicit-constructor)
+  Result(T value) : held_(std::move(value)) {}            // NOLINT(google-explicit-constructor)
   Result(Failure failure) : held_(std::move(failure)) {}  // NOLINT(google-explicit-constructor)
 
   bool ok() const { return std::holds_alternative<T>(held_); }

@@ -1,9 +1,10 @@
 #include "surface/backbone.h"
 
+#include <fmt/format.h>
+
 #include <Eigen/Dense>
 #include <algorithm>
 #include <cmath>
-#include <fmt/format.h>
 #include <unsupported/Eigen/AutoDiff>
 
 namespace duskgrid::surface {
@@ -297,7 +298,8 @@ std::optional<std::string> BackboneOptions::problem() const {
     return fmt::format("huber_half_spreads = {}, must be > 0", huber_half_spreads);
   if (!(least_half_spread > 0))
     return fmt::format("least_half_spread = {}, must be > 0", least_half_spread);
-  if (most_iterations < 1) return fmt::format("most_iterations = {}, must be >= 1", most_iterations);
+  if (most_iterations < 1)
+    return fmt::format("most_iterations = {}, must be >= 1", most_iterations);
   return std::nullopt;
 }
 

@@ -48,8 +48,8 @@ struct FitSlice {
 
 struct BackboneOptions {
   // Misfit, in half-spreads, past which a quote pulls with constant force instead of
-  // growing force. Range: > 0. Smaller lets stray quotes and kinks be missed, larger spreads their misfit over
-  // the neighbours.
+  // growing force. Range: > 0. Smaller lets stray quotes and kinks be missed, larger spreads their
+  // misfit over the neighbours.
   double huber_half_spreads = 1.0;
   // Smallest half-spread of vol a quote is credited with. Range: > 0. Smaller
   // lets one tight quote outweigh a slice.
@@ -64,7 +64,7 @@ enum class FitEnd : std::uint8_t { converged, stopped_early };
 struct BackboneFit {
   std::vector<SliceParameters> slices;  // as many as given, in order
   FitEnd end;
-  double cost;        // sum of Huber losses of the misfits in half-spreads
+  double cost;  // sum of Huber losses of the misfits in half-spreads
   int iterations;
 };
 

@@ -12,11 +12,11 @@ namespace duskgrid::surface {
 
 struct Slice {
   quotes::Instant expiry;
-  double year_fraction;      // ACT/365F from the as-of, > 0
-  double forward;            // quote currency
+  double year_fraction;  // ACT/365F from the as-of, > 0
+  double forward;        // quote currency
   double discount_factor;
   SliceParameters backbone;
-  double k_low, k_high;      // range of the used quotes, log-moneyness
+  double k_low, k_high;  // range of the used quotes, log-moneyness
 };
 
 struct Surface {
@@ -47,8 +47,8 @@ SmilePoint point_at(const Surface& surface, double k, double year_fraction);
 double vol_at(const Surface& surface, double k, double year_fraction);
 
 // Forward and discount factor at any t > 0: logarithms linear in t between neighbours, from
-// ln(spot) and 0 at t = 0. Without a spot the first slice's forward holds before it (or the first two
-// slices' growth, when there are two); beyond the last slice the last rates of growth go on.
+// ln(spot) and 0 at t = 0. Without a spot the first slice's forward holds before it (or the first
+// two slices' growth, when there are two); beyond the last slice the last rates of growth go on.
 struct Carried {
   double forward;
   double discount_factor;

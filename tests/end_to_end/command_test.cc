@@ -31,8 +31,8 @@ class Command : public testing::Test {
  protected:
   Ran build(const std::string& text, const std::vector<std::string>& more = {}) {
     spill(scratch_ / "quotes.csv", text);
-    std::vector<std::string> arguments{"build", (scratch_ / "quotes.csv").string(), "--as-of", kAsOf,
-                                       "--out", out().string()};
+    std::vector<std::string> arguments{
+        "build", (scratch_ / "quotes.csv").string(), "--as-of", kAsOf, "--out", out().string()};
     arguments.insert(arguments.end(), more.begin(), more.end());
     return duskgrid(arguments);
   }
@@ -60,8 +60,8 @@ TEST_F(Command, SoundChainIsPublishedWithStatusZero) {
 }
 
 TEST_F(Command, MissingFileIsNoInput) {
-  const auto ran = duskgrid({"build", (scratch_ / "no.csv").string(), "--as-of", kAsOf, "--out",
-                             out().string()});
+  const auto ran = duskgrid(
+      {"build", (scratch_ / "no.csv").string(), "--as-of", kAsOf, "--out", out().string()});
   EXPECT_EQ(ran.status, 66);
   expect_one_message(ran, "no.csv");
   EXPECT_FALSE(fs::exists(folder()));
@@ -70,12 +70,15 @@ TEST_F(Command, MissingFileIsNoInput) {
 TEST_F(Command, FolderInPlaceOfAFileIsNoInput) {
   fs::create_directories(scratch_ / "folder.csv");
   EXPECT_EQ(duskgrid({"build", (scratch_ / "folder.csv").string(), "--as-of", kAsOf, "--out",
-                      out().string()}).status, 66);
+                      out().string()})
+                .status,
+            66);
 }
 
 TEST_F(Command, UnknownConfigurationKeyIsNamedWithTheNearestKnown) {
-  const auto ran = build_config("as_of = \"2031-03-14\"\n[[source]]\nfiles = [\"quotes.csv\"]\n"
-                                "strike_scail = 0.01\n");
+  const auto ran = build_config(
+      "as_of = \"2031-03-14\"\n[[source]]\nfiles = [\"quotes.csv\"]\n"
+      "strike_scail = 0.01\n");
   EXPECT_EQ(ran.status, 78);
   expect_one_message(ran, "source.strike_scail");
   EXPECT_NE(ran.err.find("source.strike_scale"), std::string::npos);
@@ -88,7 +91,8 @@ TEST_F(Command, ConfigurationThatIsNotTomlSaysTheLine) {
 }
 
 TEST_F(Command, FileWithoutBidColumnIsRefusedWithTheLineToWrite) {
-  const auto ran = build("underlying,expiry,strike,put_call,level,ask\nSANDPR,2031-06-20,80,C,1,2\n");
+  const auto ran =
+      build("underlying,expiry,strike,put_call,level,ask\nSANDPR,2031-06-20,80,C,1,2\n");
   EXPECT_EQ(ran.status, 65);
   expect_one_message(ran, "bid = ");
   EXPECT_NE(ran.err.find("level"), std::string::npos);
@@ -101,7 +105,11 @@ TEST_F(Command, TextIsNotACsvOfQuotes) {
 }
 
 TEST_F(Command, BytesThatAreNoTextAreRefused) {
-  EXPECT_EQ(build(std::string("\x7f" "ELF\0\1\2", 7)).status, 65);
+  EXPECT_EQ(build(std::string("\x7f"
+                              "ELF\0\1\2",
+                              7))
+                .status,
+            65);
 }
 
 TEST_F(Command, EmptyFileIsNotPublished) {
@@ -110,14 +118,13 @@ TEST_F(Command, EmptyFileIsNotPublished) {
   EXPECT_NE(ran.err.find("quotes.csv"), std::string::npos);
 }
 
-TEST_F(Command, HeaderAloneIsNotPublished) {
-  EXPECT_EQ(build(kHeader).status, 4);
-}
+TEST_F(Command, HeaderAloneIsNotPublished) { EXPECT_EQ(build(kHeader).status, 4); }
 
 TEST_F(Command, WhollyExpiredFileIsNotPublishedAndItsLedgerSaysWhy) {
   const auto ran = build(kHeader + "SANDPR,2030-06-20,80,C,1,2\nSANDPR,2030-06-20,80,P,1,2\n");
   EXPECT_EQ(ran.status, 4);
-  for (const auto& row : read_table(folder() / "ledger.csv")) EXPECT_EQ(row.at("reason"), "expired");
+  for (const auto& row : read_table(folder() / "ledger.csv"))
+    EXPECT_EQ(row.at("reason"), "expired");
 }
 
 TEST_F(Command, ChainWithNoUsableQuoteIsRefusedAndTheOtherPublished) {
@@ -142,8 +149,8 @@ TEST_F(Command, ARunThatMarksNothingLeavesTheGoodOneOfThatNight) {
 TEST_F(Command, BadAsOfIsUsage) {
   spill(scratch_ / "quotes.csv", kHeader + sound_chain("SANDPR"));
   for (const char* as_of : {"yesterday", "2031-02-30", "31/03/2031", ""}) {
-    const auto ran = duskgrid({"build", (scratch_ / "quotes.csv").string(), "--as-of", as_of,
-                               "--out", out().string()});
+    const auto ran = duskgrid(
+        {"build", (scratch_ / "quotes.csv").string(), "--as-of", as_of, "--out", out().string()});
     EXPECT_EQ(ran.status, 64) << as_of;
   }
   EXPECT_EQ(duskgrid({"build", (scratch_ / "quotes.csv").string()}).status, 64);

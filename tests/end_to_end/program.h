@@ -87,9 +87,12 @@ inline std::vector<std::string> split(const std::string& line, char delimiter) {
   std::vector<std::string> cells(1);
   bool quoted = false;
   for (const char c : line) {
-    if (c == '"') quoted = !quoted;
-    else if (c == delimiter && !quoted) cells.emplace_back();
-    else cells.back() += c;
+    if (c == '"')
+      quoted = !quoted;
+    else if (c == delimiter && !quoted)
+      cells.emplace_back();
+    else
+      cells.back() += c;
   }
   return cells;
 }

@@ -33,7 +33,8 @@ struct WidePoint {
 };
 
 WidePoint wide_price(const Wide& x, const Wide& s) {
-  const Wide up = exp(x / 2) * wide_cdf(x / s + s / 2), down = exp(-x / 2) * wide_cdf(x / s - s / 2);
+  const Wide up = exp(x / 2) * wide_cdf(x / s + s / 2),
+             down = exp(-x / 2) * wide_cdf(x / s - s / 2);
   const Wide h = x / s;
   const Wide vega = exp(-(h * h + s * s / 4) / 2) / sqrt(2 * boost::math::constants::pi<Wide>());
   return {up - down, vega, (up + down) / 2};  // the densities cancel in db/dx
@@ -54,7 +55,8 @@ Draw draw(std::mt19937_64& random) {
 }
 
 // The relative error of s that relative errors of one ulp in the price, in x and in s itself
-// cannot avoid: 1 + |dln s / dln b| + |dln s / dln x|, with ds/db = 1/vega and ds/dx = -(db/dx)/vega.
+// cannot avoid: 1 + |dln s / dln b| + |dln s / dln x|, with ds/db = 1/vega and ds/dx =
+// -(db/dx)/vega.
 double condition(double x, const Wide& s, const WidePoint& p) {
   return static_cast<double>(1 + (p.price + abs(x * p.slope_x)) / (s * p.vega));
 }
@@ -72,7 +74,8 @@ Wide exact_total_vol(double x, double beta, double near) {
 }
 
 TEST(InvertNormalised, IsWithinFourUlpTimesTheConditionOfTheProblem) {
-  constexpr double kPromised = 4;  // ulp times condition, pricing/invert.h and the design's accuracy
+  constexpr double kPromised =
+      4;  // ulp times condition, pricing/invert.h and the design's accuracy
   std::mt19937_64 random(kSeed);
   double worst = 0;
   int tried = 0, count = points();
@@ -86,14 +89,16 @@ TEST(InvertNormalised, IsWithinFourUlpTimesTheConditionOfTheProblem) {
     ASSERT_TRUE(std::isfinite(found) && found > 0) << x << ' ' << s;
     const Wide exact = exact_total_vol(x, beta, s);
     const WidePoint at = wide_price(x, exact);
-    ASSERT_LT(static_cast<double>(abs(at.price / beta - 1)), 1e-25) << "oracle astray at " << x << ' ' << s;
+    ASSERT_LT(static_cast<double>(abs(at.price / beta - 1)), 1e-25)
+        << "oracle astray at " << x << ' ' << s;
     const double error =
         static_cast<double>(abs(found / exact - 1)) / (kEps * condition(x, exact, at));
     EXPECT_LE(error, kPromised) << "x " << x << " s " << s << " seed " << kSeed;
     worst = std::max(worst, error);
   }
   RecordProperty("worst_ulp_times_condition", std::to_string(worst));
-  std::cout << "worst error " << worst << " ulp x condition over " << count << " of " << tried << " draws\n";
+  std::cout << "worst error " << worst << " ulp x condition over " << count << " of " << tried
+            << " draws\n";
   EXPECT_LT(tried, 20 * count);
 }
 
@@ -160,9 +165,8 @@ TEST(ImpliedVol, OutOfTheMoneyPriceIsWithinEightUlpTimesTheCondition) {
       const WidePoint p = wide_price(x, exact);
       exact -= (p.price - price / scale) / p.vega;
     }
-    const double error =
-        static_cast<double>(abs(found.vol * sqrt(Wide(t)) / exact - 1)) /
-        (kEps * condition(static_cast<double>(x), exact, wide_price(x, exact)));
+    const double error = static_cast<double>(abs(found.vol * sqrt(Wide(t)) / exact - 1)) /
+                         (kEps * condition(static_cast<double>(x), exact, wide_price(x, exact)));
     EXPECT_LE(error, kPromised) << forward << ' ' << strike << ' ' << vol << ' ' << t;
     worst = std::max(worst, error);
   }

@@ -39,8 +39,8 @@ SliceParameters random_slice(std::mt19937_64& random) {
   return {theta, rho, most * unit(random)};
 }
 
-// A. Mingone, arXiv 2204.00312 (2022), written from the paper's recursion and not from the library's:
-// every draw in its box is free of arbitrage.
+// A. Mingone, arXiv 2204.00312 (2022), written from the paper's recursion and not from the
+// library's: every draw in its box is free of arbitrage.
 std::vector<SliceParameters> random_surface(std::mt19937_64& random, std::size_t count) {
   std::uniform_real_distribution<double> unit(0, 1);
   std::vector<double> rho(count), p(count, 1), theta(count), f(count);
@@ -79,7 +79,8 @@ Surface surface_of(const std::vector<SliceParameters>& slices) {
 TEST(SmileAt, DerivativesAgreeWithDifferencesInFiftyDigits) {
   std::mt19937_64 random(kSeed);
   std::uniform_real_distribution<double> unit(-1, 1);
-  // Central differences with a step of 1e-15 of the bend: truncation 1e-30, rounding 1e-50 / 1e-30 = 1e-20.
+  // Central differences with a step of 1e-15 of the bend: truncation 1e-30, rounding 1e-50 / 1e-30
+  // = 1e-20.
   double worst = 0;
   for (int i = 0; i < 20 * surfaces(); ++i) {
     const SliceParameters s = random_slice(random);
@@ -95,7 +96,9 @@ TEST(SmileAt, DerivativesAgreeWithDifferencesInFiftyDigits) {
     const double scale = s.theta + std::abs(s.psi * k);
     EXPECT_NEAR(p.w, static_cast<double>(at), loss * scale) << i;
     EXPECT_NEAR(p.dw_dk, first, loss * s.psi) << i;
-    EXPECT_NEAR(p.d2w_dk2, second, loss * std::abs(second) * (2 + 3 * std::abs(s.psi * k) / s.theta) + 1e-18) << i;
+    EXPECT_NEAR(p.d2w_dk2, second,
+                loss * std::abs(second) * (2 + 3 * std::abs(s.psi * k) / s.theta) + 1e-18)
+        << i;
     worst = std::max(worst, std::abs(p.dw_dk - first) / (kEps * s.psi));
   }
   std::cout << "worst error of dw/dk " << worst << " ulp of psi\n";
@@ -109,10 +112,11 @@ double density(const SliceParameters& s, double k) {
 }
 
 TEST(Durrleman, DensityHasMassOneAndItsMeanIsTheForward) {
-  // Adaptive quadrature asked for 1e-11. With both wing slopes short of the limit 2 the mass beyond 60
-  // deviations is below exp(-30).
+  // Adaptive quadrature asked for 1e-11. With both wing slopes short of the limit 2 the mass beyond
+  // 60 deviations is below exp(-30).
   constexpr double kQuadrature = 1e-9;
-  const SliceParameters slices[] = {{0.01, -0.5, 0.15}, {0.04, -0.7, 0.25}, {0.0008, 0.3, 0.03}, {0.25, -0.2, 0.6}, {0.04, 0, 0}};
+  const SliceParameters slices[] = {
+      {0.01, -0.5, 0.15}, {0.04, -0.7, 0.25}, {0.0008, 0.3, 0.03}, {0.25, -0.2, 0.6}, {0.04, 0, 0}};
   for (const SliceParameters& s : slices) {
     const double reach = 60 * std::sqrt(s.theta);
     double mass = 0, mean = 0;
@@ -121,7 +125,8 @@ TEST(Durrleman, DensityHasMassOneAndItsMeanIsTheForward) {
       const double a = reach * i / 60, b = reach * (i + 1) / 60;
       using Rule = boost::math::quadrature::gauss_kronrod<double, 15>;
       mass += Rule::integrate([&](double k) { return density(s, k); }, a, b, 8, 1e-11);
-      mean += Rule::integrate([&](double k) { return std::exp(k) * density(s, k); }, a, b, 8, 1e-11);
+      mean +=
+          Rule::integrate([&](double k) { return std::exp(k) * density(s, k); }, a, b, 8, 1e-11);
     }
     EXPECT_NEAR(mass, 1, kQuadrature) << s.theta << ' ' << s.rho << ' ' << s.psi;
     EXPECT_NEAR(mean, 1, kQuadrature) << s.theta << ' ' << s.rho << ' ' << s.psi;
@@ -136,13 +141,15 @@ TEST(RandomSurfaces, HaveNoButterflyAtOrBetweenOrOutsideTheirSlices) {
   double least = 1;
   for (int i = 0; i < surfaces(); ++i) {
     const Surface s = surface_of(random_surface(random, 5));
-    const double last = s.slices.back().year_fraction, reach = 12 * std::sqrt(s.slices.back().backbone.theta);
+    const double last = s.slices.back().year_fraction,
+                 reach = 12 * std::sqrt(s.slices.back().backbone.theta);
     for (const double t : {0.03, 0.1, 0.13, 0.17, 0.2, 0.289, 0.4, 0.6, last, 2 * last}) {
       const TimedSmile smile = smile_at_time(s, t);
       for (int j = -400; j <= 400; ++j) {
         const double k = reach * j * std::abs(j) / 160000.0;  // dense near the money
         const double g = durrleman(point_at(smile, k), k);
-        ASSERT_GE(g, -kRounding) << "surface " << i << " t " << t << " k " << k << " seed " << kSeed + 1;
+        ASSERT_GE(g, -kRounding) << "surface " << i << " t " << t << " k " << k << " seed "
+                                 << kSeed + 1;
         least = std::min(least, g);
       }
     }
@@ -155,7 +162,8 @@ TEST(RandomSurfaces, TotalVarianceNeverFallsInTime) {
   double least = 1;
   for (int i = 0; i < surfaces(); ++i) {
     const Surface s = surface_of(random_surface(random, 5));
-    const double last = s.slices.back().year_fraction, reach = 12 * std::sqrt(s.slices.back().backbone.theta);
+    const double last = s.slices.back().year_fraction,
+                 reach = 12 * std::sqrt(s.slices.back().backbone.theta);
     std::vector<TimedSmile> smiles;
     for (int m = 1; m <= 40; ++m) smiles.push_back(smile_at_time(s, 1.2 * last * m / 40));
     for (const Slice& slice : s.slices) smiles.push_back({slice.backbone, 0});
@@ -166,7 +174,8 @@ TEST(RandomSurfaces, TotalVarianceNeverFallsInTime) {
       const double k = reach * j * std::abs(j) / 10000.0;
       for (std::size_t m = 1; m < smiles.size(); ++m) {
         const double before = point_at(smiles[m - 1], k).w, after = point_at(smiles[m], k).w;
-        ASSERT_GE(after, before * (1 - kRounding)) << "surface " << i << " k " << k << " seed " << kSeed + 2;
+        ASSERT_GE(after, before * (1 - kRounding))
+            << "surface " << i << " k " << k << " seed " << kSeed + 2;
         least = std::min(least, after / before - 1);
       }
     }

@@ -1,7 +1,7 @@
 // The worked examples of J. Gatheral, A. Jacquier, "Arbitrage-free SVI volatility surfaces",
-// Quantitative Finance 14(1) (2014) 59-71, arXiv 1204.0646: example 3.1 (A. Vogt's slice, whose density
-// goes negative) and example 5.1 (its two repairs). Parameters are printed there; values
-// of w and g are recomputed from them with ten and more digits.
+// Quantitative Finance 14(1) (2014) 59-71, arXiv 1204.0646: example 3.1 (A. Vogt's slice, whose
+// density goes negative) and example 5.1 (its two repairs). Parameters are printed there; values of
+// w and g are recomputed from them with ten and more digits.
 #include <gtest/gtest.h>
 
 #include <cmath>
@@ -89,7 +89,8 @@ TEST(VogtSlice, GuaranteedRepairIsFreeAndKeepsMoneyVarianceAndSkew) {
   // Raw parameters printed to 7 decimals.
   constexpr double kPrinted = 2e-7;
   EXPECT_NEAR(point_of(kGuaranteed, 0).w, 0.01742625, kPrinted);
-  EXPECT_NEAR(point_of(kGuaranteed, 0).dw_dk / (2 * std::sqrt(0.01742625)), -0.1752111, 10 * kPrinted);
+  EXPECT_NEAR(point_of(kGuaranteed, 0).dw_dk / (2 * std::sqrt(0.01742625)), -0.1752111,
+              10 * kPrinted);
 }
 
 TEST(VogtSlice, OptimalRepairIsFreeWithItsLeastWhereItIsKnown) {

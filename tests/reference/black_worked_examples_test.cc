@@ -32,20 +32,27 @@ BlackTerms terms_of(PutCall side, double spot, double strike, double rate, doubl
 }
 
 // Hull's stock with cash dividends: 0.50 after 2 and 5 months, taken off the spot at 9 %.
-double escrowed_spot() { return 40 - 0.5 * std::exp(-0.09 * 2 / 12) - 0.5 * std::exp(-0.09 * 5 / 12); }
+double escrowed_spot() {
+  return 40 - 0.5 * std::exp(-0.09 * 2 / 12) - 0.5 * std::exp(-0.09 * 5 / 12);
+}
 
 const Priced kPriced[] = {
     {"Hull ex. 15.6", PutCall::call, 42, 40, 0.10, 0.10, 0.20, 0.5, 4.76, 0.005, 4.759422},
     {"Hull ex. 15.6", PutCall::put, 42, 40, 0.10, 0.10, 0.20, 0.5, 0.81, 0.005, 0.808599},
-    {"Hull ch. 15, cash dividends", PutCall::call, escrowed_spot(), 40, 0.09, 0.09, 0.30, 0.5, 3.67, 0.005, 3.671233},
-    {"Hull ch. 17, index", PutCall::call, 930, 900, 0.08, 0.05, 0.20, 2.0 / 12, 51.83, 0.005, 51.832957},
+    {"Hull ch. 15, cash dividends", PutCall::call, escrowed_spot(), 40, 0.09, 0.09, 0.30, 0.5, 3.67,
+     0.005, 3.671233},
+    {"Hull ch. 17, index", PutCall::call, 930, 900, 0.08, 0.05, 0.20, 2.0 / 12, 51.83, 0.005,
+     51.832957},
     {"Hull ch. 18, futures", PutCall::put, 20, 20, 0.09, 0, 0.25, 4.0 / 12, 1.12, 0.005, 1.116641},
-    {"Haug, Black-Scholes", PutCall::call, 60, 65, 0.08, 0.08, 0.30, 0.25, 2.1334, 0.00005, 2.133368},
-    {"Haug, Black-Scholes", PutCall::put, 60, 65, 0.08, 0.08, 0.30, 0.25, 5.8463, 0.00005, 5.846282},
+    {"Haug, Black-Scholes", PutCall::call, 60, 65, 0.08, 0.08, 0.30, 0.25, 2.1334, 0.00005,
+     2.133368},
+    {"Haug, Black-Scholes", PutCall::put, 60, 65, 0.08, 0.08, 0.30, 0.25, 5.8463, 0.00005,
+     5.846282},
     {"Haug, Merton yield", PutCall::put, 100, 95, 0.10, 0.05, 0.20, 0.5, 2.4648, 0.00005, 2.464788},
     {"Haug, Black-76", PutCall::call, 19, 19, 0.10, 0, 0.28, 0.75, 1.7011, 0.00005, 1.701051},
     {"Haug, Black-76", PutCall::put, 19, 19, 0.10, 0, 0.28, 0.75, 1.7011, 0.00005, 1.701051},
-    {"Haug, margined futures", PutCall::put, 4200, 3800, 0, 0, 0.15, 0.75, 65.6185, 0.00005, 65.618542},
+    {"Haug, margined futures", PutCall::put, 4200, 3800, 0, 0, 0.15, 0.75, 65.6185, 0.00005,
+     65.618542},
     {"Haug, currency", PutCall::call, 1.56, 1.6, 0.06, -0.02, 0.12, 0.5, 0.0291, 0.00005, 0.029099},
     {"Haug, generalised", PutCall::put, 75, 70, 0.10, 0.05, 0.35, 0.5, 4.0870, 0.00005, 4.086954},
 };
@@ -72,11 +79,13 @@ TEST(WorkedPrices, EachInvertsToTheVolatilityItWasMadeFrom) {
 // Hull sec. 15.11 prints 23.5 %, ch. 17 (currency, foreign rate 11 %) 14.1 %.
 TEST(WorkedVolatilities, AgreeToTheDigitsPrinted) {
   constexpr double kPrinted = 0.0005, kDigits = 0.6e-6;  // of volatility
-  const double stock = implied_vol(terms_of(PutCall::call, 21, 20, 0.10, 0.10, 0.25), 1.875, 0.25).vol;
+  const double stock =
+      implied_vol(terms_of(PutCall::call, 21, 20, 0.10, 0.10, 0.25), 1.875, 0.25).vol;
   EXPECT_NEAR(stock, 0.235, kPrinted);
   EXPECT_NEAR(stock, 0.234513, kDigits);
   const double t = 4.0 / 12;
-  const double currency = implied_vol(terms_of(PutCall::call, 1.6, 1.6, 0.08, -0.03, t), 0.043, t).vol;
+  const double currency =
+      implied_vol(terms_of(PutCall::call, 1.6, 1.6, 0.08, -0.03, t), 0.043, t).vol;
   EXPECT_NEAR(currency, 0.141, kPrinted);
   EXPECT_NEAR(currency, 0.141119, kDigits);
 }
@@ -123,9 +132,9 @@ TEST(NormalDistribution, TabulatedTailsAndDensitiesAgree) {
 }
 
 TEST(NormalDistribution, TabulatedQuantilesAgree) {
-  const double quantiles[][2] = {{0.75, 0.6744897501960817432022},  {0.9, 1.281551565544600466965},
-                                 {0.95, 1.644853626951472714864},   {0.975, 1.959963984540054235525},
-                                 {0.99, 2.326347874040841100886},   {0.995, 2.575829303548900760979},
+  const double quantiles[][2] = {{0.75, 0.6744897501960817432022}, {0.9, 1.281551565544600466965},
+                                 {0.95, 1.644853626951472714864},  {0.975, 1.959963984540054235525},
+                                 {0.99, 2.326347874040841100886},  {0.995, 2.575829303548900760979},
                                  {0.999, 3.09023230616781354154}};
   for (const auto& [probability, x] : quantiles)
     EXPECT_NEAR(normal_cdf(x), probability, 4 * kEps) << probability;

@@ -1,6 +1,7 @@
 // The 155 implied volatilities of J. Andreasen, B. Huge, "Volatility Interpolation", Risk, March
-// 2011, table 1 (an equity index, 2010-03-01, spot 2772.70; published_index_vols.csv): through prices
-// and back, and fitted. The table gives no rates or dividends: forwards are taken at the spot.
+// 2011, table 1 (an equity index, 2010-03-01, spot 2772.70; published_index_vols.csv): through
+// prices and back, and fitted. The table gives no rates or dividends: forwards are taken at the
+// spot.
 #include <gtest/gtest.h>
 
 #include <algorithm>
@@ -55,7 +56,8 @@ TEST(PublishedVols, PricesInvertToThePrintedDigits) {
   for (const Published& p : table())
     for (const auto side : {quotes::PutCall::call, quotes::PutCall::put}) {
       const pricing::BlackTerms terms{side, kSpot, p.strike, 1};
-      const auto back = pricing::implied_vol(terms, pricing::black_price(terms, p.vol * std::sqrt(p.t)), p.t);
+      const auto back =
+          pricing::implied_vol(terms, pricing::black_price(terms, p.vol * std::sqrt(p.t)), p.t);
       ASSERT_EQ(back.status, pricing::VolStatus::ok) << p.t << ' ' << p.strike;
       EXPECT_NEAR(back.vol, p.vol, kInverted) << p.t << ' ' << p.strike;
     }
@@ -74,7 +76,8 @@ TEST(PublishedVols, FitIsFreeOfArbitrageAndWithinAFifthOfAVolPoint) {
     fitted.slices.push_back({quotes::Instant{} + seconds, s.year_fraction, kSpot, 1, fit->slices[i],
                              s.quotes.front().k, s.quotes.back().k});
     for (const auto& q : s.quotes) {
-      const double miss = std::sqrt(surface::smile_at(fit->slices[i], q.k).w / s.year_fraction) - q.vol;
+      const double miss =
+          std::sqrt(surface::smile_at(fit->slices[i], q.k).w / s.year_fraction) - q.vol;
       sum += miss * miss;
       worst = std::max(worst, std::abs(miss));
     }
@@ -82,11 +85,13 @@ TEST(PublishedVols, FitIsFreeOfArbitrageAndWithinAFifthOfAVolPoint) {
   const auto check = arbitrage::check_surface(fitted);
   EXPECT_TRUE(check.violations.empty());
   const double rms = 100 * std::sqrt(sum / static_cast<double>(rows.size()));
-  std::cout << "misfit " << rms << " vol points root mean square, " << 100 * worst << " at worst, end "
+  std::cout << "misfit " << rms << " vol points root mean square, " << 100 * worst
+            << " at worst, end "
             << (fit->end == surface::FitEnd::converged ? "converged" : "stopped early") << " after "
             << fit->iterations << " steps\n";
-  // Three parameters a slice, 36 for 155 vols, bound by each other's calendar conditions, leave 0.17; the rest
-  // of the fifth is room for another valley of the cost under another compiler's rounding.
+  // Three parameters a slice, 36 for 155 vols, bound by each other's calendar conditions, leave
+  // 0.17; the rest of the fifth is room for another valley of the cost under another compiler's
+  // rounding.
   constexpr double kLargestMisfit = 0.20;
   EXPECT_LT(rms, kLargestMisfit);
 }

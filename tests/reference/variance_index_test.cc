@@ -1,6 +1,6 @@
-// The worked example of the index exchange's volatility-index white paper (editions of 2014 to 2019),
-// read as a user would have it read: forwards from parity, and the two strip variances to all
-// printed digits. Quotes: white_paper_near.csv, white_paper_next.csv (source in README.md).
+// The worked example of the index exchange's volatility-index white paper (editions of 2014 to
+// 2019), read as a user would have it read: forwards from parity, and the two strip variances to
+// all printed digits. Quotes: white_paper_near.csv, white_paper_next.csv (source in README.md).
 #include <gtest/gtest.h>
 
 #include <algorithm>
@@ -15,7 +15,8 @@ namespace {
 
 using quotes::Quote;
 
-const quotes::Instant kAsOf = std::chrono::sys_days{std::chrono::year{2031} / 3 / 14} + std::chrono::hours{14};
+const quotes::Instant kAsOf =
+    std::chrono::sys_days{std::chrono::year{2031} / 3 / 14} + std::chrono::hours{14};
 
 struct Example {
   const char* file;
@@ -26,8 +27,10 @@ struct Example {
   double first_strike, last_strike;
   int options;
 };
-constexpr Example kNear{"white_paper_near.csv", 35924, 186, 0.000305, 1962.89996, 1960, 0.01846292, 1370, 2125, 146};
-constexpr Example kNext{"white_paper_next.csv", 46394, 128, 0.000286, 1962.40006, 1960, 0.01882101, 1275, 2200, 122};
+constexpr Example kNear{
+    "white_paper_near.csv", 35924, 186, 0.000305, 1962.89996, 1960, 0.01846292, 1370, 2125, 146};
+constexpr Example kNext{
+    "white_paper_next.csv", 46394, 128, 0.000286, 1962.40006, 1960, 0.01882101, 1275, 2200, 122};
 
 // One listed strike.
 struct Row {
@@ -45,7 +48,8 @@ Term load(const Example& example) {
   const auto expiry = kAsOf + std::chrono::minutes{example.minutes};
   quotes::SourceOptions source;
   source.files = {std::string(DUSKGRID_TEST_DATA) + "/" + example.file};
-  source.fixed = {{"underlying", "INDEX"}, {"expiry", std::to_string(expiry.time_since_epoch().count())}};
+  source.fixed = {{"underlying", "INDEX"},
+                  {"expiry", std::to_string(expiry.time_since_epoch().count())}};
   const auto loaded = quotes::load_quotes({source}, {});
   EXPECT_TRUE(loaded.ok()) << loaded.failure().text();
   Term term{market::year_fraction(kAsOf, loaded->table.quotes.at(0).expiry), {}};
@@ -67,15 +71,17 @@ market::ExpiryPairs pairs_of(const Term& term) {
   market::ExpiryPairs out{.year_fraction = term.t, .pairs = {}, .given_forward = {}};
   for (const Row& r : term.rows)
     if (r.call_bid > 0 && r.put_bid > 0)
-      out.pairs.push_back({r.strike, r.call_bid - r.put_ask, r.call_ask - r.put_bid, r.call() + r.put()});
+      out.pairs.push_back(
+          {r.strike, r.call_bid - r.put_ask, r.call_ask - r.put_bid, r.call() + r.put()});
   return out;
 }
 
 // The white paper's own forward: parity of mids at the strike where they are closest.
 double white_paper_forward(const Term& term, double rate) {
-  const Row& r = *std::min_element(term.rows.begin(), term.rows.end(), [](const Row& a, const Row& b) {
-    return std::abs(a.call() - a.put()) < std::abs(b.call() - b.put());
-  });
+  const Row& r =
+      *std::min_element(term.rows.begin(), term.rows.end(), [](const Row& a, const Row& b) {
+        return std::abs(a.call() - a.put()) < std::abs(b.call() - b.put());
+      });
   return r.strike + std::exp(rate * term.t) * (r.call() - r.put());
 }
 
@@ -86,7 +92,8 @@ struct Strip {
 
 // Out-of-the-money mids outwards from K0; zero bids are skipped and two in a row end the walk.
 Strip strip_of(const Term& term, double forward) {
-  const auto above = std::find_if(term.rows.begin(), term.rows.end(), [&](const Row& r) { return r.strike > forward; });
+  const auto above = std::find_if(term.rows.begin(), term.rows.end(),
+                                  [&](const Row& r) { return r.strike > forward; });
   const auto money = above - 1;
   Strip out{{{money->strike, 0.5 * (money->call() + money->put())}}, money->strike};
   int zeros = 0;
@@ -122,7 +129,8 @@ TEST_P(VarianceIndex, EveryListedStrikeIsRead) {
 }
 
 TEST_P(VarianceIndex, ForwardIsNearThePrintedOneAndInsideTheNearIntervals) {
-  // The white paper takes one pair's mids; its spread leaves +-1 or more. A quarter is two ticks of it.
+  // The white paper takes one pair's mids; its spread leaves +-1 or more. A quarter is two ticks of
+  // it.
   constexpr double kNearby = 0.25;
   const Example& example = GetParam();
   const auto pairs = pairs_of(load(example));
@@ -138,9 +146,9 @@ TEST_P(VarianceIndex, ForwardIsNearThePrintedOneAndInsideTheNearIntervals) {
     EXPECT_LE(e.lowest_forward, e.highest_forward) << curve_given;
     EXPECT_GE(e.forward, e.lowest_forward) << curve_given;
     EXPECT_LE(e.forward, e.highest_forward) << curve_given;
-    std::cout << example.file << (curve_given ? " rate given" : " rate from the quotes") << ": forward " << e.forward
-              << " in [" << e.lowest_forward << ", " << e.highest_forward << "], rate " << e.zero_rate << ", "
-              << e.pairs << " pairs\n";
+    std::cout << example.file << (curve_given ? " rate given" : " rate from the quotes")
+              << ": forward " << e.forward << " in [" << e.lowest_forward << ", "
+              << e.highest_forward << "], rate " << e.zero_rate << ", " << e.pairs << " pairs\n";
   }
 }
 
@@ -154,11 +162,14 @@ TEST_P(VarianceIndex, StripVarianceAgreesToAllPrintedDigits) {
   EXPECT_EQ(strip.options.front().first, example.first_strike);
   EXPECT_EQ(strip.options.back().first, example.last_strike);
   EXPECT_EQ(static_cast<int>(strip.options.size()), example.options);
-  EXPECT_NEAR(variance_of(strip, forward, example.rate, term.t), example.variance, 0.5e-8);  // eight decimals
+  EXPECT_NEAR(variance_of(strip, forward, example.rate, term.t), example.variance,
+              0.5e-8);  // eight decimals
 }
 
 INSTANTIATE_TEST_SUITE_P(WhitePaper, VarianceIndex, ::testing::Values(kNear, kNext),
-                         [](const auto& which) { return which.param.minutes < 40000 ? "Near" : "Next"; });
+                         [](const auto& which) {
+                           return which.param.minutes < 40000 ? "Near" : "Next";
+                         });
 
 // 30 days between the two: 13.69 printed, from memory; 13.685821 recomputed.
 TEST(VarianceIndexOfBothTerms, IsThePrintedIndex) {
@@ -172,7 +183,8 @@ TEST(VarianceIndexOfBothTerms, IsThePrintedIndex) {
     minutes[i++] = example.minutes;
   }
   const double weight = (minutes[1] - kMonth) / (minutes[1] - minutes[0]);
-  const double index = 100 * std::sqrt((weight * total[0] + (1 - weight) * total[1]) * kYear / kMonth);
+  const double index =
+      100 * std::sqrt((weight * total[0] + (1 - weight) * total[1]) * kYear / kMonth);
   EXPECT_NEAR(index, 13.69, 0.005);
   EXPECT_NEAR(index, 13.685821, 0.6e-6);
 }

@@ -4,10 +4,10 @@
 
 #include <algorithm>
 #include <cmath>
-#include <map>
-#include <random>
+#include <limits>
 
 #include "pricing/black.h"
+#include "trade_payoffs.h"
 
 namespace duskgrid::arbitrage {
 namespace {
@@ -47,7 +47,9 @@ QuotedStrike& at(QuotedSlice& slice, double strike) {
                        [&](const QuotedStrike& s) { return s.strike == strike; });
 }
 
-std::vector<Violation> check(const QuotedSlice& slice) { return check_quotes(std::span(&slice, 1)); }
+std::vector<Violation> check(const QuotedSlice& slice) {
+  return check_quotes(std::span(&slice, 1));
+}
 
 std::vector<Violation> of_kind(const std::vector<Violation>& all, Kind kind) {
   std::vector<Violation> out;
@@ -56,73 +58,13 @@ std::vector<Violation> of_kind(const std::vector<Violation>& all, Kind kind) {
   return out;
 }
 
-double cost(const Violation& v) {
-  double sum = 0;
-  for (const Leg& leg : v.legs) sum += leg.quantity * leg.price;
-  return sum;
-}
-
-double leg_payoff(const Leg& leg, double spot) {
-  switch (leg.type) {
-    case LegType::call: return leg.quantity * std::max(0.0, spot - leg.strike);
-    case LegType::put: return leg.quantity * std::max(0.0, leg.strike - spot);
-    case LegType::forward: return leg.quantity * (spot - leg.strike);
-  }
-  return kNaN;
-}
-
-// Least payoff of legs of one expiry: piecewise linear, so at zero, at a strike, or falling forever.
-double least_payoff(const std::vector<Leg>& legs) {
-  std::vector<double> corners{0};
-  for (const Leg& leg : legs) corners.push_back(leg.strike);
-  const double far = 10 * *std::max_element(corners.begin(), corners.end());
-  corners.push_back(far);
-  corners.push_back(2 * far);
-  double least = std::numeric_limits<double>::infinity(), payoff_far = 0;
-  for (const double spot : corners) {
-    double payoff = 0;
-    for (const Leg& leg : legs) payoff += leg_payoff(leg, spot);
-    if (spot == far) payoff_far = payoff;
-    if (spot == 2 * far && payoff < payoff_far - 1e-9 * far) return -std::numeric_limits<double>::infinity();
-    least = std::min(least, payoff);
-  }
-  return least;
-}
-
-// What the trade locks in, worked out from its legs alone: the credit, and the discounted least
-// payoff (negative where the seller of a spread can owe its width).
-double locked_in(const Violation& v, const QuotedSlice& slice) {
-  const double discount = slice.american ? 1 : slice.discount_factor;
-  return -cost(v) + discount * least_payoff(v.legs);
-}
-
-// Calendar: at the early expiry each late leg is worth no less than its intrinsic there, whatever
-// the volatility, its forward being the early spot grown by the ratio of the forwards.
-double locked_in_calendar(const Violation& v, const QuotedSlice& early, const QuotedSlice& late) {
-  const double growth = early.american ? 1 : late.forward / early.forward;
-  const double discount = early.american ? 1 : late.discount_factor / early.discount_factor;
-  std::vector<Leg> at_early;
-  for (Leg leg : v.legs) {
-    if (leg.expiry == late.expiry) {
-      leg.strike /= growth;
-      leg.quantity *= discount * growth;
-    }
-    at_early.push_back(leg);
-  }
-  // Quantities round, so the far end may fall or rise by that much: looked at up to three times the forward.
-  double least = 0;
-  for (int i = 0; i <= 3000; ++i) {
-    double payoff = 0;
-    for (const Leg& leg : at_early) payoff += leg_payoff(leg, early.forward * i / 1000);
-    least = std::min(least, payoff);
-  }
-  return -cost(v) + (early.american ? 1 : early.discount_factor) * least;
-}
-
 TEST(CheckQuotes, CleanChainsHaveNone) {
   std::vector<QuotedSlice> chain;
   for (const double t : {0.05, 0.25, 0.5, 1.0, 2.0})
-    chain.push_back(made_slice({.t = t, .forward = 100 * std::exp(0.02 * t), .discount = std::exp(-0.03 * t), .half_spread = 0.02}));
+    chain.push_back(made_slice({.t = t,
+                                .forward = 100 * std::exp(0.02 * t),
+                                .discount = std::exp(-0.03 * t),
+                                .half_spread = 0.02}));
   EXPECT_TRUE(check_quotes(chain).empty());
 }
 
@@ -164,10 +106,9 @@ TEST(CheckQuotes, EveryBoundHasItsTrade) {
     s.strikes[0].*side = price;
     return s;
   };
-  const QuotedSlice cases[] = {planted(&QuotedStrike::call_ask, 70, 29.0),
-                               planted(&QuotedStrike::put_ask, 130, 29.0),
-                               planted(&QuotedStrike::call_bid, 110, 98.4),
-                               planted(&QuotedStrike::put_bid, 70, 69.0)};
+  const QuotedSlice cases[] = {
+      planted(&QuotedStrike::call_ask, 70, 29.0), planted(&QuotedStrike::put_ask, 130, 29.0),
+      planted(&QuotedStrike::call_bid, 110, 98.4), planted(&QuotedStrike::put_bid, 70, 69.0)};
   for (const QuotedSlice& s : cases) {
     const auto found = check(s);
     ASSERT_EQ(found.size(), 1u);
@@ -209,7 +150,8 @@ TEST(CheckQuotes, PutSpreadDearerThanItsWidthIsAVertical) {
 TEST(CheckQuotes, WiderVerticalIsReportedOnlyWhereNoAdjacentOneExplainsIt) {
   QuotedSlice s = made_slice({.half_spread = 0.02});
   for (auto& q : s.strikes) q.put_bid = q.put_ask = kNaN;
-  // 110 is bid above the ask of 100, and 105 between them has no ask: only the wide pair can show it.
+  // 110 is bid above the ask of 100, and 105 between them has no ask: only the wide pair can show
+  // it.
   at(s, 105).call_ask = kNaN;
   at(s, 110).call_bid = at(s, 100).call_ask + 0.05;
   at(s, 110).call_ask = at(s, 110).call_bid + 0.04;
@@ -223,7 +165,8 @@ TEST(CheckQuotes, WiderVerticalIsReportedOnlyWhereNoAdjacentOneExplainsIt) {
 TEST(CheckQuotes, MiddleStrikeAboveTheLineIsAButterfly) {
   QuotedSlice s = made_slice();
   // Uneven neighbours: 95 and 110 about 100.
-  s.strikes.erase(std::find_if(s.strikes.begin(), s.strikes.end(), [](auto& q) { return q.strike == 105; }));
+  s.strikes.erase(
+      std::find_if(s.strikes.begin(), s.strikes.end(), [](auto& q) { return q.strike == 105; }));
   const double line = at(s, 95).call_ask * 2 / 3 + at(s, 110).call_ask / 3;
   at(s, 100).call_bid = line + 0.15;
   at(s, 100).call_ask = line + 0.25;
@@ -264,7 +207,8 @@ TEST(CheckQuotes, ParityBreakIsTradedAgainstTheForward) {
 
 TEST(CheckQuotes, BoxThatCostsLessThanItsValueIsBought) {
   QuotedSlice s = made_slice({.first = 98, .gap = 4, .count = 2});
-  for (double QuotedStrike::*side : {&QuotedStrike::put_bid, &QuotedStrike::put_ask}) at(s, 98).*side += 0.6;
+  for (double QuotedStrike::*side : {&QuotedStrike::put_bid, &QuotedStrike::put_ask})
+    at(s, 98).*side += 0.6;
   const auto found = of_kind(check(s), Kind::box);
   ASSERT_EQ(found.size(), 1u);
   EXPECT_NEAR(found[0].amount, 0.6 - 4 * 0.05, kRounding);
@@ -319,7 +263,8 @@ TEST(CheckQuotes, CalendarBetweenLateStrikesIsBoughtOnTheLine) {
 
 TEST(CheckQuotes, CheapLateQuoteIsExplainedByItsNearestEarlierExpiry) {
   std::vector<QuotedSlice> chain;
-  for (const double t : {0.25, 0.5, 1.0}) chain.push_back(made_slice({.t = t, .discount = 1, .half_spread = 0.02}));
+  for (const double t : {0.25, 0.5, 1.0})
+    chain.push_back(made_slice({.t = t, .discount = 1, .half_spread = 0.02}));
   // Below both earlier calls at 100: the adjacent pair of expiries tells it all.
   at(chain[2], 100).call_ask = at(chain[0], 100).call_bid - 0.2;
   at(chain[2], 100).call_bid = at(chain[2], 100).call_ask - 0.04;
@@ -331,7 +276,8 @@ TEST(CheckQuotes, CheapLateQuoteIsExplainedByItsNearestEarlierExpiry) {
 
 TEST(CheckQuotes, CalendarSkipsAnExpiryThatLacksTheStrike) {
   std::vector<QuotedSlice> chain;
-  for (const double t : {0.25, 0.5, 1.0}) chain.push_back(made_slice({.t = t, .discount = 1, .half_spread = 0.02}));
+  for (const double t : {0.25, 0.5, 1.0})
+    chain.push_back(made_slice({.t = t, .discount = 1, .half_spread = 0.02}));
   chain[1].strikes.resize(2);  // 70 and 75 only
   at(chain[2], 100).call_ask = at(chain[0], 100).call_bid - 0.2;
   const auto found = of_kind(check_quotes(chain), Kind::calendar);
@@ -374,7 +320,8 @@ TEST(CheckQuotes, AmericanQuotesAreNotHeldToEuropeanParity) {
   s.american = true;
   at(s, 130).put_bid = 30.2;  // exercised at once it pays 30; parity with D says 29.4 + call
   at(s, 130).put_ask = 30.5;
-  for (const Violation& v : check(s)) EXPECT_TRUE(v.kind != Kind::parity && v.kind != Kind::box && v.kind != Kind::bounds);
+  for (const Violation& v : check(s))
+    EXPECT_TRUE(v.kind != Kind::parity && v.kind != Kind::box && v.kind != Kind::bounds);
 }
 
 TEST(CheckQuotes, BreaksWithinTheToleranceAreNotReported) {
@@ -392,95 +339,6 @@ TEST(CheckQuotes, EmptyAndOneSidedSlicesAreQuiet) {
   for (auto& q : s.strikes) q.call_bid = q.call_ask = q.put_bid = kNaN;
   EXPECT_TRUE(check(s).empty());
 }
-
-// Random terminal prices on a tree price every option free of arbitrage; noise then breaks some. Each
-// break reported must be one by its own legs, for the amount stated.
-class RandomTrees : public ::testing::TestWithParam<bool> {};
-
-std::vector<QuotedSlice> noisy_tree(std::mt19937& random, bool american) {
-  std::uniform_real_distribution<double> unit(0, 1);
-  std::vector<QuotedSlice> chain;
-  std::vector<double> nodes{100};
-  double t = 0;
-  for (int level = 0; level < 3; ++level) {
-    std::vector<double> next;
-    const double jump = 0.05 + 0.15 * unit(random);
-    for (const double node : nodes)  // a fair step either way keeps the mean
-      next.insert(next.end(), {node * (1 + jump), node * (1 - jump)});
-    nodes = std::move(next);
-    t += 0.1 + 0.5 * unit(random);
-    const double growth = std::exp(0.02 * t), discount = std::exp(-0.03 * t);
-    QuotedSlice s{expiry_at(t), t, 100 * growth, discount, american, {}};
-    for (double strike = 75; strike <= 125; strike += 5) {
-      double call = 0, put = 0;
-      for (const double node : nodes) {
-        call += std::max(0.0, node * growth - strike) / static_cast<double>(nodes.size());
-        put += std::max(0.0, strike - node * growth) / static_cast<double>(nodes.size());
-      }
-      const auto quote = [&](double value) {
-        const double middle = discount * value + 0.3 * (unit(random) - 0.5);
-        const double half = 0.12 * unit(random);
-        return std::pair(middle - half, unit(random) < 0.1 ? kNaN : middle + half);
-      };
-      const auto [call_bid, call_ask] = quote(call);
-      const auto [put_bid, put_ask] = quote(put);
-      s.strikes.push_back({strike, call_bid, call_ask, put_bid, put_ask});
-    }
-    chain.push_back(std::move(s));
-  }
-  return chain;
-}
-
-TEST_P(RandomTrees, EveryBreakReportedLocksInItsAmountByItsOwnLegs) {
-  std::map<Kind, int> seen;
-  for (unsigned seed = 1; seed <= 300; ++seed) {
-    std::mt19937 random(seed);
-    const auto chain = noisy_tree(random, GetParam());
-    for (const Violation& v : check_quotes(chain)) {
-      ++seen[v.kind];
-      const auto slice_of = [&](quotes::Instant expiry) -> const QuotedSlice& {
-        return *std::find_if(chain.begin(), chain.end(), [&](const auto& s) { return s.expiry == expiry; });
-      };
-      const QuotedSlice& s = slice_of(v.expiry);
-      const double alone = v.kind == Kind::calendar ? locked_in_calendar(v, s, slice_of(v.expiry_2)) : locked_in(v, s);
-      EXPECT_GT(v.amount, 0) << word(v.kind) << " seed " << seed;
-      EXPECT_NEAR(alone, v.amount, 1e-9) << word(v.kind) << " seed " << seed;
-    }
-  }
-  for (const Kind kind : {Kind::vertical, Kind::butterfly, Kind::calendar}) EXPECT_GT(seen[kind], 20) << word(kind);
-  EXPECT_EQ(seen[Kind::parity] > 20 && seen[Kind::box] > 20, !GetParam());
-}
-
-TEST(CheckQuotes, TreesWithoutNoiseAreClean) {
-  for (unsigned seed = 1; seed <= 100; ++seed) {
-    std::mt19937 random(seed);
-    auto chain = noisy_tree(random, false);
-    std::mt19937 again(seed);
-    // Exact values: the noise and the spreads replaced by those of the tree itself.
-    std::uniform_real_distribution<double> unit(0, 1);
-    std::vector<double> nodes{100};
-    for (QuotedSlice& s : chain) {
-      std::vector<double> next;
-      const double jump = 0.05 + 0.15 * unit(again);
-      for (const double node : nodes) next.insert(next.end(), {node * (1 + jump), node * (1 - jump)});
-      nodes = std::move(next);
-      for (QuotedStrike& q : s.strikes) {
-        double call = 0, put = 0;
-        for (const double node : nodes) {
-          call += std::max(0.0, node * s.forward / 100 - q.strike) / static_cast<double>(nodes.size());
-          put += std::max(0.0, q.strike - node * s.forward / 100) / static_cast<double>(nodes.size());
-        }
-        q.call_bid = q.call_ask = s.discount_factor * call;
-        q.put_bid = q.put_ask = s.discount_factor * put;
-      }
-    }
-    const auto found = check_quotes(chain);
-    EXPECT_TRUE(found.empty()) << seed << ' ' << word(found[0].kind) << ' ' << found[0].amount;
-  }
-}
-
-INSTANTIATE_TEST_SUITE_P(EuropeanAndAmerican, RandomTrees, ::testing::Bool(),
-                         [](const auto& which) { return which.param ? "American" : "European"; });
 
 }  // namespace
 }  // namespace duskgrid::arbitrage

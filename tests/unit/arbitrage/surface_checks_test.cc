@@ -13,7 +13,8 @@ using surface::Slice;
 using surface::SliceParameters;
 using surface::Surface;
 
-Slice slice_at(double t, const SliceParameters& parameters, double forward = 100, double discount = 0.98) {
+Slice slice_at(double t, const SliceParameters& parameters, double forward = 100,
+               double discount = 0.98) {
   const auto seconds = std::chrono::seconds{static_cast<std::int64_t>(t * 31536000)};
   return {quotes::Instant{} + seconds, t, forward, discount, parameters, -0.3, 0.3};
 }
@@ -39,7 +40,8 @@ TEST(CheckSurface, SurfaceFreeOfArbitrageHasNoViolation) {
 }
 
 TEST(CheckSurface, FlatSurfaceHasGOfOne) {
-  const auto check = check_surface({"FLAT", {}, {slice_at(0.5, {0.02, 0, 0}), slice_at(1, {0.04, 0, 0})}});
+  const auto check =
+      check_surface({"FLAT", {}, {slice_at(0.5, {0.02, 0, 0}), slice_at(1, {0.04, 0, 0})}});
   EXPECT_TRUE(check.violations.empty());
   EXPECT_EQ(check.least_durrleman, 1);
   EXPECT_DOUBLE_EQ(check.least_calendar_step, 0.01);  // half way, and from there
@@ -60,8 +62,10 @@ TEST(CheckSurface, TooMuchCurvatureIsAButterflyThatItsOwnPricesConfirm) {
     double credit = 0, slope = 0;
     for (const Leg& leg : v.legs) {
       const double k = std::log(leg.strike / 100);
-      EXPECT_NEAR(leg.price, pricing::black_price({quotes::PutCall::call, 100, leg.strike, 0.98},
-                                                  std::sqrt(surface::smile_at(s.slices[0].backbone, k).w)), 1e-11);
+      EXPECT_NEAR(leg.price,
+                  pricing::black_price({quotes::PutCall::call, 100, leg.strike, 0.98},
+                                       std::sqrt(surface::smile_at(s.slices[0].backbone, k).w)),
+                  1e-11);
       credit -= leg.quantity * leg.price;
       slope += leg.quantity * leg.strike;
     }
@@ -76,7 +80,8 @@ TEST(CheckSurface, LeastDurrlemanIsThatOfADenserScan) {
   const SliceParameters bent{0.02, -0.2, 0.7};
   const auto check = check_surface({"BENT", {}, {slice_at(0.5, bent)}});
   double least = 1;
-  for (double k = -2; k <= 2; k += 1e-5) least = std::min(least, surface::durrleman(surface::smile_at(bent, k), k));
+  for (double k = -2; k <= 2; k += 1e-5)
+    least = std::min(least, surface::durrleman(surface::smile_at(bent, k), k));
   // The check's points are 1.7e-3 apart; g'' is near 110 at its least: 110 (0.86e-3)^2 / 2.
   EXPECT_NEAR(check.least_durrleman, least, 1e-4);
   EXPECT_GE(check.least_durrleman, least - 1e-12);
@@ -94,14 +99,16 @@ TEST(CheckSurface, FallingTotalVarianceIsACalendar) {
     EXPECT_LT(v.expiry, v.expiry_2);
     ASSERT_EQ(v.legs.size(), 2u);
     EXPECT_EQ(v.legs[0].quantity, -1);
-    EXPECT_NEAR(-v.legs[0].quantity * v.legs[0].price - v.legs[1].quantity * v.legs[1].price, v.amount, 1e-12);
+    EXPECT_NEAR(-v.legs[0].quantity * v.legs[0].price - v.legs[1].quantity * v.legs[1].price,
+                v.amount, 1e-12);
     EXPECT_TRUE(std::isfinite(v.vol_points) && v.vol_points > 0);
   }
 }
 
 // Slices that cross in one wing only.
 TEST(CheckSurface, CrossingInOneWingIsFoundThere) {
-  const Surface s{"CROSS", {}, {slice_at(0.5, {0.02, -0.7, 0.2}), slice_at(0.6, {0.021, 0.5, 0.2})}};
+  const Surface s{
+      "CROSS", {}, {slice_at(0.5, {0.02, -0.7, 0.2}), slice_at(0.6, {0.021, 0.5, 0.2})}};
   const auto check = check_surface(s);
   ASSERT_GE(count(check, Kind::calendar), 1);
   for (const Violation& v : check.violations)

@@ -33,8 +33,9 @@ TEST(FormatLegs, NoLegsIsEmpty) { EXPECT_EQ(format_legs({}, {}), ""); }
 
 TEST(ViolationWords, AreThoseOfTheFile) {
   const std::pair<Kind, std::string_view> kinds[] = {
-      {Kind::bounds, "bounds"}, {Kind::vertical, "vertical"}, {Kind::butterfly, "butterfly"},
-      {Kind::calendar, "calendar"}, {Kind::parity, "parity"}, {Kind::box, "box"}, {Kind::wing, "wing"}};
+      {Kind::bounds, "bounds"},     {Kind::vertical, "vertical"}, {Kind::butterfly, "butterfly"},
+      {Kind::calendar, "calendar"}, {Kind::parity, "parity"},     {Kind::box, "box"},
+      {Kind::wing, "wing"}};
   for (const auto& [kind, text] : kinds) EXPECT_EQ(word(kind), text);
   EXPECT_EQ(word(Scope::quotes), "quotes");
   EXPECT_EQ(word(Scope::surface), "surface");

@@ -40,9 +40,13 @@ TEST(ZeroCurve, NegativeRatesAreRates) {
 }
 
 TEST(ZeroCurve, BadPointsAreRefusedAsConfiguration) {
-  const std::vector<std::vector<ZeroPoint>> bad{
-      {}, {{0.0, 0.01}}, {{-1.0, 0.01}}, {{1.0, 3.0}}, {{1.0, kNaN}}, {{kNaN, 0.01}},
-      {{1.0, 0.01}, {1.0, 0.02}}};
+  const std::vector<std::vector<ZeroPoint>> bad{{},
+                                                {{0.0, 0.01}},
+                                                {{-1.0, 0.01}},
+                                                {{1.0, 3.0}},
+                                                {{1.0, kNaN}},
+                                                {{kNaN, 0.01}},
+                                                {{1.0, 0.01}, {1.0, 0.02}}};
   for (const auto& points : bad) {
     const auto made = ZeroCurve::make(points);
     ASSERT_FALSE(made.ok());

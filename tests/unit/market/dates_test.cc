@@ -20,8 +20,11 @@ TEST(ParseTenor, EveryUnitIsReadInEitherCase) {
     const char* text;
     int count;
     TenorUnit unit;
-  } cases[] = {{"1D", 1, TenorUnit::day},     {"2w", 2, TenorUnit::week}, {"18M", 18, TenorUnit::month},
-               {"10y", 10, TenorUnit::year}, {"999d", 999, TenorUnit::day}};
+  } cases[] = {{"1D", 1, TenorUnit::day},
+               {"2w", 2, TenorUnit::week},
+               {"18M", 18, TenorUnit::month},
+               {"10y", 10, TenorUnit::year},
+               {"999d", 999, TenorUnit::day}};
   for (const auto& c : cases) {
     const auto tenor = parse_tenor(c.text);
     ASSERT_TRUE(tenor) << c.text;
@@ -31,7 +34,8 @@ TEST(ParseTenor, EveryUnitIsReadInEitherCase) {
 }
 
 TEST(ParseTenor, MalformedTextGivesNothing) {
-  for (const char* text : {"", "M", "3", "0M", "-1M", "+1M", "1.5Y", "3X", "1000D", "3MM", " 3M", "3 M"})
+  for (const char* text :
+       {"", "M", "3", "0M", "-1M", "+1M", "1.5Y", "3X", "1000D", "3MM", " 3M", "3 M"})
     EXPECT_FALSE(parse_tenor(text)) << '"' << text << '"';
 }
 

@@ -18,9 +18,7 @@ TEST(YearFraction, LeapYearIsLongerThanOne) {
   EXPECT_EQ(year_fraction(from, to), 366.0 / 365.0);
 }
 
-TEST(YearFraction, SecondsCount) {
-  EXPECT_EQ(year_fraction(kAsOf, kAsOf + 1s), 1.0 / 31536000.0);
-}
+TEST(YearFraction, SecondsCount) { EXPECT_EQ(year_fraction(kAsOf, kAsOf + 1s), 1.0 / 31536000.0); }
 
 TEST(YearFraction, EarlierEndIsNegative) {
   EXPECT_EQ(year_fraction(kAsOf, kAsOf - days{73}), -0.2);

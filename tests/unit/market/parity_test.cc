@@ -51,7 +51,8 @@ double farthest_from(const ForwardEstimate& e, double forward) {
 
 TEST(EstimateForwards, ExactPairsWithTheCurveGivenReturnTheForward) {
   const Made m{.half_spread = 1e-6};
-  const auto e = one(made_pairs(m), {.spot = {}, .carry = {}, .curve = ZeroCurve::make({{1, 0.03}}).value()});
+  const auto e =
+      one(made_pairs(m), {.spot = {}, .carry = {}, .curve = ZeroCurve::make({{1, 0.03}}).value()});
   // The rate is only drawn to the curve: its rest error times t times distance to the money.
   constexpr double kForward = 1e-6;
   EXPECT_NEAR(e.forward, 4000, kForward);
@@ -75,7 +76,8 @@ TEST(EstimateForwards, ForwardLiesInsideTheNearIntervalsWhateverTheNoise) {
 TEST(EstimateForwards, TrueForwardIsFoundWithinTheSpreads) {
   for (unsigned seed = 1; seed <= 200; ++seed) {
     const auto e = one(made_pairs({}, 0.95, seed));
-    // The intersection holds the truth up to the error of the discount over half a deviation of strikes.
+    // The intersection holds the truth up to the error of the discount over half a deviation of
+    // strikes.
     EXPECT_LE(std::abs(e.forward - 4000), farthest_from(e, 4000)) << seed;
     EXPECT_LT(std::abs(e.forward - 4000), 1.0) << seed;  // one interval's half-width
   }
@@ -92,7 +94,8 @@ TEST(EstimateForwards, ShortExpiryCannotInventARate) {
       made_pairs({.t = 0.003, .half_spread = 2, .strikes = 9}, 0.9, 5),
       made_pairs({.t = 1, .half_spread = 0.05})};
   const auto e = estimate_forwards(expiries, {}, {});
-  // A regression of the short one alone could say anything up to +-10 and more; one tolerance allows 0.005.
+  // A regression of the short one alone could say anything up to +-10 and more; one tolerance
+  // allows 0.005.
   EXPECT_NEAR(e[0]->zero_rate, 0.03, 0.005);
 }
 
@@ -115,7 +118,8 @@ TEST(EstimateForwards, ContradictingPairsLeaveTheForwardThatBreaksFewest) {
     const double value = (i == 2 ? 103.0 : 100.0) - strike;
     expiry.pairs.push_back({strike, value - 0.1, value + 0.1, 20});
   }
-  const auto e = one(expiry, {.spot = {}, .carry = {}, .curve = ZeroCurve::make({{1, 0.0}}).value()});
+  const auto e =
+      one(expiry, {.spot = {}, .carry = {}, .curve = ZeroCurve::make({{1, 0.0}}).value()});
   EXPECT_NEAR(e.forward, 100, 0.1 + 0.05);  // an end of the four agreeing intervals, and rate error
   EXPECT_EQ(e.breaks, 1);
 }
@@ -151,7 +155,8 @@ TEST(EstimateForwards, ExpiryWithoutPairsUsesSpotAndTheNearestCarry) {
 
 TEST(EstimateForwards, StatedCarryIsUsedWhereThereAreNoPairs) {
   const ExpiryPairs expiry{.year_fraction = 0.5, .pairs = {}, .given_forward = {}};
-  const auto e = one(expiry, {.spot = 100, .carry = 0.02, .curve = ZeroCurve::make({{1, 0.05}}).value()});
+  const auto e =
+      one(expiry, {.spot = 100, .carry = 0.02, .curve = ZeroCurve::make({{1, 0.05}}).value()});
   EXPECT_NEAR(e.forward, 100 * std::exp(0.015), 100 * kRounding);
   EXPECT_NEAR(e.discount_factor, std::exp(-0.025), kRounding);
 }
@@ -164,7 +169,8 @@ TEST(EstimateForwards, NoPairNoSpotNoForward) {
 
 TEST(EstimateForwards, OnePairIsEnoughForAForward) {
   auto expiry = made_pairs({.half_spread = 0.01, .strikes = 1});
-  const auto e = one(expiry, {.spot = {}, .carry = {}, .curve = ZeroCurve::make({{1, 0.03}}).value()});
+  const auto e =
+      one(expiry, {.spot = {}, .carry = {}, .curve = ZeroCurve::make({{1, 0.03}}).value()});
   EXPECT_EQ(e.pairs, 1);
   EXPECT_NEAR(e.forward, 4000, 0.02);  // half an interval
 }

@@ -13,7 +13,8 @@ using quotes::PutCall;
 constexpr double kEps = std::numeric_limits<double>::epsilon();
 constexpr double kInfinity = std::numeric_limits<double>::infinity();
 constexpr double kNaN = std::numeric_limits<double>::quiet_NaN();
-// A price is a product of five rounded factors, each of condition at most (x/s)^2 <= 16 here: relative.
+// A price is a product of five rounded factors, each of condition at most (x/s)^2 <= 16 here:
+// relative.
 constexpr double kPrice = 100 * kEps;
 
 TEST(ScaledErfc, ZeroIsOne) { EXPECT_EQ(scaled_erfc(0.0), 1.0); }
@@ -92,7 +93,8 @@ TEST(NormalisedVega, IsTheSlopeOfThePrice) {
       const double h = 1e-5 * s;
       const double slope = (normalised_price(x, s + h) - normalised_price(x, s - h)) / (2 * h);
       // Central difference: truncation h^2 b'''/6 ~ 1e-10 s^2 b''' plus rounding b eps / h.
-      EXPECT_NEAR(slope, normalised_vega(x, s), 1e-6 * normalised_vega(x, s) + 1e-14) << x << ' ' << s;
+      EXPECT_NEAR(slope, normalised_vega(x, s), 1e-6 * normalised_vega(x, s) + 1e-14)
+          << x << ' ' << s;
     }
 }
 
@@ -112,7 +114,8 @@ TEST(BlackPrice, ZeroVolatilityIsIntrinsic) {
 TEST(BlackPrice, ScalesWithMoney) {
   const double one = black_price({PutCall::call, 1, 1.1, 0.9}, 0.25);
   for (const double unit : {1e-8, 100.0, 1e12})
-    EXPECT_NEAR(black_price({PutCall::call, unit, 1.1 * unit, 0.9}, 0.25), unit * one, kPrice * unit * one);
+    EXPECT_NEAR(black_price({PutCall::call, unit, 1.1 * unit, 0.9}, 0.25), unit * one,
+                kPrice * unit * one);
 }
 
 TEST(BlackPrice, StaysBetweenItsBounds) {
@@ -137,11 +140,14 @@ TEST(BlackGreeks, AreTheDerivativesOfThePrice) {
       };
       // Central differences, step 1e-4 relative: truncation near 1e-8, rounding near 1e-12 / step.
       constexpr double kFirst = 1e-6, kSecond = 1e-5, kStep = 0.01, kVolStep = 1e-4;
-      EXPECT_NEAR((price(100 + kStep, s) - price(100 - kStep, s)) / (2 * kStep), greeks.delta, kFirst);
-      EXPECT_NEAR((price(100 + kStep, s) - 2 * price(100, s) + price(100 - kStep, s)) / (kStep * kStep),
-                  greeks.gamma, kSecond);
-      EXPECT_NEAR((price(100, s + kVolStep) - price(100, s - kVolStep)) / (2 * kVolStep) * std::sqrt(t),
-                  greeks.vega, 100 * kFirst);
+      EXPECT_NEAR((price(100 + kStep, s) - price(100 - kStep, s)) / (2 * kStep), greeks.delta,
+                  kFirst);
+      EXPECT_NEAR(
+          (price(100 + kStep, s) - 2 * price(100, s) + price(100 - kStep, s)) / (kStep * kStep),
+          greeks.gamma, kSecond);
+      EXPECT_NEAR(
+          (price(100, s + kVolStep) - price(100, s - kVolStep)) / (2 * kVolStep) * std::sqrt(t),
+          greeks.vega, 100 * kFirst);
     }
 }
 

@@ -62,9 +62,9 @@ TEST(ImpliedVol, PriceAtOrAboveTheBoundIsAboveBound) {
 }
 
 TEST(ImpliedVol, InputsThatAreNoMarketAreNotFinite) {
-  const BlackTerms bad[] = {{PutCall::call, kNaN, 100, 1},  {PutCall::call, 0, 100, 1},
-                            {PutCall::call, 100, -1, 1},    {PutCall::call, 100, kInfinity, 1},
-                            {PutCall::call, 100, 100, 0},   {PutCall::call, 100, 100, kNaN}};
+  const BlackTerms bad[] = {{PutCall::call, kNaN, 100, 1}, {PutCall::call, 0, 100, 1},
+                            {PutCall::call, 100, -1, 1},   {PutCall::call, 100, kInfinity, 1},
+                            {PutCall::call, 100, 100, 0},  {PutCall::call, 100, 100, kNaN}};
   for (const auto& terms : bad) {
     const auto v = implied_vol(terms, 5, 1);
     EXPECT_EQ(v.status, VolStatus::not_finite);
@@ -77,13 +77,15 @@ TEST(ImpliedVol, InputsThatAreNoMarketAreNotFinite) {
 }
 
 TEST(ImpliedVol, NeverNaNNearTheEndsOfTheRange) {
-  const BlackTerms extremes[] = {{PutCall::call, 100, 1e6, 1},   {PutCall::put, 100, 1e-4, 1},
-                                 {PutCall::call, 1e-300, 2e-300, 1}, {PutCall::call, 1e300, 1.5e300, 1},
-                                 {PutCall::call, 100, 100, 1},   {PutCall::put, 100, std::nextafter(100, 0), 1}};
+  const BlackTerms extremes[] = {
+      {PutCall::call, 100, 1e6, 1},       {PutCall::put, 100, 1e-4, 1},
+      {PutCall::call, 1e-300, 2e-300, 1}, {PutCall::call, 1e300, 1.5e300, 1},
+      {PutCall::call, 100, 100, 1},       {PutCall::put, 100, std::nextafter(100, 0), 1}};
   for (const auto& terms : extremes) {
     const double bound = upper_bound(terms);
-    for (const double price : {std::numeric_limits<double>::denorm_min(), 1e-310, 1e-200 * bound, 1e-16 * bound,
-                               0.5 * bound, bound * (1 - kEps), std::nextafter(bound, 0.0)}) {
+    for (const double price :
+         {std::numeric_limits<double>::denorm_min(), 1e-310, 1e-200 * bound, 1e-16 * bound,
+          0.5 * bound, bound * (1 - kEps), std::nextafter(bound, 0.0)}) {
       const auto v = implied_vol(terms, price, 1.0);
       EXPECT_FALSE(std::isnan(v.vol)) << terms.strike << ' ' << price;
       if (v.status == VolStatus::ok) {

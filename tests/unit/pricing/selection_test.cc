@@ -43,7 +43,9 @@ struct Slice {
       add(side, strike, price(vol - half_spread), price(vol + half_spread));
     }
   }
-  void select(const SelectionOptions& options = {}) { select_quotes(table, rows, kMarket, options); }
+  void select(const SelectionOptions& options = {}) {
+    select_quotes(table, rows, kMarket, options);
+  }
   const Quote& find(PutCall side, double strike) const {
     for (const Quote& q : table.quotes)
       if (q.put_call == side && q.strike == strike) return q;
@@ -81,7 +83,8 @@ TEST(SelectQuotes, VolsAreThoseOfThePrices) {
   s.select();
   for (const Quote& q : s.table.quotes) {
     const double k = std::log(q.strike / kMarket.forward), vol = 0.2 - 0.2 * k + 0.5 * k * k;
-    // In the money the time value is what is left of a price of up to 30: 1e-15 x 30 / vega(>= 0.1).
+    // In the money the time value is what is left of a price of up to 30: 1e-15 x 30 / vega(>=
+    // 0.1).
     constexpr double kInverted = 1e-12;
     EXPECT_NEAR(q.vol_bid, vol - 0.005, kInverted);
     EXPECT_NEAR(q.vol_ask, vol + 0.005, kInverted);
@@ -212,7 +215,8 @@ TEST(SelectQuotes, EmptySliceIsLeftAlone) {
 
 TEST(SelectionOptions, FirstBrokenRuleIsNamedWithItsValue) {
   EXPECT_FALSE(SelectionOptions{}.problem());
-  EXPECT_NE(SelectionOptions{.far_deviations = 0}.problem()->find("far_deviations = 0"), std::string::npos);
+  EXPECT_NE(SelectionOptions{.far_deviations = 0}.problem()->find("far_deviations = 0"),
+            std::string::npos);
   EXPECT_TRUE(SelectionOptions{.most_quotes = -1}.problem());
   EXPECT_TRUE(SelectionOptions{.outlier_half_spreads = std::nan("")}.problem());
 }

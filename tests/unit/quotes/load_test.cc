@@ -176,8 +176,8 @@ TEST_F(LoadQuotesTest, UnreadableRowsKeepLineAndNoteAndNothingElse) {
 }
 
 TEST_F(LoadQuotesTest, NamesTooLongOrWithControlCharactersAreUnreadable) {
-  const LoadedQuotes read = loaded_rows(std::string(129, 'A') + ",2031-06-20,95,C,1,2\n" +
-                                        "\"A\nB\",2031-06-20,95,C,1,2\n" + std::string(128, 'A') +
+  const LoadedQuotes read = loaded_rows(std::string(81, 'A') + ",2031-06-20,95,C,1,2\n" +
+                                        "\"A\nB\",2031-06-20,95,C,1,2\n" + std::string(80, 'A') +
                                         ",2031-06-20,95,C,1,2\n");
   ASSERT_EQ(read.table.quotes.size(), 3U);
   EXPECT_EQ(read.table.quotes[0].reason, Reason::unreadable);
@@ -428,9 +428,6 @@ TEST_F(LoadQuotesTest, NothingToReadIsNoInput) {
 TEST_F(LoadQuotesTest, WhatIsNoCsvOfQuotesIsOneClearFailure) {
   const std::string rows = "HALYRD,2031-06-20,95,P,1,2\n";
   const std::vector<std::string> kTexts = {
-      ""s,
-      "\n\n"s,
-      "\xEF\xBB\xBF"s,
       "just words\nand more\n"s,
       "a,b,c\n1,2,3\n"s,
       "\"underlying,expiry\n1,2\n"s,
@@ -454,6 +451,24 @@ TEST_F(LoadQuotesTest, HeaderAloneIsATableOfNoRows) {
   const LoadedQuotes read = loaded(std::string(kHeader));
   EXPECT_EQ(read.files[0].rows, 0);
   EXPECT_TRUE(read.table.quotes.empty());
+}
+
+TEST_F(LoadQuotesTest, FileWithoutTextIsATableOfNoRows) {
+  for (const std::string text : {"", "\n\n", "\xEF\xBB\xBF"}) {
+    const LoadedQuotes read = loaded(text);
+    ASSERT_EQ(read.files.size(), 1U);
+    EXPECT_EQ(read.files[0].rows, 0);
+    EXPECT_TRUE(read.table.quotes.empty());
+  }
+}
+
+TEST_F(LoadQuotesTest, AdjustedRootIsOfTheNameBeforeItsDigit) {
+  const LoadedQuotes read =
+      loaded("osi,bid,ask\nKELPW1310620C00260000,1,2\nKELPW 310620C00260000,1,2\n");
+  ASSERT_EQ(read.table.underlyings.size(), 1U);
+  EXPECT_EQ(read.table.underlyings[0], "KELPW");
+  EXPECT_TRUE(read.table.quotes[0].adjusted);
+  EXPECT_FALSE(read.table.quotes[1].adjusted);
 }
 
 TEST_F(LoadQuotesTest, EndlessLineIsRefusedAndNamed) {

@@ -1,0 +1,15 @@
+# Installs the build in BUILD into a scratch prefix, builds the consumer against it, runs it.
+set(scratch ${BUILD}/installed_package)
+file(REMOVE_RECURSE ${scratch})
+function(step)
+  execute_process(COMMAND ${ARGV} RESULT_VARIABLE status OUTPUT_VARIABLE out ERROR_VARIABLE out)
+  if(NOT status EQUAL 0)
+    message(FATAL_ERROR "${ARGV}\n${out}")
+  endif()
+endfunction()
+step(${CMAKE_COMMAND} --install ${BUILD} --prefix ${scratch}/prefix)
+step(${CMAKE_COMMAND} -S ${SOURCE}/tests/end_to_end/consumer -B ${scratch}/build -G Ninja
+     -DCMAKE_PREFIX_PATH=${scratch}/prefix -DCMAKE_BUILD_TYPE=Release)
+step(${CMAKE_COMMAND} --build ${scratch}/build)
+step(${scratch}/build/consumer)
+step(${scratch}/prefix/bin/duskgrid --version)

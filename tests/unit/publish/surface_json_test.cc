@@ -1,0 +1,198 @@
+#include "publish/surface_json.h"
+
+#include <gtest/gtest.h>
+
+#include <bit>
+#include <cmath>
+#include <limits>
+#include <random>
+
+namespace duskgrid::publish {
+namespace {
+
+using Limits = std::numeric_limits<double>;
+using namespace std::chrono_literals;
+
+const quotes::Instant kInstant = std::chrono::sys_days{std::chrono::year{2031} / 3 / 14} + 21h;
+const quotes::AsOf kAsOf{kInstant, {"", std::chrono::minutes{-300}}};
+
+surface::Surface made() {
+  return {"HALYRD",
+          100.25,
+          {{kInstant + 2400h, 0.3, 101, 0.99, {0.01, -0.5, 0.15}, -0.3, 0.2},
+           {kInstant + 9000h + 7s, 1.03, 1.0 / 3, 0.97, {0.03, 0.25, 0}, -0.5, -0.5}}};
+}
+
+std::string text_of(const surface::Surface& surface) { return surface_to_json({kAsOf, surface}); }
+
+// The bits of everything a slice holds.
+std::vector<std::uint64_t> bits_of(const surface::Slice& s) {
+  std::vector<std::uint64_t> bits{static_cast<std::uint64_t>(s.expiry.time_since_epoch().count())};
+  for (const double v : {s.year_fraction, s.forward, s.discount_factor, s.backbone.theta,
+                         s.backbone.rho, s.backbone.psi, s.k_low, s.k_high})
+    bits.push_back(std::bit_cast<std::uint64_t>(v));
+  return bits;
+}
+
+void expect_reloads(const surface::Surface& surface) {
+  const auto stored = surface_from_json(text_of(surface), "memory");
+  ASSERT_TRUE(stored.ok()) << stored.failure().text();
+  EXPECT_EQ(stored->as_of.instant, kAsOf.instant);
+  EXPECT_EQ(stored->as_of.clock.offset, kAsOf.clock.offset);
+  EXPECT_EQ(stored->surface.underlying, surface.underlying);
+  ASSERT_EQ(stored->surface.spot.has_value(), surface.spot.has_value());
+  EXPECT_EQ(std::bit_cast<std::uint64_t>(stored->surface.spot.value_or(0)),
+            std::bit_cast<std::uint64_t>(surface.spot.value_or(0)));
+  ASSERT_EQ(stored->surface.slices.size(), surface.slices.size());
+  for (std::size_t i = 0; i < surface.slices.size(); ++i)
+    EXPECT_EQ(bits_of(stored->surface.slices[i]), bits_of(surface.slices[i])) << "slice " << i;
+}
+
+TEST(SurfaceJson, SurfaceReloadsBitForBit) { expect_reloads(made()); }
+
+TEST(SurfaceJson, SurfaceWithoutASpotReloads) {
+  auto surface = made();
+  surface.spot.reset();
+  expect_reloads(surface);
+}
+
+TEST(SurfaceJson, ExtremeDoublesReload) {
+  auto surface = made();
+  auto& first = surface.slices[0];
+  auto& last = surface.slices[1];
+  first.year_fraction = Limits::denorm_min();
+  first.forward = Limits::max();
+  first.discount_factor = Limits::min();
+  first.backbone = {Limits::denorm_min(), std::nextafter(-1.0, 0.0), Limits::max()};
+  first.k_low = Limits::lowest();
+  first.k_high = -0.0;
+  last.year_fraction = 4 * Limits::min() / 3;
+  last.backbone = {Limits::max(), std::nextafter(1.0, 0.0), Limits::denorm_min()};
+  last.k_low = last.k_high = Limits::max();
+  expect_reloads(surface);
+}
+
+TEST(SurfaceJson, RandomDoublesReload) {
+  constexpr std::uint64_t kSeed = 20310314;
+  std::mt19937_64 random(kSeed);
+  const auto any_positive = [&] {
+    double v = 0;
+    while (!(std::isfinite(v) && v > 0)) v = std::bit_cast<double>(random() >> 1);
+    return v;
+  };
+  std::uniform_real_distribution<double> unit(-1, 1);
+  for (int i = 0; i < 2000; ++i) {
+    auto surface = made();
+    surface.slices.pop_back();
+    auto& s = surface.slices[0];
+    surface.spot = any_positive();
+    s.year_fraction = any_positive();
+    s.forward = any_positive();
+    s.discount_factor = any_positive();
+    s.backbone = {any_positive(), unit(random), any_positive()};
+    s.k_low = -any_positive();
+    s.k_high = any_positive();
+    expect_reloads(surface);
+    if (HasFailure()) FAIL() << "seed " << kSeed << ", case " << i;
+  }
+}
+
+TEST(SurfaceJson, NamesNoFormatMindsReload) {
+  auto surface = made();
+  surface.underlying = "=\"K\\ELP/\xC3\xA9,\t'";
+  expect_reloads(surface);
+}
+
+TEST(SurfaceJson, ExpiryBeyondAClockChangeReloads) {
+  const quotes::AsOf as_of{kInstant, {"Europe/Paris", {}}};
+  auto surface = made();
+  surface.slices.front().expiry = kInstant + 24h * 90;  // in summer time
+  const auto stored = surface_from_json(surface_to_json({as_of, surface}), "memory");
+  ASSERT_TRUE(stored.ok());
+  EXPECT_EQ(stored->surface.slices.front().expiry, surface.slices.front().expiry);
+  EXPECT_EQ(stored->as_of.instant, kInstant);
+}
+
+// The text of made() with one piece replaced.
+std::string broken(const std::string& piece, const std::string& by) {
+  std::string text = text_of(made());
+  const auto at = text.find(piece);
+  EXPECT_NE(at, std::string::npos) << piece << " is not in " << text;
+  return text.replace(at, piece.size(), by);
+}
+
+void expect_refused(const std::string& text) {
+  const auto stored = surface_from_json(text, "halyrd.json");
+  ASSERT_FALSE(stored.ok()) << text;
+  EXPECT_EQ(stored.failure().fault, Fault::not_quotes);
+  EXPECT_EQ(stored.failure().where, "halyrd.json");
+  EXPECT_FALSE(stored.failure().detail.empty());
+}
+
+TEST(SurfaceJson, TextThatIsNoJsonIsRefused) {
+  for (const char* text : {"", "underlying,expiry\n", "{", "[]", "null", "3", "{}", "\xFF"})
+    expect_refused(text);
+  expect_refused(text_of(made()).substr(0, 200));
+  expect_refused(text_of(made()) + "x");
+  expect_refused(std::string(100'000, '['));
+}
+
+TEST(SurfaceJson, OtherFormIsRefused) { expect_refused(broken("surface/1", "surface/2")); }
+
+TEST(SurfaceJson, MissingFieldIsRefused) {
+  for (const char* key :
+       {"form", "underlying", "as_of", "spot", "slices", "expiry", "year_fraction", "forward",
+        "discount_factor", "theta", "rho", "psi", "k_low", "k_high"})
+    expect_refused(broken("\"" + std::string(key) + "\"", "\"other\""));
+}
+
+TEST(SurfaceJson, ValueOfAnotherKindIsRefused) {
+  for (const char* other : {"null", "true", "\"0.99\"", "[]", "1e999"}) {
+    expect_refused(broken("0.99", other));
+    if (std::string(other) != "null") expect_refused(broken("100.25", other));
+  }
+  expect_refused(broken("\"HALYRD\"", "7"));
+}
+
+TEST(SurfaceJson, DatesThatAreNoneAreRefused) {
+  expect_refused(broken("\"as_of\": \"2031-03-14", "\"as_of\": \"2031-02-30"));
+  expect_refused(broken("\"expiry\": \"2031-", "\"expiry\": \"9031-"));
+}
+
+surface::Surface with(auto change) {
+  auto surface = made();
+  change(surface);
+  return surface;
+}
+
+TEST(SurfaceJson, ParametersNoSurfaceHasAreRefused) {
+  using S = surface::Surface;
+  const std::vector<surface::Surface> kBroken{
+      with([](S& s) { s.slices.clear(); }),
+      with([](S& s) { s.spot = 0; }),
+      with([](S& s) { s.spot = -1; }),
+      with([](S& s) { std::swap(s.slices[0], s.slices[1]); }),
+      with([](S& s) { s.slices[1].year_fraction = s.slices[0].year_fraction; }),
+      with([](S& s) { s.slices[0].year_fraction = 0; }),
+      with([](S& s) { s.slices[0].expiry = quotes::kNoInstant; }),
+      with([](S& s) { s.slices[0].forward = 0; }),
+      with([](S& s) { s.slices[0].forward = -1; }),
+      with([](S& s) { s.slices[0].discount_factor = 0; }),
+      with([](S& s) { s.slices[0].backbone.theta = 0; }),
+      with([](S& s) { s.slices[0].backbone.theta = -0.01; }),
+      with([](S& s) { s.slices[0].backbone.rho = 1; }),
+      with([](S& s) { s.slices[0].backbone.rho = -1; }),
+      with([](S& s) { s.slices[0].backbone.rho = 1.5; }),
+      with([](S& s) { s.slices[0].backbone.psi = -0.1; }),
+      with([](S& s) { s.slices[0].k_low = 0.3; }),
+      with([](S& s) { s.slices[0].forward = Limits::quiet_NaN(); }),
+      with([](S& s) { s.slices[0].k_high = Limits::infinity(); }),
+  };
+  for (std::size_t i = 0; i < kBroken.size(); ++i) {
+    SCOPED_TRACE(i);
+    expect_refused(text_of(kBroken[i]));
+  }
+}
+
+}  // namespace
+}  // namespace duskgrid::publish
