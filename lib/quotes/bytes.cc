@@ -260,9 +260,6 @@ Result<std::unique_ptr<TextSource>> TextSource::open(const std::string& path) {
   std::array<char, 4> start;
   const std::size_t known = stored.from_file(start.data(), start.size());
   if (stored.broken) return no_input(path, "cannot be read: an error of the system");
-  if (known == 0) {
-    return Failure{Fault::not_quotes, path, "is empty; expected a header row and quotes"};
-  }
   stored.ahead.assign(start.data(), known);
   const Compression compression = compression_of(stored.ahead);
   return std::unique_ptr<TextSource>(

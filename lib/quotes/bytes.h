@@ -15,7 +15,7 @@ namespace duskgrid::quotes {
 // the whole file, so that what a small file expands to costs no memory here.
 class TextSource {
  public:
-  // no_input when the file is missing, unreadable or a folder; not_quotes when it is empty.
+  // no_input when the file is missing, unreadable or a folder.
   static Result<std::unique_ptr<TextSource>> open(const std::string& path);
   virtual ~TextSource() = default;
 

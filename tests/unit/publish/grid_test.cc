@@ -211,10 +211,10 @@ TEST(SampleGrid, TenorLiesAtAsOfPlusTenorWithCarriedForward) {
 }
 
 TEST(SampleGrid, ListedExpiryComesBeforeATenorOfTheSameInstantAndAgrees) {
-  const auto grid = sampled(with_tenor(on(Axis::moneyness, {0.9, 1}), "1Y"));
+  const auto grid = sampled(with_tenor(on(Axis::moneyness, {0.9, 1}), "365D"));
   ASSERT_EQ(grid.size(), 6U);
   EXPECT_EQ(grid[2].tenor, "");
-  EXPECT_EQ(grid[4].tenor, "1Y");
+  EXPECT_EQ(grid[4].tenor, "365D");
   for (int i = 2; i < 4; ++i) {
     EXPECT_EQ(grid[i].expiry, grid[i + 2].expiry);
     EXPECT_EQ(grid[i].strike, grid[i + 2].strike);

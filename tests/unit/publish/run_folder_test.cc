@@ -57,15 +57,16 @@ class WithoutPrivilege {
  public:
   WithoutPrivilege() : before_(geteuid()) {
     constexpr uid_t kNobody = 65534;
-    if (before_ == 0) EXPECT_EQ(seteuid(kNobody), 0);
+    if (before_ == 0) become(kNobody);
   }
   ~WithoutPrivilege() {
-    if (before_ == 0) EXPECT_EQ(seteuid(before_), 0);
+    if (before_ == 0) become(before_);
   }
   WithoutPrivilege(const WithoutPrivilege&) = delete;
   WithoutPrivilege& operator=(const WithoutPrivilege&) = delete;
 
  private:
+  static void become(uid_t user) { EXPECT_EQ(seteuid(user), 0); }
   uid_t before_;
 };
 
