@@ -105,18 +105,19 @@ class Marker {
     return pairs;
   }
 
-  // A forward given for the very instant, or for the local date of the expiry.
+  // A forward given for the very instant, or else for the local date of the expiry.
   std::optional<double> given_forward(quotes::Instant expiry) const {
     const auto date = quotes::format_date(night_.as_of.clock, expiry);
+    std::optional<double> of_date;
     for (const auto& [key, forward] : facts_.forwards) {
       const auto cell = quotes::parse_date_cell(key);
       if (!cell) continue;
       const auto instant = quotes::resolve(*cell, night_.as_of.clock, night_.times.default_time);
+      if (instant == expiry) return forward;
       const bool dated = cell->date && !cell->time_of_day;
-      if (instant == expiry || (dated && quotes::format_date(night_.as_of.clock, instant) == date))
-        return forward;
+      if (dated && quotes::format_date(night_.as_of.clock, instant) == date) of_date = forward;
     }
-    return std::nullopt;
+    return of_date;
   }
 
   // As stated, else the middle of what the rows say, else the night's.
@@ -316,6 +317,9 @@ class Marker {
       if (const auto n = counts.by_reason[static_cast<std::size_t>(entry.reason)];
           n > 0 && entry.reason != Reason::none)
         list += fmt::format("{}{} {}", list.empty() ? "" : ", ", entry.word, n);
+    // Those are in no slice.
+    if (const auto n = chain_.read - counts.read; n > 0)
+      list += fmt::format("{}unreadable or duplicate {}", list.empty() ? "" : ", ", n);
     return "no usable quote" + (list.empty() ? list : ": " + list);
   }
 

@@ -25,21 +25,6 @@ bool needs_guard(std::string_view text) {
   return run_by_a_spreadsheet(text.substr(std::min(text.find_first_not_of('\''), text.size())));
 }
 
-std::string in_folders(const std::string& name) {
-  std::string out;
-  for (std::size_t i = 0; i < name.size(); i += kLongestFileName) {
-    if (i > 0) out += "%/";
-    out += name.substr(i, kLongestFileName);
-  }
-  return out;
-}
-
-std::string out_of_folders(std::string_view file_name) {
-  std::string out(file_name);
-  for (std::size_t i = 0; (i = out.find("%/", i)) != std::string::npos;) out.erase(i, 2);
-  return out;
-}
-
 }  // namespace
 
 std::string csv_text(std::string_view text) {
@@ -74,21 +59,20 @@ std::string encode_file_name(std::string_view name) {
     else
       out += fmt::format("%{:02X}", static_cast<unsigned char>(name[i]));
   }
-  return in_folders(out);
+  return out;
 }
 
 std::optional<std::string> decode_file_name(std::string_view file_name) {
   if (file_name == "%") return std::string();
-  const std::string joined = out_of_folders(file_name);
   std::string out;
-  for (std::size_t i = 0; i < joined.size(); ++i) {
-    if (joined[i] != '%') {
-      out += joined[i];
+  for (std::size_t i = 0; i < file_name.size(); ++i) {
+    if (file_name[i] != '%') {
+      out += file_name[i];
       continue;
     }
     unsigned value = 0;
-    const char* first = joined.data() + i + 1;
-    if (i + 2 >= joined.size()) return std::nullopt;
+    const char* first = file_name.data() + i + 1;
+    if (i + 2 >= file_name.size()) return std::nullopt;
     const auto [end, error] = std::from_chars(first, first + 2, value, 16);
     if (error != std::errc{} || end != first + 2) return std::nullopt;
     out += static_cast<char>(value);

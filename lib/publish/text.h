@@ -19,9 +19,8 @@ std::string unguarded(std::string_view cell);
 std::string csv_number(double value);
 
 // A name as a file name, and back: letters, digits, _ and - stay, and a dot inside; every
-// other byte is %XX in upper-case hexadecimal. Empty gives "%". Never "." or "..". What would be
-// longer than kLongestFileName becomes folders: "%/" stands after every so many bytes but the last.
-inline constexpr std::size_t kLongestFileName = 240;  // file systems stop at 255, endings included
+// other byte is %XX in upper-case hexadecimal. Empty gives "%". Never "." or "..", never longer
+// than three times the name.
 std::string encode_file_name(std::string_view name);
 // Nothing for text that encode_file_name() does not give.
 std::optional<std::string> decode_file_name(std::string_view file_name);

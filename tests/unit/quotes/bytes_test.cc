@@ -1,6 +1,7 @@
 #include "quotes/bytes.h"
 
 #include <gtest/gtest.h>
+#include <unistd.h>
 
 #include <algorithm>
 #include <boost/iostreams/copy.hpp>
@@ -33,7 +34,7 @@ std::string zstd(const std::string& text) {
 }
 
 std::string written(const std::string& bytes) {
-  const std::string path = testing::TempDir() + "bytes_test.csv";
+  const std::string path = testing::TempDir() + std::to_string(::getpid()) + "bytes_test.csv";
   std::ofstream(path, std::ios::binary) << bytes;
   return path;
 }

@@ -1,6 +1,7 @@
 #include "quotes/load.h"
 
 #include <gtest/gtest.h>
+#include <unistd.h>
 
 #include <algorithm>
 #include <boost/iostreams/device/back_inserter.hpp>
@@ -33,7 +34,7 @@ class LoadQuotesTest : public testing::Test {
  protected:
   void SetUp() override {
     const auto* info = testing::UnitTest::GetInstance()->current_test_info();
-    folder_ = testing::TempDir() + "load_test_" + info->name() + "/";
+    folder_ = testing::TempDir() + "load_test_" + std::to_string(::getpid()) + info->name() + "/";
     std::filesystem::remove_all(folder_);
     std::filesystem::create_directories(folder_);
     options_.files = {folder_ + "a.csv"};

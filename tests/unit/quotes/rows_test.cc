@@ -1,6 +1,7 @@
 #include "quotes/rows.h"
 
 #include <gtest/gtest.h>
+#include <unistd.h>
 
 #include <filesystem>
 #include <fstream>
@@ -14,7 +15,7 @@ namespace {
 class RowReaderTest : public testing::Test {
  protected:
   RowReader reader(const std::string& text) {
-    path_ = testing::TempDir() + "rows_test.csv";
+    path_ = testing::TempDir() + std::to_string(::getpid()) + "rows_test.csv";
     std::ofstream(path_, std::ios::binary) << text;
     return RowReader(std::move(TextSource::open(path_).value()));
   }
