@@ -13,17 +13,30 @@ if command -v ccache >/dev/null; then
   export CMAKE_CXX_COMPILER_LAUNCHER=ccache
 fi
 
+# Runs a command with its output in a file, shown only when it fails.
+quietly() {
+  local log=$1
+  shift
+  "$@" >"$log" 2>&1 || {
+    grep -E -A4 'error|FAILED' "$log" | head -n 60 >&2 || true
+    echo "failed: $* (all of it in $log)" >&2
+    return 1
+  }
+}
+
 run() {
   local preset=$1
   shift
   cmake --preset "$preset" -DDUSKGRID_TESTS=ON >/dev/null
-  cmake --build --preset "$preset" -j "$jobs" | tail -n 1
-  ctest --preset "$preset" -j "$jobs" --quiet --output-on-failure "$@" || {
-    ctest --preset "$preset" --rerun-failed --output-on-failure
+  echo "$preset: building"
+  quietly "build/$preset/build.log" cmake --build --preset "$preset" -j "$jobs"
+  echo "$preset: testing"
+  ctest --preset "$preset" -j "$jobs" --quiet || {
+    ctest --preset "$preset" --rerun-failed
     echo "tests/run.sh: the $preset tests failed" >&2
     return 1
   }
-  echo "$preset: all tests passed"
+  echo "$preset: $(ctest --preset "$preset" -N | tail -n 1 | tr -dc 0-9) tests passed"
 }
 
 if [ $# -gt 0 ]; then

@@ -23,8 +23,13 @@ const std::vector<std::string>& seed_texts() {
                                 {as_of + 9000h, 1.03, 104, 0.97, {0.04, 0.25, 0.2}, -0.5, 0.5}}};
     const surface::Surface one{
         "=K\"\xC3\xA9", {}, {{as_of + 24h, 1 / 365.0, 7, 1, {1e-5, 0, 0}, 0, 0}}};
-    return std::vector{surface_to_json({{as_of, clock}, two}),
-                       surface_to_json({{as_of, clock}, one})};
+    const quotes::AsOf night{as_of, clock};
+    std::vector<std::string> texts;
+    for (const auto& surface : {two, one}) {
+      const StoredSurface stored{night, surface};
+      texts.push_back(surface_to_json(stored));
+    }
+    return texts;
   }();
   return kTexts;
 }
