@@ -105,8 +105,7 @@ void print_summary(const night::NightOutcome& outcome, bool slices) {
   print_underlyings(outcome);
   if (slices) print_slices(outcome);
   print_rows(record.rows);
-  for (const auto& file : outcome.files)
-    if (file.rows == 0) fmt::print(stderr, "{}: holds no rows\n", file.file);
+  for (const auto& remark : outcome.remarks) fmt::print(stderr, "note: {}\n", remark);
 }
 
 int status_of(const night::NightOutcome& outcome) {
@@ -155,7 +154,8 @@ void add_build(CLI::App& program, int& status) {
   command->add_option("--out", args->out, "Folder that gets a folder a night")
       ->capture_default_str();
   command->add_option("--spot", args->spots,
-                      "Price of the underlying, or NAME=PRICE, where no file says it");
+                      "Price of the underlying, or NAME=PRICE,\n"
+                      "where no file says it");
   command->add_option("--threads", args->threads, "Threads; 0 takes all the machine has")
       ->check(CLI::Range(0, 1024))
       ->capture_default_str();
@@ -171,12 +171,12 @@ void add_build(CLI::App& program, int& status) {
   command->footer(
       "Prints the folder published on standard output, the summary on standard error.\n\n"
       "Examples:\n"
-      "  duskgrid build quotes.csv --as-of 2031-03-14T16:00:00-05:00 --out marks\n"
+      "  duskgrid build quotes.csv --as-of 2031-03-14T16:00:00-04:00 --out marks\n"
       "  duskgrid build NIGHT.toml --out marks\n"
       "  duskgrid build habits.toml 'feed/*.csv.gz' --as-of 2031-03-14\n\n"
-      "Exit status: 0 published; 3 published, some flagged; 4 some or all not published;\n"
-      "64 usage; 65 not such a CSV; 66 no input; 70 internal; 73 cannot create output;\n"
-      "78 configuration.");
+      "Exit status: 0 published; 3 published, some flagged; 4 some or all not\n"
+      "published; 64 usage; 65 not such a CSV; 66 no input; 70 internal;\n"
+      "73 cannot create output; 78 configuration.");
   command->callback([args, &status] { status = build(*args); });
 }
 

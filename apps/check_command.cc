@@ -79,19 +79,19 @@ int check(const CheckArguments& args) {
 }  // namespace
 
 void add_check(CLI::App& program, int& status) {
-  auto* command =
-      program.add_subcommand("check", "Look for arbitrage in grids, ours or others', and surfaces");
+  auto* command = program.add_subcommand("check", "Look for arbitrage in any grid or surface");
   auto args = std::make_shared<CheckArguments>();
   command
-      ->add_option(
-          "files", args->files,
-          "grid.csv (needs strike, vol, forward, and year_fraction or as_of and expiry) or "
-          "surfaces/NAME.json")
+      ->add_option("files", args->files,
+                   "A grid as CSV with columns strike, vol,\n"
+                   "forward, and year_fraction or as_of and\n"
+                   "expiry; or surfaces/NAME.json")
       ->required();
   command
       ->add_option("--tolerance", args->tolerance,
-                   "Smallest break that counts, as a fraction of the forward; vols printed with d "
-                   "decimals need about 10^-d sqrt(years)")
+                   "Smallest break that counts, a fraction of\n"
+                   "the forward; vols printed with d decimals\n"
+                   "need about 10^-d sqrt(years)")
       ->capture_default_str();
   command->footer(
       "Prints violations as CSV on standard output, a line a grid on standard error.\n\n"

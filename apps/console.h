@@ -49,6 +49,7 @@ class Table {
   // A line under the last row, indented, not in columns.
   void remark(std::string text);
   std::string text() const;
+  bool empty() const { return rows_.empty(); }
 
  private:
   struct Row {

@@ -10,8 +10,8 @@
 int main(int argc, char** argv) {
   using namespace duskgrid;
   CLI::App program{
-      "Turns a night's bid/ask option quote files into arbitrage-free implied-volatility\n"
-      "grids, and accounts for every quote and every number in them."};
+      "Turns a night's bid/ask option quote files into arbitrage-free\n"
+      "implied-volatility grids, and accounts for every quote in them."};
   program.set_version_flag("--version", std::string("duskgrid ") + DUSKGRID_VERSION);
   program.require_subcommand(1);
   program.footer(

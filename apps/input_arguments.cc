@@ -11,15 +11,18 @@ Failure usage(const std::string& what) { return {Fault::usage, "", what}; }
 
 void InputArguments::add_to(CLI::App& command) {
   command
-      .add_option(
-          "inputs", inputs,
-          "Quote files (CSV, gzip or zstd, globs in quotes), or a configuration NIGHT.toml, "
-          "or both when its one [[source]] names no files")
+      .add_option("inputs", inputs,
+                  "Quote files (CSV, gzip or zstd; globs in\n"
+                  "quotes), or a configuration NIGHT.toml, or\n"
+                  "both when its one [[source]] names no files")
       ->required();
   command.add_option("--as-of", as_of,
-                     "Instant the quotes stand for, 2031-03-14T16:00:00-05:00; a date alone is "
-                     "16:00");
-  command.add_option("--zone", zone, "Time zone of dates and times, such as America/New_York");
+                     "Instant the quotes stand for, such as\n"
+                     "2031-03-14T16:00; a date alone is 16:00. UTC\n"
+                     "without an offset in it or a zone");
+  command.add_option("--zone", zone,
+                     "IANA time zone of dates and times, such as\n"
+                     "America/New_York");
 }
 
 Result<night::NightConfig> InputArguments::config() const {

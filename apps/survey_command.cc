@@ -88,8 +88,38 @@ void print_chains(const quotes::QuoteTable& table, const quotes::Clock& clock) {
              grouped(static_cast<std::int64_t>(facts.strikes.size())), grouped(facts.quotes),
              grouped(facts.two_sided)});
   }
-  fmt::print("{}", out.text());
+  if (!out.empty()) fmt::print("{}", out.text());
   if (american > 0) fmt::print("{} quotes are american\n", grouped(american));
+}
+
+// What the as-of has to be close to.
+void print_times(const quotes::QuoteTable& table, const quotes::Clock& clock) {
+  auto first = quotes::kNoInstant, last = quotes::kNoInstant;
+  for (const auto& q : table.quotes) {
+    if (q.quote_time == quotes::kNoInstant) continue;
+    if (first == quotes::kNoInstant || q.quote_time < first) first = q.quote_time;
+    if (last == quotes::kNoInstant || q.quote_time > last) last = q.quote_time;
+  }
+  if (first == quotes::kNoInstant) return;
+  fmt::print("quote times: {} to {}\n", quotes::format_instant(clock, first),
+             quotes::format_instant(clock, last));
+}
+
+// The style is an assumption where no column and no configuration says it.
+void print_exercise(const std::vector<quotes::FileSummary>& files) {
+  for (const auto& file : files)
+    if (file.columns.find(quotes::Field::exercise) < 0 && file.rows > 0)
+      fmt::print("exercise style of {}: no column says, so the configured or default one\n",
+                 file.file);
+}
+
+// Remarks on rows that were read all the same.
+void print_remarks(const quotes::QuoteTable& table) {
+  std::map<std::int32_t, std::int64_t> counts;
+  for (const auto& q : table.quotes)
+    if (q.reason != quotes::Reason::unreadable && q.note >= 0) ++counts[q.note];
+  for (const auto& [note, count] : counts)
+    fmt::print("{} contracts read, but: {}\n", grouped(count), table.notes[note]);
 }
 
 // Why rows could not be read, with the first line of each kind.
@@ -100,10 +130,14 @@ void print_unreadable(const quotes::QuoteTable& table) {
       auto& kind = kinds.try_emplace(q.note, 0, &q).first->second;
       ++kind.first;
     }
-  for (const auto& [note, kind] : kinds)
+  bool numbers = false;
+  for (const auto& [note, kind] : kinds) {
+    numbers = numbers || (note >= 0 && table.notes[note].ends_with("not a number"));
     fmt::print("unreadable: {} of \"{}\", the first in {} line {}\n", grouped(kind.first),
                note < 0 ? "" : table.notes[note], table.files[kind.second->file],
                kind.second->line);
+  }
+  if (numbers) fmt::print("numbers written like 1.234,50 need decimal = \",\" in [[source]]\n");
 }
 
 int survey(const InputArguments& args) {
@@ -117,6 +151,9 @@ int survey(const InputArguments& args) {
   if (!loaded) return console::report(loaded.failure());
   for (const auto& file : loaded->files) print_file(file);
   print_chains(loaded->table, night->as_of.clock);
+  print_times(loaded->table, night->as_of.clock);
+  print_exercise(loaded->files);
+  print_remarks(loaded->table);
   print_unreadable(loaded->table);
   return loaded->table.quotes.empty() ? console::kNotAllPublished : console::kDone;
 }
@@ -132,7 +169,8 @@ void add_survey(CLI::App& program, int& status) {
       "Examples:\n"
       "  duskgrid survey quotes.csv\n"
       "  duskgrid survey NIGHT.toml\n\n"
-      "Exit status: 0; 4 no rows; 64 usage; 65 not such a CSV; 66 no input; 78 configuration.");
+      "Exit status: 0; 4 no rows; 64 usage; 65 not such a CSV; 66 no input;\n"
+      "78 configuration.");
   command->callback([args, &status] { status = survey(*args); });
 }
 

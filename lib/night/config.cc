@@ -87,7 +87,8 @@ const std::vector<Field<SourceOptions>>& source_fields() {
                DUSKGRID_AT(delimiter), to_letter),
       field<S>("decimal", ". or ,", "decimal mark", DUSKGRID_AT(decimal), to_letter),
       field<S>("thousands", "one of , . ' _ or space",
-               "mark accepted between groups of three digits; the point where decimal is the comma",
+               "mark accepted between groups of three digits; without one the comma, or the point "
+               "where decimal is the comma",
                DUSKGRID_AT(thousands), to_letter),
       field<S>("date_format", "letters d m Y y b H M S after %",
                "how dates are written when not ISO, YYYYMMDD or Unix seconds",
@@ -326,8 +327,6 @@ std::optional<Failure> read_sources(const toml::node& node, NightConfig& config,
   for (const auto& item : *node.as_array()) {
     SourceOptions source;
     if (auto failure = read_plain(item, source_fields(), source, place)) return failure;
-    // Where the comma is the decimal mark the point is what groups digits.
-    if (source.decimal == ',' && !item.as_table()->contains("thousands")) source.thousands = '.';
     if (const auto problem = source.problem()) return place.failure(item, "source: " + *problem);
     for (auto& file : source.files)
       if (!folder.empty() && !std::filesystem::path(file).is_absolute())

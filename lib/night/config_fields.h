@@ -7,6 +7,7 @@
 #include <map>
 #include <nlohmann/json.hpp>
 #include <optional>
+#include <sstream>
 #include <string>
 #include <vector>
 
@@ -54,8 +55,13 @@ inline std::optional<int> to_count(const toml::node& node) {
   if (!value || *value < -kMost || *value > kMost) return std::nullopt;
   return static_cast<int>(*value);
 }
+// A date or time of TOML's own is taken as its text.
 inline std::optional<std::string> to_text(const toml::node& node) {
-  return node.value_exact<std::string>();
+  if (!node.is_date() && !node.is_date_time()) return node.value_exact<std::string>();
+  std::ostringstream text;
+  if (const auto* date = node.as_date()) text << *date;
+  if (const auto* instant = node.as_date_time()) text << *instant;
+  return text.str();
 }
 inline std::optional<char> to_letter(const toml::node& node) {
   const auto text = to_text(node);

@@ -58,6 +58,7 @@ class Marker {
   }
 
   MarkedUnderlying run() {
+    flag_later_quotes();
     open_slices();
     find_forwards();
     select();
@@ -74,6 +75,18 @@ class Marker {
 
  private:
   Quote& quote(std::uint32_t row) { return table_.quotes[row]; }
+
+  // A night has quotes of its own evening. Later ones mean that the as-of is wrong, or the file.
+  void flag_later_quotes() {
+    constexpr auto kGrace = std::chrono::hours{1};
+    std::size_t later = 0;
+    for (const auto& slice : chain_.slices)
+      for (const auto row : slice.rows)
+        if (quote(row).quote_time != quotes::kNoInstant &&
+            quote(row).quote_time > night_.as_of.instant + kGrace)
+          ++later;
+    if (later > 0) flag(fmt::format("{} timed after the as-of", counted(later, "quote")));
+  }
 
   void open_slices() {
     for (const auto& slice : chain_.slices) {

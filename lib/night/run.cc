@@ -142,6 +142,19 @@ Result<bool> write_tables(RunFolder& folder, const quotes::QuoteTable& table,
   return written;
 }
 
+// Names configured that no file has: a slip of the pen, or a name that is gone.
+void remark_unmatched(const NightConfig& config, const quotes::QuoteTable& table,
+                      std::vector<std::string>& remarks) {
+  for (const auto& [name, facts] : config.underlyings) {
+    if (std::find(table.underlyings.begin(), table.underlyings.end(), name) !=
+        table.underlyings.end())
+      continue;
+    const auto near = nearest(name, table.underlyings);
+    remarks.push_back("no file has the underlying " + name +
+                      (near.empty() ? "" : "; the nearest name is " + near));
+  }
+}
+
 // A run that marked nothing must not take the place of one that did.
 std::string folder_name(const RunOptions& options, const ResolvedNight& night,
                         const std::vector<MarkedUnderlying>& marked) {
@@ -208,6 +221,10 @@ Result<NightOutcome> run_night(const NightConfig& config, const RunOptions& opti
   if (written) written = folder.commit();
   if (!written) return written.failure();
   outcome.folder = folder.final_path();
+  remark_unmatched(config, table, outcome.remarks);
+  if (folder.replaced()) outcome.remarks.push_back("replaced the earlier run of that date");
+  for (const auto& file : loaded->files)
+    if (file.rows == 0) outcome.remarks.push_back(file.file + " holds no rows");
   for (auto& m : marked) m.grid.clear();
   outcome.underlyings = std::move(marked);
   outcome.files = std::move(loaded->files);

@@ -29,7 +29,8 @@ struct NightOutcome {
   std::vector<MarkedUnderlying>
       underlyings;  // by name; without their grids, which are in the folder
   std::vector<quotes::FileSummary> files;
-  std::string folder;  // where it was published
+  std::string folder;                // where it was published
+  std::vector<std::string> remarks;  // what a person should know of the run as a whole
 };
 
 // Loads, cleans, marks every underlying and publishes. The folder is <out>/<local date of the

@@ -214,6 +214,9 @@ std::optional<std::string> GridOptions::problem() const {
                          : positive          ? "> 0"
                                              : "finite",
                          word(axis));
+    constexpr double kMostMoneyness = 20;
+    if (axis == Axis::moneyness && p > kMostMoneyness)
+      return fmt::format("points has {}, must be K/F: 0.9 and not 90 on the moneyness axis", p);
   }
   return std::nullopt;
 }

@@ -148,6 +148,7 @@ Result<bool> RunFolder::commit() {
     if (entry.is_directory() && !sync_path(entry.path())) return cannot(entry.path(), last_error());
   if (error) return cannot(partial_, error.message());
   if (!sync_path(partial_)) return cannot(partial_, last_error());
+  replaced_ = fs::exists(final_, error);
   if (!swap_in(partial_, final_)) return cannot(final_, "cannot be replaced: " + last_error());
   sync_path(out_);
   return true;

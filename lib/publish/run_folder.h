@@ -52,6 +52,8 @@ class RunFolder {
   // Syncs and renames into place; an earlier folder of the same name is replaced whole.
   Result<bool> commit();
   const std::string& final_path() const { return final_; }
+  // True once commit() has put this run in the place of an earlier one.
+  bool replaced() const { return replaced_; }
 
  private:
   RunFolder(std::string out, std::string name);
@@ -60,6 +62,7 @@ class RunFolder {
 
   std::string out_, final_, partial_;
   int lock_ = -1;
+  bool replaced_ = false;
   std::map<std::string, std::string> digests_;
 };
 

@@ -246,7 +246,10 @@ Result<std::unique_ptr<TextSource>> TextSource::open(const std::string& path) {
   std::error_code error;
   const auto status = std::filesystem::status(path, error);
   if (path.empty() || path.find('\0') != std::string::npos || !std::filesystem::exists(status)) {
-    return no_input(path, "no such file; a path is read from the folder the command runs in");
+    return no_input(
+        path,
+        "no such file; a path in a configuration starts at its folder, any other at the folder "
+        "the command runs in");
   }
   if (std::filesystem::is_directory(status)) {
     return no_input(path, "is a folder; name the files in it, such as " + path + "/*.csv");

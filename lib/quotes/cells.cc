@@ -53,9 +53,12 @@ std::optional<std::string_view> ungrouped(std::string_view whole, char separator
 
 }  // namespace
 
-CellRules::CellRules(char decimal, char thousands, const std::vector<std::string>& null_words)
-    : decimal_(decimal), thousands_(thousands), null_words_{"na",  "n/a",  "null",
-                                                            "nan", "none", "-"} {
+CellRules::CellRules(char decimal, char thousands, const std::vector<std::string>& null_words,
+                     bool lone_group_is_doubt)
+    : decimal_(decimal),
+      thousands_(thousands),
+      lone_group_is_doubt_(lone_group_is_doubt),
+      null_words_{"na", "n/a", "null", "nan", "none", "-"} {
   for (const std::string& word : null_words) {
     null_words_.push_back(lower(trim(word)));
   }
@@ -93,6 +96,8 @@ std::optional<double> CellRules::number(std::string_view cell) const {
   std::copy_n(cell.begin(), sign, text.begin());
   const auto digits = ungrouped(cell.substr(sign, whole - sign), thousands_, text.data() + sign);
   if (!digits) return std::nullopt;
+  const bool lone_group = whole == cell.size() && whole - sign == digits->size() + 1;
+  if (lone_group && lone_group_is_doubt_) return std::nullopt;
   std::size_t size = sign + digits->size();
   for (const char c : cell.substr(whole)) {
     if (decimal_ == ',' && c == '.') return std::nullopt;

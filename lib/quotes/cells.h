@@ -16,8 +16,10 @@ namespace duskgrid::quotes {
 class CellRules {
  public:
   // `thousands` may be 0 for none. `null_words` come beside NA, N/A, null, nan, none,
-  // - and the empty cell.
-  CellRules(char decimal, char thousands, const std::vector<std::string>& null_words);
+  // - and the empty cell. With `lone_group_is_doubt` "1,250" is refused, which may be a decimal
+  // comma, but not "1,250.00" or "1,250,000".
+  CellRules(char decimal, char thousands, const std::vector<std::string>& null_words,
+            bool lone_group_is_doubt = false);
 
   // True for a null word in any case (ASCII). The cell comes trimmed.
   bool is_null(std::string_view cell) const;
@@ -31,6 +33,7 @@ class CellRules {
  private:
   char decimal_;
   char thousands_;
+  bool lone_group_is_doubt_;
   std::vector<std::string> null_words_;  // lower case
   std::size_t longest_null_ = 0;
   std::array<bool, 256> opens_null_{};  // first bytes of null words, both cases

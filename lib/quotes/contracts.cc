@@ -41,6 +41,7 @@ constexpr std::array<std::string_view, kNoteCount> kTexts{
     "price is not a number",
     "exercise is neither European nor American",
     "settlement word has no time; the default time holds",
+    "quote time cannot be read",
 };
 
 // Rows of wrong length come in few lengths; a file that has more is no such CSV, and
@@ -74,7 +75,12 @@ ContractReader::ContractReader(const SourceOptions& options, const TimeRules& ru
     : options_(options),
       table_(table),
       names_(names),
-      rules_(options.decimal, options.thousands, options.null_words),
+      rules_(options.decimal,
+             options.thousands != 0   ? options.thousands
+             : options.decimal == ',' ? '.'
+                                      : ',',
+             options.null_words,
+             options.thousands == 0 && options.decimal == '.' && options.delimiter != ','),
       settlement_times_(folded(rules.settlement_times)),
       default_time_(rules.default_time),
       expiries_(rules.clock, options.date_format),
@@ -376,6 +382,7 @@ void ContractReader::read_extras(Quote& quote) {
   // A format stated for expiries need not be that of quote times.
   if (!instant && !options_.date_format.empty()) instant = plain_dates_.instant(time, of_day);
   quote.quote_time = instant.value_or(kNoInstant);
+  if (!instant && !rules_.is_null(time)) quote.note = note_number(Note::bad_quote_time);
 }
 
 double ContractReader::read_underlying_price() const {

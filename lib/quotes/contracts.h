@@ -43,8 +43,9 @@ enum class Note : std::uint8_t {
   bad_price,
   bad_exercise,
   unknown_settlement,
+  bad_quote_time,
 };
-inline constexpr std::size_t kNoteCount = 21;
+inline constexpr std::size_t kNoteCount = 22;
 std::string_view text(Note note);
 
 // Reads the rows of one file. `names` and `table` are shared by all files of a load.

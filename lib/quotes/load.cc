@@ -107,8 +107,9 @@ class FileLoad {
     if (auto failure = map_header(opening)) return failure;
 
     loaded_.table.files.push_back(path_);
-    ContractReader contracts(options_, rules_, summary_.columns, header_cells_, loaded_.table,
-                             names_);
+    SourceOptions found = options_;
+    found.delimiter = summary_.delimiter;
+    ContractReader contracts(found, rules_, summary_.columns, header_cells_, loaded_.table, names_);
     if (auto failure = contracts.problem()) {
       failure->where = path_ + ": " + failure->where;
       return failure;

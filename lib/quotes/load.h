@@ -18,9 +18,12 @@ namespace duskgrid::quotes {
 struct SourceOptions {
   std::vector<std::string> files;  // paths or globs (* ? [])
   Layout layout = Layout::automatic;
-  char delimiter = 0;                          // 0 finds it among , ; tab
-  char decimal = '.';                          // '.' or ','
-  char thousands = ',';                        // accepted only between groups of three digits
+  char delimiter = 0;  // 0 finds it among , ; tab
+  char decimal = '.';  // '.' or ','
+  // Accepted only between groups of three digits. 0 takes the comma, or the point where the
+  // decimal mark is the comma; then a lone group such as 1,250 in a file whose delimiter is not the
+  // comma is refused, for it may be a decimal comma.
+  char thousands = 0;
   std::map<std::string, std::string> columns;  // field word to header as written
   std::map<std::string, std::string> fixed;    // field word to text, for what the file lacks
   std::string date_format;                     // see parse_date_cell; empty finds it

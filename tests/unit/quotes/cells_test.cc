@@ -46,6 +46,16 @@ TEST(CellRules, DecimalCommaMakesThePointASeparator) {
   EXPECT_EQ(rules.number("1,2,3"), std::nullopt);
 }
 
+// "1,250" with semicolons between cells was read a thousandfold.
+TEST(CellRules, LoneGroupThatMayBeADecimalCommaIsRefused) {
+  const CellRules rules('.', ',', {}, true);
+  EXPECT_FALSE(rules.number("530,600"));
+  EXPECT_FALSE(rules.number("-1,250"));
+  EXPECT_EQ(rules.number("1,250.00"), 1250);
+  EXPECT_EQ(rules.number("1,250,000"), 1250000);
+  EXPECT_EQ(rules.number("530.6"), 530.6);
+}
+
 TEST(CellRules, WithoutASeparatorNoGroupsAreRead) {
   const CellRules rules('.', 0, {});
   EXPECT_EQ(rules.number("1234"), 1234.0);

@@ -454,6 +454,22 @@ TEST_F(LoadQuotesTest, HeaderAloneIsATableOfNoRows) {
   EXPECT_TRUE(read.table.quotes.empty());
 }
 
+TEST_F(LoadQuotesTest, CommaAsDecimalMarkLeavesThePointToGroupDigits) {
+  options_.decimal = ',';
+  const LoadedQuotes read = loaded(
+      "underlying;expiry;strike;put_call;bid;ask\nHALYRD;2031-06-20;1.250,50;C;530,600;531\n");
+  ASSERT_EQ(read.table.quotes.size(), 1U);
+  EXPECT_EQ(read.table.quotes[0].strike, 1250.5);
+  EXPECT_EQ(read.table.quotes[0].bid, 530.6);
+}
+
+TEST_F(LoadQuotesTest, DecimalCommaThatNobodyStatedIsUnreadableNotAThousandfold) {
+  const LoadedQuotes read =
+      loaded("underlying;expiry;strike;put_call;bid;ask\nHALYRD;2031-06-20;950;C;530,600;531\n");
+  ASSERT_EQ(read.table.quotes.size(), 1U);
+  EXPECT_EQ(read.table.quotes[0].reason, Reason::unreadable);
+}
+
 TEST_F(LoadQuotesTest, FileWithoutTextIsATableOfNoRows) {
   for (const std::string text : {"", "\n\n", "\xEF\xBB\xBF"}) {
     const LoadedQuotes read = loaded(text);
@@ -505,7 +521,7 @@ TEST_F(LoadQuotesTest, BadOptionIsNamedWithItsValue) {
             "half_spread_relative = -1, must be at least 0");
   EXPECT_NE(problem_of([](SourceOptions& o) { o.delimiter = '|'; }), "");
   EXPECT_NE(problem_of([](SourceOptions& o) { o.decimal = ';'; }), "");
-  EXPECT_NE(problem_of([](SourceOptions& o) { o.decimal = ','; }), "");
+  EXPECT_NE(problem_of([](SourceOptions& o) { o.decimal = o.thousands = ','; }), "");
   EXPECT_NE(problem_of([](SourceOptions& o) { o.date_format = "%Q"; }), "");
   options_.price_scale = -1;
   write(std::string(kHeader));
