@@ -9,8 +9,8 @@ add_stage(market
   NEEDS duskgrid::quotes PRIVATE_NEEDS fmt::fmt)
 
 add_stage(pricing
-  SOURCES black.cc invert.cc selection.cc
-  NEEDS duskgrid::market PRIVATE_NEEDS Boost::boost fmt::fmt)
+  SOURCES black.cc invert.cc invert_batch.cc selection.cc
+  NEEDS duskgrid::market PRIVATE_NEEDS fmt::fmt hwy::hwy)
 
 add_stage(surface
   SOURCES backbone.cc surface.cc

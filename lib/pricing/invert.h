@@ -17,8 +17,8 @@ struct ImpliedVol {
 };
 
 // Total volatility s with b(x, s) = beta, for x <= 0 and 0 < beta < e^{x/2} (the caller
-// checks). Error: a few ulp times the conditioning of the problem. Safeguarded Halley
-// steps on the logarithm of the price, or of its distance from the bound in the upper half.
+// checks). Error at most 4 ulp times the condition 1 + |dln s/dln beta| + |dln s/dln x|. The same
+// algorithm, and the same bits, as the batch of invert_batch.h.
 double invert_normalised(double x, double beta);
 
 // Implied volatility of a European price in quote currency, year_fraction > 0 in years.

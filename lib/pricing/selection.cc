@@ -6,7 +6,7 @@
 #include <cmath>
 #include <vector>
 
-#include "pricing/invert.h"
+#include "pricing/invert_batch.h"
 
 namespace duskgrid::pricing {
 namespace {
@@ -23,24 +23,45 @@ BlackTerms terms_of(const Quote& q, const SliceMarket& m) {
 // A firm side of a quote: there, finite and positive.
 bool firm(double side) { return std::isfinite(side) && side > 0; }
 
-double vol_or_absent(const BlackTerms& terms, double price, double t) {
-  if (!firm(price)) return quotes::kAbsent;
-  const ImpliedVol v = implied_vol(terms, price, t);
-  if (v.status == VolStatus::below_intrinsic) return 0;
-  return v.status == VolStatus::ok ? v.vol : quotes::kAbsent;
-}
-
-void fill_vols(Quote& q, const SliceMarket& m) {
-  if (q.quoted_in == QuotedIn::vol) {
-    if (firm(q.bid)) q.vol_bid = q.bid;
-    if (firm(q.ask)) q.vol_ask = q.ask;
-    if (firm(q.bid) && firm(q.ask)) q.vol_mid = quotes::mid(q);
-    return;
+// Prices of a slice waiting to be inverted in one call, and where their vols go.
+class PendingVols {
+ public:
+  void add(const Quote& q, double price, double& vol) {
+    strikes_.push_back(q.strike);
+    put_calls_.push_back(q.put_call);
+    prices_.push_back(price);
+    places_.push_back(&vol);
   }
-  const BlackTerms terms = terms_of(q, m);
-  q.vol_bid = vol_or_absent(terms, q.bid, m.year_fraction);
-  q.vol_ask = vol_or_absent(terms, q.ask, m.year_fraction);
-  if (firm(q.bid) && firm(q.ask)) q.vol_mid = vol_or_absent(terms, quotes::mid(q), m.year_fraction);
+
+  // A price at or below intrinsic has vol 0, one past the bound none.
+  void invert(const SliceMarket& m) {
+    std::vector<double> vols(prices_.size());
+    std::vector<VolStatus> statuses(prices_.size());
+    implied_vols({m.forward, m.discount_factor, m.year_fraction}, {strikes_, put_calls_, prices_},
+                 vols, statuses);
+    for (std::size_t i = 0; i < vols.size(); ++i) {
+      const bool some = statuses[i] == VolStatus::ok || statuses[i] == VolStatus::below_intrinsic;
+      *places_[i] = some ? vols[i] : quotes::kAbsent;
+    }
+  }
+
+ private:
+  std::vector<double> strikes_, prices_;
+  std::vector<PutCall> put_calls_;
+  std::vector<double*> places_;
+};
+
+void fill_vols(Quote& q, PendingVols& pending) {
+  const bool in_vol = q.quoted_in == QuotedIn::vol;
+  const auto fill = [&](double quoted, double& vol) {
+    if (in_vol)
+      vol = quoted;
+    else
+      pending.add(q, quoted, vol);
+  };
+  if (firm(q.bid)) fill(q.bid, q.vol_bid);
+  if (firm(q.ask)) fill(q.ask, q.vol_ask);
+  if (firm(q.bid) && firm(q.ask)) fill(quotes::mid(q), q.vol_mid);
 }
 
 void judge_bounds(Quote& q, const SliceMarket& m) {
@@ -191,11 +212,10 @@ std::optional<std::string> SelectionOptions::problem() const {
 
 void select_quotes(quotes::QuoteTable& table, const quotes::ChainSlice& slice,
                    const SliceMarket& market, const SelectionOptions& options) {
-  for (const auto row : slice.rows) {
-    Quote& q = table.quotes[row];
-    fill_vols(q, market);
-    judge_bounds(q, market);
-  }
+  PendingVols pending;
+  for (const auto row : slice.rows) fill_vols(table.quotes[row], pending);
+  pending.invert(market);
+  for (const auto row : slice.rows) judge_bounds(table.quotes[row], market);
   SliceSelection selection(table, slice, market);
   selection.choose_sides();
   selection.judge_far_wings(options.far_deviations);
