@@ -121,69 +121,95 @@ HWY_INLINE hn::Vec<D> mills(D d, hn::Vec<D> z) {
   return polynomial(d, u, kRatio) * v;
 }
 
-// The odd terms after `first` up to `last` of the series below, added to `sum`.
+// Sums of the odd terms of d_{m+1} = (x/2 d_m + t^2 d_{m-1}) / (m + 1) from two starts at once:
+// (0, t) and (1, x/2).
 template <class D>
 struct SeriesTerms {
   D d;
-  hn::Vec<D> half_x, t2, before, now, sum;
+  hn::Vec<D> half_x, t2;
+  hn::Vec<D> before, now, sum;        // from (0, t)
+  hn::Vec<D> before_y, now_y, sum_y;  // from (1, x/2)
+  // Terms of orders kFirst + 2 to kLast.
   template <int kFirst, int kLast>
   HWY_INLINE void add() {
     for (int m = kFirst + 1; m < kLast; m += 2) {
       const auto even = hn::Set(d, 1.0 / m), odd = hn::Set(d, 1.0 / (m + 1));
-      before = (half_x * even) * now + (t2 * even) * before;
-      now = (half_x * odd) * before + (t2 * odd) * now;
+      const auto x_even = half_x * even, t_even = t2 * even, x_odd = half_x * odd, t_odd = t2 * odd;
+      before = x_even * now + t_even * before;
+      before_y = x_even * now_y + t_even * before_y;
+      now = x_odd * before + t_odd * now;
+      now_y = x_odd * before_y + t_odd * now_y;
       sum = sum + now;
+      sum_y = sum_y + now_y;
     }
+  }
+  // Takes back what add() did in lanes where `kept`.
+  HWY_INLINE void keep(hn::Mask<D> kept, hn::Vec<D> old_sum, hn::Vec<D> old_sum_y) {
+    sum = hn::IfThenElse(kept, old_sum, sum);
+    sum_y = hn::IfThenElse(kept, old_sum_y, sum_y);
   }
 };
 
 // Largest t = s/2 of the series below, with |x| < 1.
 inline constexpr double kSeriesHalfVol = 0.45;
 
-// Y(h+t) - Y(h-t) near the money, where the difference would cancel: twice its odd
-// Taylor terms in t, d_m = Y^(m)(h) t^m / m!, by d_{m+1} = (x/2 d_m + t^2 d_{m-1}) / (m + 1).
+// Y(h+t) - Y(h-t) near the money, where the difference would cancel: twice its odd Taylor terms in
+// t, d_m = Y^(m)(h) t^m / m!, which begin with Y(h) and t (1 + h Y(h)) and obey the recurrence
+// above (from Y' = 1 + h Y). It is linear, so all but Y(h) itself is summed before Y(h) is known.
 // Up to order 11 for t < 0.1, 17 for t < 0.3, else 21: the first left out is below 1e-17 of the
 // sum. What a lane gets does not depend on the others.
 template <bool kRough, class D>
 HWY_INLINE hn::Vec<D> mills_difference(D d, hn::Vec<D> x, hn::Vec<D> h, hn::Vec<D> t) {
   const auto half_x = hn::Set(d, 0.5) * x;
-  const auto at_h = mills<kRough>(d, h);
-  const auto first = t + half_x * at_h;
-  SeriesTerms<D> terms{d, half_x, t * t, at_h, first, first};
+  SeriesTerms<D> terms{d, half_x, t * t, hn::Zero(d), t, t, hn::Set(d, 1.0), half_x, half_x};
   if constexpr (kRough) {
     terms.template add<1, 7>();
-    return terms.sum + terms.sum;
-  }
-  terms.template add<1, 11>();
-  const auto small = t < hn::Set(d, 0.1);
-  if (!hn::AllTrue(d, small)) {
-    const auto kept = terms.sum;
-    terms.template add<11, 17>();
-    const auto middle = t < hn::Set(d, 0.3);
-    if (!hn::AllTrue(d, middle)) {
-      const auto kept_middle = terms.sum;
-      terms.template add<17, 21>();
-      terms.sum = hn::IfThenElse(middle, kept_middle, terms.sum);
+  } else {
+    terms.template add<1, 11>();
+    const auto small = t < hn::Set(d, 0.1);
+    if (!hn::AllTrue(d, small)) {
+      const auto sum = terms.sum, sum_y = terms.sum_y;
+      terms.template add<11, 17>();
+      const auto middle = t < hn::Set(d, 0.3);
+      if (!hn::AllTrue(d, middle)) {
+        const auto longer = terms.sum, longer_y = terms.sum_y;
+        terms.template add<17, 21>();
+        terms.keep(middle, longer, longer_y);
+      }
+      terms.keep(small, sum, sum_y);
     }
-    terms.sum = hn::IfThenElse(small, kept, terms.sum);
   }
-  return terms.sum + terms.sum;
+  const auto half = terms.sum + mills<kRough>(d, h) * terms.sum_y;
+  return half + half;
 }
 
-// |h| = k/s of the normal (Bachelier) model from r = |h| / (sqrt(2 pi) psi(|h|)), psi(h) = n(h) - h
-// N(-h), and ln r, to 2e-3: rational fits on either side of |h| = 0.35. Returned as s / (k / r).
+// A guess of s in the lower half from r = k / (sqrt(2 pi) b), k = |x|, and its logarithm. The
+// normal (Bachelier) model has r = d / (sqrt(2 pi) psi(d)) with d = k/s, psi(d) = n(d) - d N(-d):
+// its inverse is fitted to 1e-5 on either side of r = 0.56, d / r in r and d / w in 1 / w with
+// w = sqrt(ln r + 2). To first order in t^2 = s^2/4 the logarithm of the Black price is lower by
+// what raises s by t^2 (1 - d^2 psi(d) / n(d)) / 6, fitted to 3e-3 in y = 1 / (1 + d).
 template <class D>
-HWY_INLINE hn::Vec<D> normal_model_guess(D d, hn::Vec<D> r, hn::Vec<D> log_r) {
+HWY_INLINE hn::Vec<D> lower_guess(D d, hn::Vec<D> k, hn::Vec<D> r, hn::Vec<D> log_r,
+                                  hn::Vec<D> at_the_money) {
+  static constexpr double kNear[] = {0.999998452043, -1.25296318609, 2.05723226123, -3.63963396552,
+                                     5.94709178738,  -7.50347811179, 5.97719439787, -2.15867547398};
+  static constexpr double kFar[] = {1.41412394947,  -0.0292641074349, -9.8607025086,  52.6577217184,
+                                    -351.821877472, 1820.29459771,    -6627.33287304, 16784.5134227,
+                                    -28930.2700618, 33018.4245088,    -23824.8079515, 9842.38261982,
+                                    -1775.38282927};
+  static constexpr double kRise[] = {3.00194194083, 5.83190071523,  -1.00980941051, -109.825483398,
+                                     315.981121454, -396.912456379, 243.384144201,  -59.4526257064};
   const auto one = hn::Set(d, 1.0);
-  const auto near = (hn::Set(d, 0.9999332753) + r * hn::Set(d, 0.9265368663)) /
-                    (one + r * (hn::Set(d, 2.176312645) + r * hn::Set(d, 0.6986049381)));
-  const auto w = hn::Sqrt(hn::Max(log_r + hn::Set(d, 1.5), one));
-  const auto far = (hn::Set(d, -0.1021586787) +
-                    w * (hn::Set(d, 0.8260725972) +
-                         w * (hn::Set(d, -0.8835578253) + w * hn::Set(d, 0.4651882794)))) /
-                   (one + w * (hn::Set(d, -0.4948949788) + w * hn::Set(d, 0.3256668368)));
-  // near is |h| / r, far is |h|.
-  return hn::IfThenElse(r < hn::Set(d, 0.56), near, far);
+  const auto is_near = r < hn::Set(d, 0.56);
+  const auto near = polynomial(d, hn::Min(r, one), kNear);
+  const auto w = hn::Sqrt(hn::Max(log_r, hn::Set(d, -0.59)) + hn::Set(d, 2.0));
+  const auto far = polynomial(d, one / w, kFar) * w;
+  const auto deviations = hn::IfThenElse(is_near, r * near, far);
+  const auto s = hn::IfThenElse(is_near, at_the_money / near, k / far);
+  const auto y = one / (one + deviations);
+  const auto rise = polynomial(d, y, kRise) * (y * y);
+  const auto t2 = hn::Min(hn::Set(d, 0.25) * (s * s), one);
+  return s + s * (t2 * rise * hn::Set(d, 1.0 / 6.0));
 }
 
 // Upper-tail quantile of the normal distribution from T = sqrt(-2 ln q), q <= 1/2, to 5e-4:
@@ -223,13 +249,19 @@ class Inversion {
   }
 
   HWY_INLINE V run() {
-    // A step turns a relative error e into a few e^4: a last step below 3e-5 leaves rounding. Two
-    // are nearly always enough, twelve reach from any guess.
-    // A lane that has settled moves no more, whatever its neighbours still need.
+    // A step turns a relative error e into a few e^4: a last step below 5e-5 leaves rounding. One
+    // is enough where the guess is good, which is where listed options are; elsewhere a rough one
+    // goes before. Twelve reach from any guess. A lane that has settled moves no more, whatever its
+    // neighbours still need.
     constexpr int kMostSteps = 12;
-    step<true>();
+    const auto guessed = s_;
+    const auto rough = hn::Or(upper_, s_ > number(0.5));
+    if (!hn::AllFalse(d_, rough)) {
+      step<true>();
+      s_ = hn::IfThenElse(rough, s_, guessed);
+    }
     auto moving = hn::Not(step<false>());
-    for (int i = 2; i < kMostSteps && !hn::AllFalse(d_, moving); ++i) {
+    for (int i = 1; i < kMostSteps && !hn::AllFalse(d_, moving); ++i) {
       const auto before = s_;
       const auto settled = step<false>();
       s_ = hn::IfThenElse(moving, s_, before);
@@ -242,17 +274,16 @@ class Inversion {
   HWY_INLINE V number(double v) const { return hn::Set(d_, v); }
 
   HWY_INLINE void guess(const Problem<D>& problem) {
-    const auto r = k_ * inverse_;
     // Of the lower half ln r, of the upper ln of the share of the bound that is missing.
+    const auto lifted_r = k_ * inverse_;
     const auto share = problem.target / problem.bound;
     const auto least = number(0x1p-1000);
-    const auto ln = log(d_, hn::Max(hn::IfThenElse(upper_, share, r), least));
+    const auto ln = log(d_, hn::Max(hn::IfThenElse(upper_, share, lifted_r), least));
     // A lifted target made r 2^64 times too small.
-    const auto fit =
-        normal_model_guess(d_, hn::IfThenElse(lift_ > hn::Zero(d_), number(1.0), r), ln + lift_);
-    const auto small = r < number(0.56);
-    const auto lower = hn::IfThenElse(hn::AndNot(lift_ > hn::Zero(d_), small),
-                                      number(1.0) / (inverse_ * fit), k_ / fit);
+    const auto is_lifted = lift_ > hn::Zero(d_);
+    const auto unlift = hn::IfThenElse(is_lifted, number(0x1p-64), number(1.0));
+    const auto r = hn::Min(lifted_r, number(0x1p900)) / unlift;
+    const auto lower = lower_guess(d_, k_, r, ln + lift_, unlift / inverse_);
     s_ = lower;
     if (!hn::AllFalse(d_, upper_)) s_ = hn::IfThenElse(upper_, upper_guess(ln), lower);
     // d1 stays where Y is fitted.
@@ -306,10 +337,10 @@ class Inversion {
     const auto bottom = one + (second + third * number(1.0 / 6.0));
     auto moved = s_ + top / bottom;
     // Where the step is no step (a pole, a far guess): a fifth or five times, within bounds.
-    const auto fifth = s_ * number(0.2), fivefold = s_ * number(5.0);
-    moved = hn::IfThenElse(moved > fifth, moved, fifth);
-    moved = hn::Min(hn::Max(hn::Min(moved, fivefold), floor_), ceiling_);
-    const auto settled = hn::Abs(moved - s_) <= number(3e-5) * moved;
+    const auto low = hn::Max(s_ * number(0.2), floor_);
+    const auto high = hn::Min(s_ * number(5.0), ceiling_);
+    moved = hn::Min(hn::IfThenElse(moved > low, moved, low), high);
+    const auto settled = hn::Abs(moved - s_) <= number(5e-5) * moved;
     s_ = moved;
     return settled;
   }
