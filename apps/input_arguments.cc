@@ -52,7 +52,10 @@ Result<night::NightConfig> InputArguments::config() const {
     if (source.files.empty())
       return usage("a [[source]] has no files; name them on the command line");
   if (!as_of.empty()) config.as_of_text = as_of;
-  if (!zone.empty()) config.zone = zone;
+  if (!zone.empty()) {
+    if (const auto problem = quotes::Clock{zone, {}}.problem()) return usage("--" + *problem);
+    config.zone = zone;
+  }
   return config;
 }
 

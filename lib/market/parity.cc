@@ -36,19 +36,51 @@ const ParityPair& nearest_pair(std::span<const ParityPair> pairs) {
   });
 }
 
-// Huber regression middle = a - D (K - centre) by reweighting; the rate of D and its error.
+double median_of(std::vector<double> values) {
+  const auto middle_at = values.begin() + static_cast<std::ptrdiff_t>(values.size() / 2);
+  std::nth_element(values.begin(), middle_at, values.end());
+  return *middle_at;
+}
+
+// The pairs that lie along one line of middle on strike. The line to judge by has the median of the
+// slopes between pairs half the chain apart, and the median level: a stray pair, however far out
+// and however tight, turns neither.
+std::vector<ParityPair> pairs_in_line(std::span<const ParityPair> pairs) {
+  constexpr double kFarOut = 6;          // standard deviations, or ...
+  constexpr double kNormalMad = 1.4826;  // ... of the median residual where that is larger
+  const std::size_t half = pairs.size() / 2;
+  std::vector<double> slopes, levels, misses;
+  for (std::size_t i = 0; i + half < pairs.size(); ++i)
+    slopes.push_back((middle(pairs[i + half]) - middle(pairs[i])) /
+                     (pairs[i + half].strike - pairs[i].strike));
+  const double slope = median_of(slopes);
+  for (const ParityPair& p : pairs) levels.push_back(middle(p) - slope * p.strike);
+  const double level = median_of(levels);
+  for (const ParityPair& p : pairs)
+    misses.push_back(std::abs(middle(p) - level - slope * p.strike) / deviation(p));
+  const double limit = kFarOut * std::max(1.0, kNormalMad * median_of(misses));
+  std::vector<ParityPair> kept;
+  for (std::size_t i = 0; i < pairs.size(); ++i)
+    if (misses[i] <= limit) kept.push_back(pairs[i]);
+  return kept;
+}
+
+// Huber regression middle = a - D (K - centre) by reweighting; the rate of D and its error, which
+// grows with the misfit where that is more than the spreads explain.
 RateReading regress_rate(const ExpiryPairs& expiry) {
   constexpr std::size_t kFewestPairs = 3;
   constexpr int kRounds = 20;
   const RateReading nothing{0, std::numeric_limits<double>::infinity()};
   if (expiry.pairs.size() < kFewestPairs || expiry.american) return nothing;
-  const double centre = nearest_pair(expiry.pairs).strike;
-  std::vector<double> robust(expiry.pairs.size(), 1.0);
+  const auto pairs = pairs_in_line(expiry.pairs);
+  if (pairs.size() < kFewestPairs) return nothing;
+  const double centre = nearest_pair(pairs).strike;
+  std::vector<double> robust(pairs.size(), 1.0);
   double slope = 1, error = 0;
   for (int round = 0; round < kRounds; ++round) {
     double s0 = 0, s1 = 0, s2 = 0, y0 = 0, y1 = 0;
     for (std::size_t i = 0; i < robust.size(); ++i) {
-      const ParityPair& p = expiry.pairs[i];
+      const ParityPair& p = pairs[i];
       const double weight = robust[i] / (deviation(p) * deviation(p));
       const double x = p.strike - centre;
       s0 += weight;
@@ -61,12 +93,15 @@ RateReading regress_rate(const ExpiryPairs& expiry) {
     if (!(determinant > 1e-12 * s0 * s2)) return nothing;
     slope = (s0 * y1 - s1 * y0) / determinant;
     const double level = (y0 - slope * s1) / s0;
-    error = std::sqrt(s0 / determinant);
+    double misfit = 0;
     for (std::size_t i = 0; i < robust.size(); ++i) {
-      const ParityPair& p = expiry.pairs[i];
+      const ParityPair& p = pairs[i];
       const double r = std::abs(middle(p) - level - slope * (p.strike - centre)) / deviation(p);
+      misfit += robust[i] * r * r;
       robust[i] = r > kHuber ? kHuber / r : 1.0;
     }
+    const double scale = std::max(1.0, std::sqrt(misfit / static_cast<double>(robust.size())));
+    error = scale * std::sqrt(s0 / determinant);
   }
   const double discount = -slope;
   if (!(discount > 0)) return nothing;
@@ -109,19 +144,42 @@ struct ForwardInterval {
   double low, high, weight;
 };
 
+// Roughly where the forward is: the median of what the pairs say, each weighted by its tightness
+// but none by more than three times the middling one, so that no stray pair decides.
+double rough_forward(std::span<const ParityPair> pairs, double discount) {
+  constexpr double kMostWeight = 3;
+  std::vector<std::pair<double, double>> said;  // forward, weight
+  std::vector<double> weights;
+  for (const ParityPair& p : pairs) {
+    weights.push_back(1 / deviation(p));
+    said.emplace_back(p.strike + middle(p) / discount, weights.back());
+  }
+  const double most = kMostWeight * median_of(weights);
+  double total = 0;
+  for (auto& [forward, weight] : said) total += weight = std::min(weight, most);
+  std::sort(said.begin(), said.end());
+  double below = 0;
+  for (const auto& [forward, weight] : said)
+    if ((below += weight) >= 0.5 * total) return forward;
+  return said.back().first;
+}
+
 std::vector<ForwardInterval> near_the_money(const ExpiryPairs& expiry, double discount,
                                             const ParityOptions& options) {
-  const ParityPair& nearest = nearest_pair(expiry.pairs);
-  const double rough = nearest.strike + middle(nearest) / discount;
-  // At the money a straddle is D F s sqrt(2/pi).
-  const double total_vol = nearest.straddle / (0.8 * discount * std::max(rough, nearest.strike));
-  const double reach = std::max(options.near_deviations * total_vol * nearest.strike,
-                                std::abs(nearest.strike - rough));
+  const double rough = rough_forward(expiry.pairs, discount);
   std::vector<ParityPair> sorted(expiry.pairs.begin(), expiry.pairs.end());
   std::sort(sorted.begin(), sorted.end(), [&](const auto& a, const auto& b) {
     return std::pair(std::abs(a.strike - rough), a.strike) <
            std::pair(std::abs(b.strike - rough), b.strike);
   });
+  // At the money a straddle is D F s sqrt(2/pi): the middling one of the nearest three.
+  std::vector<double> straddles;
+  for (std::size_t i = 0; i < std::min<std::size_t>(3, sorted.size()); ++i)
+    straddles.push_back(sorted[i].straddle);
+  const double money = std::max(rough, sorted.front().strike);
+  const double total_vol = median_of(straddles) / (0.8 * discount * money);
+  const double reach = std::max(options.near_deviations * total_vol * money,
+                                std::abs(sorted.front().strike - rough));
   std::vector<ForwardInterval> out;
   for (const ParityPair& p : sorted) {
     if (!out.empty() && (std::abs(p.strike - rough) > reach ||
@@ -196,6 +254,7 @@ double nearest_carry(std::span<const std::optional<ForwardEstimate>> estimates,
   double carry = 0, least = std::numeric_limits<double>::infinity();
   for (std::size_t i = 0; i < estimates.size(); ++i) {
     if (!estimates[i] || !estimates[i]->carry) continue;
+    if (estimates[i]->source == ForwardSource::curve) continue;  // a copy of another's
     const double distance = std::abs(expiries[i].year_fraction - t);
     if (distance < least) {
       least = distance;

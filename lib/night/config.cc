@@ -52,9 +52,11 @@ const std::vector<Field<NightConfig>>& night_fields() {
                          "where local dates and times are read and written; without it the offset "
                          "of as_of, or UTC",
                          DUSKGRID_AT(zone), to_text),
-      field<NightConfig>("settlement_times", "table of word = \"HH:MM\"",
-                         "local time of day that a word of the settlement column stands for",
-                         DUSKGRID_AT(settlement_times), to_text_map),
+      field<NightConfig>(
+          "settlement_times", "table of word = \"HH:MM\"",
+          "local time of day that a word of the settlement column stands for; without it am is "
+          "09:30 and pm 16:00",
+          DUSKGRID_AT(settlement_times), to_text_map),
       field<NightConfig>("spot", "> 0, quote currency",
                          "price of every underlying that neither its table nor its file gives",
                          DUSKGRID_AT(spot), to_number),
@@ -518,6 +520,10 @@ Result<ResolvedNight> resolve(const NightConfig& config) {
   auto as_of = quotes::parse_as_of(config.as_of_text, config.zone);
   if (!as_of) return as_of.failure();
   ResolvedNight night{*as_of, {as_of->clock, std::chrono::hours{16}, {}}, {}};
+  // Common practice of morning and afternoon settlement, where nothing is stated.
+  if (config.settlement_times.empty())
+    night.times.settlement_times = {{"am", std::chrono::minutes{9 * 60 + 30}},
+                                    {"pm", std::chrono::hours{16}}};
   for (const auto& [name, text] : config.settlement_times) {
     const auto time = quotes::parse_time_of_day(text);
     if (!time)

@@ -107,13 +107,16 @@ class Marker {
     const auto sound = [](const Quote& q) {
       return q.reason == Reason::none && q.quoted_in == QuotedIn::price;
     };
+    // Rows that are not sound may stand between: pairs are made of those that are.
+    std::vector<const Quote*> rows;
+    for (const auto row : slice.rows)
+      if (sound(quote(row))) rows.push_back(&quote(row));
     std::vector<market::ParityPair> pairs;
-    for (std::size_t i = 0; i + 1 < slice.rows.size(); ++i) {
-      const Quote &call = quote(slice.rows[i]), &put = quote(slice.rows[i + 1]);
+    for (std::size_t i = 0; i + 1 < rows.size(); ++i) {
+      const Quote &call = *rows[i], &put = *rows[i + 1];
       if (call.strike != put.strike || call.put_call == put.put_call) continue;
-      if (sound(call) && sound(put))
-        pairs.push_back({call.strike, call.bid - put.ask, call.ask - put.bid,
-                         quotes::mid(call) + quotes::mid(put)});
+      pairs.push_back({call.strike, call.bid - put.ask, call.ask - put.bid,
+                       quotes::mid(call) + quotes::mid(put)});
     }
     return pairs;
   }

@@ -80,7 +80,9 @@ Result<std::vector<publish::InputRecord>> record_inputs(
 
 std::vector<MarkedUnderlying> mark_all(quotes::QuoteTable& table, const NightConfig& config,
                                        const ResolvedNight& night, const Stages& stages) {
-  const auto chains = quotes::group_chains(table);
+  auto chains = quotes::group_chains(table);
+  // A name seen only on rows that cannot be read is no underlying of the night.
+  std::erase_if(chains, [](const quotes::Chain& chain) { return chain.slices.empty(); });
   std::vector<MarkedUnderlying> marked(chains.size());
   std::vector<std::size_t> order(chains.size());
   std::iota(order.begin(), order.end(), std::size_t{0});

@@ -17,10 +17,9 @@ constexpr double kInvSqrt2Pi = inv_sqrtpi * kInvSqrt2;
 constexpr double kSqrtHalfPi = 1.2533141373155002512;  // sqrt(pi / 2)
 
 // Where the difference of scaled erfc's gives way to its series in s/2. With |x| < 1
-// and s/2 < 0.2 the series below is exact to rounding after its eight terms (the last is below
-// 1e-17 of the first); outside, the difference loses no more than a factor
-// max(3, |x|/s^2) <= max(3, (x/s)^2).
-constexpr double kSeriesHalfVol = 0.2;
+// and s/2 < 0.6 the first term left out is below 1e-17 of the sum; outside, the difference loses
+// no more than a factor max(2, |x|/s^2) <= max(2, (x/s)^2).
+constexpr double kSeriesHalfVol = 0.6;
 constexpr double kSeriesLogMoneyness = 1.0;
 
 // erf on [0, 0.46875] as x P(x^2)/Q(x^2).
@@ -80,7 +79,7 @@ double scaled_erfc_tail(double x) {
 // Y(h+t) - Y(h-t) for Y = N/n (n the density), by its odd Taylor terms in t: Y' = 1 + h Y
 // and Y^(m+1) = h Y^(m) + m Y^(m-1).
 double mills_difference_series(double h, double t) {
-  constexpr int kLastOrder = 15;
+  constexpr int kLastOrder = 23;
   double previous = kSqrtHalfPi * scaled_erfc(-h * kInvSqrt2);  // Y
   double current = 1.0 + h * previous;                          // Y'
   double weight = t;                                            // t^m / m!

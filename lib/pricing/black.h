@@ -1,5 +1,5 @@
 // Black (1976) prices and their derivatives in the normalised form that the
-// inversion iterates on. Not for early exercise.
+// inversion solves. Not for early exercise.
 //
 // Normalised: x = ln(F/K), s = sigma sqrt(t) the total volatility, and
 //   b(x, s) = e^{x/2} N(x/s + s/2) - e^{-x/2} N(x/s - s/2),

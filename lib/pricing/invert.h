@@ -13,7 +13,7 @@ std::string_view word(VolStatus status);
 
 struct ImpliedVol {
   VolStatus status;
-  double vol;  // decimals a year; 0 when below_intrinsic, else meaningless unless ok (never NaN)
+  double vol;  // decimals a year; 0 unless ok
 };
 
 // Total volatility s with b(x, s) = beta, for x <= 0 and 0 < beta < e^{x/2} (the caller
@@ -23,7 +23,7 @@ double invert_normalised(double x, double beta);
 
 // Implied volatility of a European price in quote currency, year_fraction > 0 in years.
 // A price at or below intrinsic is below_intrinsic, at or above the bound above_bound;
-// inputs not finite or not positive where they must be are not_finite.
+// inputs not finite or not positive where they must be, or F/K no normal number, are not_finite.
 ImpliedVol implied_vol(const BlackTerms& terms, double price, double year_fraction);
 
 }  // namespace duskgrid::pricing

@@ -3,8 +3,6 @@
 #include <algorithm>
 #include <cmath>
 
-// Vectors without a size known to the compiler have no operators, which the kernel uses.
-#define HWY_DISABLED_TARGETS (HWY_SVE | HWY_SVE2 | HWY_SVE_256 | HWY_SVE2_128 | HWY_RVV)
 #undef HWY_TARGET_INCLUDE
 #define HWY_TARGET_INCLUDE "pricing/invert_batch.cc"
 #include <hwy/foreach_target.h>

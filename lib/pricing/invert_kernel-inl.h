@@ -151,12 +151,12 @@ struct SeriesTerms {
 };
 
 // Largest t = s/2 of the series below, with |x| < 1.
-inline constexpr double kSeriesHalfVol = 0.45;
+inline constexpr double kSeriesHalfVol = 0.6;
 
 // Y(h+t) - Y(h-t) near the money, where the difference would cancel: twice its odd Taylor terms in
 // t, d_m = Y^(m)(h) t^m / m!, which begin with Y(h) and t (1 + h Y(h)) and obey the recurrence
 // above (from Y' = 1 + h Y). It is linear, so all but Y(h) itself is summed before Y(h) is known.
-// Up to order 11 for t < 0.1, 17 for t < 0.3, else 21: the first left out is below 1e-17 of the
+// Up to order 11 for t < 0.1, 17 for t < 0.3, else 23: the first left out is below 1e-17 of the
 // sum. What a lane gets does not depend on the others.
 template <bool kRough, class D>
 HWY_INLINE hn::Vec<D> mills_difference(D d, hn::Vec<D> x, hn::Vec<D> h, hn::Vec<D> t) {
@@ -173,7 +173,7 @@ HWY_INLINE hn::Vec<D> mills_difference(D d, hn::Vec<D> x, hn::Vec<D> h, hn::Vec<
       const auto middle = t < hn::Set(d, 0.3);
       if (!hn::AllTrue(d, middle)) {
         const auto longer = terms.sum, longer_y = terms.sum_y;
-        terms.template add<17, 21>();
+        terms.template add<17, 23>();
         terms.keep(middle, longer, longer_y);
       }
       terms.keep(small, sum, sum_y);
@@ -327,15 +327,16 @@ class Inversion {
     // f' = sign / q and nu = -f / f'; with b2, b3 the second and third derivatives of b over its
     // first, nu f''/f' = nu b2 + f and nu^2 times the third of f over f' is
     // nu^2 b3 + 3 f nu b2 + 2 f^2.
-    const auto nu = hn::Neg(f) * sign_ * q;
-    const auto b2 = (h2 - t2) * inverse_s;
-    const auto b3 = b2 * b2 - (number(3.0) * h2 * inverse_s * inverse_s + number(0.25));
+    // All in units of s, so that nothing overflows for the smallest.
+    const auto nu = hn::Neg(f) * sign_ * (q * inverse_s);
+    const auto b2 = h2 - t2;
+    const auto b3 = b2 * b2 - (number(3.0) * h2 + t2);
     const auto nu_b2 = nu * b2;
     const auto second = nu_b2 + f;
     const auto third = nu * nu * b3 + f * (number(3.0) * nu_b2 + (f + f));
     const auto top = nu * (one + half * second);
     const auto bottom = one + (second + third * number(1.0 / 6.0));
-    auto moved = s_ + top / bottom;
+    auto moved = s_ + s_ * (top / bottom);
     // Where the step is no step (a pole, a far guess): a fifth or five times, within bounds.
     const auto low = hn::Max(s_ * number(0.2), floor_);
     const auto high = hn::Min(s_ * number(5.0), ceiling_);
@@ -395,9 +396,10 @@ HWY_INLINE hn::Vec<D> invert_prices(D d, const Shared<D>& shared, hn::Vec<D> str
   const auto limit = shared.discount * hn::IfThenElse(sign > zero, forward, k);
   const auto beta = time_value / (shared.discount * shared.root_forward * hn::Sqrt(k));
   const auto bound = hn::Sqrt(low / high);
-  const auto below = beta <= zero;
+  // No total volatility below the normal doubles is told apart: less is intrinsic value.
+  const auto below = beta < hn::Set(d, 0x1p-1022);
   const auto above = hn::Or(price >= limit, beta >= bound);
-  const auto ok = hn::AndNot(hn::Or(below, above), finite);
+  const auto ok = hn::AndNot(hn::Or(below, above), hn::And(finite, beta < bound));
   const auto sound = hn::IfThenElse(ok, beta, hn::Set(d, 0.25) * bound);
   const auto s = invert(d, hn::Min(log_ratio(d, low, high), zero), sound, bound);
   // The order of VolStatus: ok, below_intrinsic, above_bound, not_finite.

@@ -31,16 +31,18 @@ class PendingVols {
     put_calls_.push_back(q.put_call);
     prices_.push_back(price);
     places_.push_back(&vol);
+    bids_.push_back(&vol == &q.vol_bid);
   }
 
-  // A price at or below intrinsic has vol 0, one past the bound none.
+  // A bid at or below intrinsic has vol 0; an ask or a mid there, or past the bound, has none.
   void invert(const SliceMarket& m) {
     std::vector<double> vols(prices_.size());
     std::vector<VolStatus> statuses(prices_.size());
     implied_vols({m.forward, m.discount_factor, m.year_fraction}, {strikes_, put_calls_, prices_},
                  vols, statuses);
     for (std::size_t i = 0; i < vols.size(); ++i) {
-      const bool some = statuses[i] == VolStatus::ok || statuses[i] == VolStatus::below_intrinsic;
+      const bool some =
+          statuses[i] == VolStatus::ok || (statuses[i] == VolStatus::below_intrinsic && bids_[i]);
       *places_[i] = some ? vols[i] : quotes::kAbsent;
     }
   }
@@ -49,6 +51,7 @@ class PendingVols {
   std::vector<double> strikes_, prices_;
   std::vector<PutCall> put_calls_;
   std::vector<double*> places_;
+  std::vector<bool> bids_;
 };
 
 void fill_vols(Quote& q, PendingVols& pending) {
@@ -59,7 +62,10 @@ void fill_vols(Quote& q, PendingVols& pending) {
     else
       pending.add(q, quoted, vol);
   };
-  if (firm(q.bid)) fill(q.bid, q.vol_bid);
+  if (firm(q.bid))
+    fill(q.bid, q.vol_bid);
+  else if (std::isfinite(q.bid))
+    q.vol_bid = 0;
   if (firm(q.ask)) fill(q.ask, q.vol_ask);
   if (firm(q.bid) && firm(q.ask)) fill(quotes::mid(q), q.vol_mid);
 }
@@ -179,7 +185,10 @@ class SliceSelection {
     // A line misses a smile's bend by a few percent of its level: not the quote's fault.
     constexpr double kBend = 0.02;
     const double outside = std::abs(qj.vol_mid - line) - kBend * std::abs(line);
-    return outside / (half_spread(qj) + std::max(half_spread(qa), half_spread(qb)));
+    // Locked quotes have no spread to measure by: half a percent of the level stands in.
+    constexpr double kLeast = 0.005;
+    const double spreads = half_spread(qj) + std::max(half_spread(qa), half_spread(qb));
+    return outside / std::max(spreads, kLeast * std::abs(line));
   }
 
   // An outlier is one for each of three lines: its two neighbours', and each neighbour's with the

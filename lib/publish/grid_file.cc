@@ -116,6 +116,7 @@ class GridBuilder {
   arbitrage::VolSlice slice_of(const Row& row) {
     constexpr auto kClose = std::chrono::hours{16};
     arbitrage::VolSlice slice{};
+    slice.expiry = quotes::kNoInstant;
     quotes::Instant as_of = quotes::kNoInstant;
     if (row[kAsOf])
       as_of = quotes::resolve(dated(last_as_of_, as_of_cell_, row, kAsOf), clock_, kClose);
@@ -125,17 +126,16 @@ class GridBuilder {
     slice.year_fraction =
         row[kYears] ? positive_number(row, kYears) : market::year_fraction(as_of, slice.expiry);
     if (!(slice.year_fraction > 0)) throw Unusable{"expiry is not after as_of"};
-    if (!row[kExpiry]) slice.expiry = instant_after(as_of, slice.year_fraction);
+    if (!row[kExpiry] && row[kAsOf]) slice.expiry = instant_after(as_of, slice.year_fraction);
     slice.forward = positive_number(row, kForward);
     slice.discount_factor = row[kDiscount] ? positive_number(row, kDiscount) : 1;
     return slice;
   }
 
   static quotes::Instant instant_after(quotes::Instant as_of, double year_fraction) {
-    const auto start = as_of == quotes::kNoInstant ? quotes::Instant{} : as_of;
     constexpr double kYear = 365.0 * 86400, kMostYears = 1000;
     const double seconds = std::min(year_fraction, kMostYears) * kYear;
-    return start + std::chrono::seconds{std::llround(seconds)};
+    return as_of + std::chrono::seconds{std::llround(seconds)};
   }
 
   quotes::Clock clock_;

@@ -110,6 +110,8 @@ Result<std::unique_ptr<RunFolder>> RunFolder::create(const std::string& out,
   std::error_code error;
   fs::create_directories(out, error);
   if (error) return cannot(out, "the output folder cannot be made: " + error.message());
+  if (fs::exists(folder->final_, error) && !fs::is_directory(folder->final_, error))
+    return cannot(folder->final_, "is in the way and not a folder");
   const std::string lock = out + "/.lock";
   folder->lock_ = ::open(lock.c_str(), O_RDWR | O_CREAT | O_CLOEXEC, 0644);
   if (folder->lock_ < 0) return cannot(out, "cannot be written to: " + last_error());

@@ -13,7 +13,7 @@
 
 namespace duskgrid::publish {
 
-// A file being written inside a RunFolder. Errors are kept and told by RunFolder::commit().
+// A file being written inside a RunFolder. Errors are kept and told by RunFolder::add().
 class RunFile {
  public:
   void write(std::string_view text);

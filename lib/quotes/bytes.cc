@@ -254,12 +254,13 @@ Result<std::unique_ptr<TextSource>> TextSource::open(const std::string& path) {
   if (std::filesystem::is_directory(status)) {
     return no_input(path, "is a folder; name the files in it, such as " + path + "/*.csv");
   }
+  if (!std::filesystem::is_regular_file(status)) return no_input(path, "is not a file");
   StoredBytes stored;
   stored.file.reset(std::fopen(path.c_str(), "rb"));
   if (!stored.file) {
     return no_input(path, std::string("cannot be read: ") + std::strerror(errno));
   }
-  // Four bytes tell the formats apart; they are given again, so pipes can be read too.
+  // Four bytes tell the formats apart; they are given again.
   std::array<char, 4> start;
   const std::size_t known = stored.from_file(start.data(), start.size());
   if (stored.broken) return no_input(path, "cannot be read: an error of the system");

@@ -16,7 +16,7 @@ struct ChainSlice {
 struct Chain {
   std::int32_t underlying;         // index into QuoteTable::underlyings
   std::vector<ChainSlice> slices;  // by expiry
-  std::int64_t read = 0;           // readable contracts under this name
+  std::int64_t read = 0;  // contracts read under this name, unreadable ones with a name included
 };
 
 // One chain for every underlying named, in the order of their names (bytes), whatever the order of

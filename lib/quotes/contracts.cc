@@ -305,7 +305,7 @@ Note ContractReader::read_time_of_day(TimeOfDay& time) {
     return Note::none;
   }
   const std::string_view settlement = cell(Field::settlement);
-  if (settlement.empty() || settlement_times_.empty()) return Note::none;
+  if (settlement.empty()) return Note::none;
   const auto known = settlement_times_.find(fold_word(settlement));
   if (known == settlement_times_.end()) return Note::unknown_settlement;
   time.time = known->second;

@@ -321,8 +321,17 @@ Result<BackboneFit> fit_backbone(std::span<const FitSlice> slices, const Backbon
   if (const auto problem = options.problem())
     return Failure{Fault::configuration, "backbone", *problem};
   const auto empty = [](const FitSlice& s) { return s.quotes.empty(); };
+  const auto unusable = [](const FitSlice& s) {
+    return !(s.year_fraction > 0) ||
+           std::any_of(s.quotes.begin(), s.quotes.end(), [](const FitQuote& q) {
+             return !std::isfinite(q.k) || !std::isfinite(q.half_spread) || !(q.vol > 0) ||
+                    !std::isfinite(q.vol);
+           });
+  };
   if (slices.empty() || std::any_of(slices.begin(), slices.end(), empty))
     return Failure{Fault::not_enough_data, "backbone", "every slice needs a quote"};
+  if (std::any_of(slices.begin(), slices.end(), unusable))
+    return Failure{Fault::not_enough_data, "backbone", "a quote or a time is not a number"};
 
   const Problem problem(slices, options);
   const Box box(slices.size());

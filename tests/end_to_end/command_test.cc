@@ -138,6 +138,45 @@ TEST_F(Command, ChainWithNoUsableQuoteIsRefusedAndTheOtherPublished) {
             std::string::npos);
 }
 
+// One stray call-put pair took the forward of its expiry with it.
+TEST_F(Command, StrayPairDoesNotMoveTheForward) {
+  for (const std::string strike : {"60", "102.5", "150", "400"}) {
+    const auto ran = build(kHeader + sound_chain("SANDPR") + "SANDPR,2031-06-20," + strike +
+                           ",C,0.01,0.05\nSANDPR,2031-06-20," + strike + ",P,0.01,0.05\n");
+    ASSERT_LE(ran.status, 3) << ran.err;
+    const auto forwards = read_table(folder() / "forwards.csv");
+    // The chain's forward is 100, its spreads one percent of a price of four.
+    EXPECT_NEAR(std::stod(forwards.at(0).at("forward")), 100, 0.1) << strike;
+    EXPECT_NEAR(std::stod(forwards.at(0).at("zero_rate")), 0, 0.01) << strike;
+  }
+}
+
+// A dropped row between call and put hid the pair, and the expiry with it.
+TEST_F(Command, StaleRowBesideASoundPairDoesNotHideIt) {
+  std::string text = "underlying,expiry,strike,put_call,bid,ask,multiplier\n";
+  std::string rows = sound_chain("SANDPR");
+  for (std::size_t at = 0, end; (end = rows.find('\n', at)) != std::string::npos; at = end + 1)
+    text += rows.substr(at, end - at) + ",100\n";
+  for (int strike = 80; strike <= 120; strike += 5)
+    text += "SANDPR,2031-06-20," + std::to_string(strike) + ",C,1,2,37\n";
+  EXPECT_EQ(build(text).status, 0);
+}
+
+TEST_F(Command, MorningAndAfternoonOfOneDateStayApart) {
+  std::string text = "underlying,expiry,strike,put_call,bid,ask,settlement\n";
+  for (const char* word : {"A.M.", "PM"}) {
+    std::string rows = sound_chain("SANDPR");
+    for (std::size_t at = 0, end; (end = rows.find('\n', at)) != std::string::npos; at = end + 1)
+      text += rows.substr(at, end - at) + "," + word + "\n";
+  }
+  build(text);
+  EXPECT_EQ(read_table(folder() / "forwards.csv").size(), 2u);
+}
+
+TEST_F(Command, FooterThatIsNoContractDoesNotMakeAnUnderlying) {
+  EXPECT_EQ(build(kHeader + sound_chain("SANDPR") + "Total rows 18,,,,,\n").status, 0);
+}
+
 TEST_F(Command, ARunThatMarksNothingLeavesTheGoodOneOfThatNight) {
   ASSERT_EQ(build(kHeader + sound_chain("SANDPR")).status, 0);
   const auto good = slurp(folder() / "grid.csv");
@@ -162,9 +201,13 @@ TEST_F(Command, UnknownOptionAndNoCommandAreUsage) {
   EXPECT_EQ(duskgrid({"ponder"}).status, 64);
 }
 
-TEST_F(Command, UnknownZoneIsConfiguration) {
+TEST_F(Command, UnknownZoneIsUsageOnTheCommandLineAndConfigurationInItsFile) {
+  EXPECT_EQ(build_config("as_of = \"2031-03-14\"\nzone = \"Atlantis/Harbour\"\n[[source]]\n"
+                         "files = [\"quotes.csv\"]\n")
+                .status,
+            78);
   const auto ran = build(kHeader + sound_chain("SANDPR"), {"--zone", "Atlantis/Harbour"});
-  EXPECT_EQ(ran.status, 78);
+  EXPECT_EQ(ran.status, 64);
   expect_one_message(ran, "Atlantis/Harbour");
 }
 

@@ -2,6 +2,7 @@
 
 #include <gtest/gtest.h>
 
+#include <algorithm>
 #include <cmath>
 #include <random>
 
@@ -200,6 +201,49 @@ TEST(ForwardSource, WordsAreThoseOfTheFile) {
   EXPECT_EQ(word(ForwardSource::given), "given");
   EXPECT_EQ(word(ForwardSource::curve), "curve");
   EXPECT_EQ(word(ForwardSource::carried), "carried");
+}
+
+// A pair far out whose put copies another price used to turn the discount of its expiry, and by the
+// common rate that of others.
+TEST(EstimateForwards, FarStrayPairTurnsNeitherRateNorForward) {
+  Made made;
+  const ExpiryPairs clean = made_pairs(made);
+  ExpiryPairs stray = clean;
+  // Call 0.01 at 0.03, put 50.0 at 50.1 at twice the forward.
+  stray.pairs.push_back({2 * made.forward, 0.01 - 50.1, 0.03 - 50.0, 50.07});
+  const auto without = estimate_forwards(std::vector{clean}, {}, {});
+  const auto with = estimate_forwards(std::vector{stray}, {}, {});
+  ASSERT_TRUE(without[0] && with[0]);
+  // One pair more moves the median by a rank, and with it the choice of the twelfth nearest pair.
+  const double a_rank = made.half_spread / 1000;
+  EXPECT_NEAR(with[0]->forward, without[0]->forward, a_rank);
+  EXPECT_NEAR(with[0]->zero_rate, without[0]->zero_rate, kRounding);
+}
+
+TEST(EstimateForwards, TightStrayPairNearZeroDoesNotBecomeTheForward) {
+  Made made;
+  for (const double strike : {0.6, 1.02, 1.5, 4.0, 1e9}) {
+    ExpiryPairs stray = made_pairs(made);
+    stray.pairs.push_back({strike * made.forward, 0.01 - 0.05, 0.05 - 0.01, 0.06});
+    std::sort(stray.pairs.begin(), stray.pairs.end(),
+              [](const auto& a, const auto& b) { return a.strike < b.strike; });
+    const auto found = estimate_forwards(std::vector{stray}, {}, {});
+    ASSERT_TRUE(found[0]);
+    EXPECT_NEAR(found[0]->forward, made.forward, made.half_spread) << strike;
+  }
+}
+
+TEST(EstimateForwards, SilentExpiriesTakeTheCarryOfTheNearestThatSpeaks) {
+  // Times 1 and 4 have forwards, 2 and 2.9 nothing: 2.9 is nearer to 4.
+  std::vector<ExpiryPairs> expiries(4);
+  const double times[] = {1, 2, 2.9, 4};
+  for (int i = 0; i < 4; ++i) expiries[i].year_fraction = times[i];
+  const double early = 0.02, late = 0.08;
+  expiries[0].given_forward = 100 * std::exp(-early * 1);
+  expiries[3].given_forward = 100 * std::exp(-late * 4);
+  const auto found = estimate_forwards(expiries, {100.0, {}, *ZeroCurve::make({{1.0, 0.0}})}, {});
+  EXPECT_NEAR(*found[1]->carry, early, kRounding);
+  EXPECT_NEAR(*found[2]->carry, late, kRounding);
 }
 
 }  // namespace
