@@ -160,6 +160,24 @@ TEST_F(DemoNight, RemadeFromItsSeedItIsTheSame) {
   EXPECT_GE(files, 8u);
 }
 
+TEST_F(DemoNight, TheLinesShownInTheReadmeAreThoseOfTheNight) {
+  const std::string grid = slurp(folder() / "grid.csv"), ledger = slurp(folder() / "ledger.csv");
+  std::ifstream readme(fs::path(DUSKGRID_SOURCE_DIR) / "README.md");
+  int shown = 0;
+  for (std::string line; std::getline(readme, line);) {
+    if (line.rfind("2031-03-14T16:00:00-05:00,", 0) == 0) {
+      EXPECT_NE(grid.find(line + "\n"), std::string::npos) << line;
+      ++shown;
+    }
+    // The file is named as it was on the command line: the rest of the line is compared.
+    if (line.rfind("data/demo_night/", 0) == 0) {
+      EXPECT_NE(ledger.find(line.substr(line.find(',')) + "\n"), std::string::npos) << line;
+      ++shown;
+    }
+  }
+  EXPECT_EQ(shown, 4);
+}
+
 TEST_F(DemoNight, MissIsZeroJustInsideTheSpread) {
   for (const auto& row : read_table(folder() / "ledger.csv")) {
     if (row.at("state") != "used") continue;
