@@ -115,7 +115,10 @@ TEST(InvertNormalised, IsWithinFourUlpTimesTheConditionOfTheProblem) {
   const Points points = drawn_points(static_cast<std::size_t>(::duskgrid::pricing::points()));
   std::vector<double> found(points.x.size());
   invert_normalised(points.x, points.beta, found);
-  std::map<std::string, double> worst;
+  struct Worst {
+    double error = 0, x = 0, s = 0;
+  };
+  std::map<std::string, Worst> worst;
   for (std::size_t i = 0; i < found.size(); ++i) {
     const double x = points.x[i], beta = points.beta[i];
     ASSERT_TRUE(std::isfinite(found[i]) && found[i] > 0) << x << ' ' << points.s[i];
@@ -128,11 +131,12 @@ TEST(InvertNormalised, IsWithinFourUlpTimesTheConditionOfTheProblem) {
     const double error =
         static_cast<double>(abs(found[i] / exact - 1)) / (kEps * condition(x, exact, at));
     EXPECT_LE(error, kPromised) << "x " << x << " s " << points.s[i] << " seed " << kSeed;
-    double& so_far = worst[region(x, points.s[i])];
-    so_far = std::max(so_far, error);
+    Worst& so_far = worst[region(x, points.s[i])];
+    if (error > so_far.error) so_far = {error, x, points.s[i]};
   }
-  for (const auto& [where, error] : worst)
-    std::cout << where << ": worst " << error << " ulp x condition\n";
+  for (const auto& [where, w] : worst)
+    std::cout << where << ": worst " << w.error << " ulp x condition at x " << w.x << ", s " << w.s
+              << '\n';
   std::cout << found.size() << " points\n";
 }
 
