@@ -101,7 +101,8 @@ class SliceSelection {
 
   Quote& at(std::size_t i) { return table_.quotes[rows_[i]]; }
 
-  // Rows come by strike, call before put: a strike has one or two.
+  // Rows come by strike, call before put: a strike has one or two, and more where dropped rows
+  // repeat it.
   void choose_sides() {
     for (std::size_t i = 0; i < rows_.size();) {
       std::size_t end = i + 1;
