@@ -29,7 +29,7 @@ std::vector<Stage> stages_of(const surface::Surface& surface) {
   const auto add = [&](double t, quotes::Instant expiry) {
     const auto carried = surface::carried_at(surface, t);
     out.push_back(
-        {t, expiry, surface::smile_at_time(surface, t), carried.forward, carried.discount_factor});
+        {t, expiry, surface::TimedSmile(surface, t), carried.forward, carried.discount_factor});
   };
   for (std::size_t i = 0; i < surface.slices.size(); ++i) {
     const auto& s = surface.slices[i];
@@ -42,14 +42,19 @@ std::vector<Stage> stages_of(const surface::Surface& surface) {
   return out;
 }
 
+double durrleman_at(const surface::TimedSmile& smile, double k) {
+  const auto p = smile.at(k);
+  return surface::durrleman({p.w, p.dw_dk, p.d2w_dk2}, k);
+}
+
 double call_price(const Stage& stage, double k) {
   const double strike = stage.forward * std::exp(k);
   return pricing::black_price({PutCall::call, stage.forward, strike, stage.discount_factor},
-                              std::sqrt(surface::point_at(stage.smile, k).w));
+                              std::sqrt(stage.smile.at(k).w));
 }
 
 double vol_points(const Stage& stage, double k, double amount) {
-  const double vol = std::sqrt(surface::point_at(stage.smile, k).w / stage.t);
+  const double vol = std::sqrt(stage.smile.at(k).w / stage.t);
   const double vega = pricing::black_greeks({PutCall::call, stage.forward,
                                              stage.forward * std::exp(k), stage.discount_factor},
                                             vol, stage.t)
@@ -97,7 +102,7 @@ Violation calendar_at(const Stage& early, const Stage& late, double k) {
 class Checker {
  public:
   Checker(const surface::Surface& surface, const SurfaceCheckOptions& options)
-      : stages_(stages_of(surface)), points_(std::max(options.points, 3)) {
+      : surface_(surface), stages_(stages_of(surface)), points_(std::max(options.points, 3)) {
     double low = 0, high = 0, widest = 0;
     for (const auto& s : surface.slices) {
       low = std::min(low, s.k_low);
@@ -111,7 +116,7 @@ class Checker {
   SurfaceCheck run() {
     for (std::size_t i = 0; i < stages_.size(); ++i) {
       check_butterflies(stages_[i]);
-      check_wings(stages_[i]);
+      if (i % 2 == 0) check_wings(stages_[i], surface_.slices[i / 2].backbone);
       if (i > 0) check_calendar(stages_[i - 1], stages_[i]);
     }
     return std::move(out_);
@@ -139,23 +144,20 @@ class Checker {
 
   void check_butterflies(const Stage& stage) {
     const double least =
-        scan([&](double k) { return surface::durrleman(surface::point_at(stage.smile, k), k); },
+        scan([&](double k) { return durrleman_at(stage.smile, k); },
              [&](double k) { out_.violations.push_back(butterfly_at(stage, k, step_)); });
     out_.least_durrleman = std::min(out_.least_durrleman, least);
   }
 
   void check_calendar(const Stage& early, const Stage& late) {
-    const double least = scan(
-        [&](double k) {
-          return surface::point_at(late.smile, k).w - surface::point_at(early.smile, k).w;
-        },
-        [&](double k) { out_.violations.push_back(calendar_at(early, late, k)); });
+    const double least =
+        scan([&](double k) { return late.smile.at(k).w - early.smile.at(k).w; },
+             [&](double k) { out_.violations.push_back(calendar_at(early, late, k)); });
     out_.least_calendar_step = std::min(out_.least_calendar_step, least);
   }
 
   // Lee 2004: w grows by no more than 2 |k| in either wing; here the slopes are psi (1 +- rho) / 2.
-  void check_wings(const Stage& stage) {
-    const auto& p = stage.smile.parameters;
+  void check_wings(const Stage& stage, const surface::SliceParameters& p) {
     if (0.5 * p.psi * (1 + std::abs(p.rho)) <= 2) return;
     const double k = p.rho > 0 ? low_ + step_ * (points_ - 1) : low_;
     Violation v = butterfly_at(stage, k, step_);
@@ -163,7 +165,8 @@ class Checker {
     out_.violations.push_back(std::move(v));
   }
 
-  std::vector<Stage> stages_;
+  const surface::Surface& surface_;
+  std::vector<Stage> stages_;  // every second one is a slice
   int points_;
   double low_, step_;
   SurfaceCheck out_{{}, kInfinity, kInfinity};

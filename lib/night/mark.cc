@@ -225,7 +225,7 @@ class Marker {
       for (const auto row : fitted_[i]->rows->rows) {
         Quote& q = quote(row);
         const double k = k_of(q, *fitted_[i]);
-        q.vol_fit = std::sqrt(surface::smile_at(slice.backbone, k).w / slice.year_fraction);
+        q.vol_fit = std::sqrt(surface::smile_of(slice, k).w / slice.year_fraction);
         if (!std::isfinite(q.vol_fit)) q.vol_fit = quotes::kAbsent;
         if (q.reason != Reason::none) continue;
         q.miss = miss_of(q);

@@ -60,12 +60,12 @@ struct Node {
 class TimedAxis {
  public:
   TimedAxis(const surface::Surface& surface, const When& when, Axis axis)
-      : smile_(surface::smile_at_time(surface, when.year_fraction)),
+      : smile_(surface, when.year_fraction),
         forward_(when.forward),
         axis_(axis),
         at_the_money_(total_vol(0)) {}
 
-  double total_vol(double k) const { return std::sqrt(surface::point_at(smile_, k).w); }
+  double total_vol(double k) const { return std::sqrt(smile_.at(k).w); }
 
   std::optional<double> k_of(double point) const {
     switch (axis_) {

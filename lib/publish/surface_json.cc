@@ -8,7 +8,13 @@ namespace {
 
 using nlohmann::ordered_json;
 
-constexpr const char* kForm = "duskgrid-surface/1";
+constexpr const char* kForm = "duskgrid-surface/2";
+
+constexpr double kMostYears = 1e6;
+
+struct Refusal {
+  std::string why;
+};
 
 ordered_json slice_to_json(const surface::Slice& s, const quotes::Clock& clock) {
   ordered_json out;
@@ -21,12 +27,28 @@ ordered_json slice_to_json(const surface::Slice& s, const quotes::Clock& clock) 
   out["psi"] = s.backbone.psi;
   out["k_low"] = s.k_low;
   out["k_high"] = s.k_high;
+  out["knots"] = s.overlay.knots;
+  out["coefficients"] = s.overlay.coefficients;
+  out["to_next"] = surface::word(s.to_next);
   return out;
 }
 
 // The library would also make a number of true and false.
 double number_of(const ordered_json& in) {
   return in.is_number() ? in.get<double>() : quotes::kAbsent;
+}
+
+std::vector<double> numbers_of(const ordered_json& in) {
+  std::vector<double> out;
+  for (const auto& item : in) out.push_back(number_of(item));
+  return out;
+}
+
+surface::Between rule_of(const ordered_json& in) {
+  const auto text = in.get<std::string>();
+  for (const auto rule : {surface::Between::variance, surface::Between::price})
+    if (surface::word(rule) == text) return rule;
+  throw Refusal{"to_next is neither variance nor price"};
 }
 
 surface::Slice slice_from_json(const ordered_json& in, const quotes::Clock& clock) {
@@ -40,6 +62,8 @@ surface::Slice slice_from_json(const ordered_json& in, const quotes::Clock& cloc
   s.backbone = {number("theta"), number("rho"), number("psi")};
   s.k_low = number("k_low");
   s.k_high = number("k_high");
+  s.overlay = {numbers_of(in.at("knots")), numbers_of(in.at("coefficients"))};
+  s.to_next = rule_of(in.at("to_next"));
   return s;
 }
 
@@ -61,8 +85,11 @@ std::string problem_of(const surface::Surface& surface) {
       return "theta must be > 0, rho between -1 and 1, psi >= 0";
     if (!std::isfinite(s.k_low) || !std::isfinite(s.k_high) || s.k_low > s.k_high)
       return "k_low must not be above k_high";
+    if (const auto problem = s.overlay.problem()) return *problem;
     previous = s.year_fraction;
   }
+  if (!std::isfinite(surface.horizon) || surface.horizon < 0 || surface.horizon > kMostYears)
+    return "horizon must be a number of years";
   return {};
 }
 
@@ -75,6 +102,7 @@ std::string surface_to_json(const StoredSurface& stored) {
   out["underlying"] = stored.surface.underlying;
   out["as_of"] = quotes::format_instant(clock, stored.as_of.instant);
   out["spot"] = stored.surface.spot ? ordered_json(*stored.surface.spot) : ordered_json(nullptr);
+  out["horizon"] = stored.surface.horizon;
   out["slices"] = ordered_json::array();
   for (const auto& s : stored.surface.slices) out["slices"].push_back(slice_to_json(s, clock));
   return out.dump(1) + "\n";
@@ -93,12 +121,15 @@ Result<StoredSurface> surface_from_json(std::string_view text, const std::string
     StoredSurface stored{*as_of, {}};
     stored.surface.underlying = in.at("underlying").get<std::string>();
     if (!in.at("spot").is_null()) stored.surface.spot = number_of(in.at("spot"));
+    stored.surface.horizon = number_of(in.at("horizon"));
     for (const auto& s : in.at("slices"))
       stored.surface.slices.push_back(slice_from_json(s, as_of->clock));
     if (const auto problem = problem_of(stored.surface); !problem.empty()) return refuse(problem);
     return stored;
   } catch (const nlohmann::json::exception& error) {
     return refuse(error.what());
+  } catch (const Refusal& refusal) {
+    return refuse(refusal.why);
   }
 }
 

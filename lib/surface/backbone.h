@@ -39,6 +39,8 @@ struct FitQuote {
   double k;
   double vol;
   double half_spread;
+  double vol_bid = vol - half_spread;  // where the spread ends; 0 for a bid at intrinsic
+  double vol_ask = vol + half_spread;
 };
 
 struct FitSlice {

@@ -3,6 +3,11 @@
 #include <algorithm>
 #include <cassert>
 #include <cmath>
+#include <limits>
+#include <numbers>
+
+#include "pricing/black.h"
+#include "pricing/invert.h"
 
 namespace duskgrid::surface {
 namespace {
@@ -11,16 +16,6 @@ namespace {
 auto first_not_before(const Surface& surface, double t) {
   return std::lower_bound(surface.slices.begin(), surface.slices.end(), t,
                           [](const Slice& s, double v) { return s.year_fraction < v; });
-}
-
-double between(double a, double b, double weight) { return a + weight * (b - a); }
-
-SliceParameters interpolate(const SliceParameters& a, const SliceParameters& b, double weight) {
-  const double psi = between(a.psi, b.psi, weight);
-  const double rho_psi = between(a.rho * a.psi, b.rho * b.psi, weight);
-  // A flat pair has no correlation to speak of.
-  const double rho = psi > 0 ? rho_psi / psi : between(a.rho, b.rho, weight);
-  return {between(a.theta, b.theta, weight), rho, psi};
 }
 
 // A point of a curve linear in t through (t0, y0) and (t1, y1).
@@ -56,32 +51,125 @@ std::pair<LogCurves, LogCurves> neighbours(const Surface& surface, double t) {
 
 }  // namespace
 
-TimedSmile smile_at_time(const Surface& surface, double t) {
+std::string_view word(Between rule) { return rule == Between::variance ? "variance" : "price"; }
+
+SmilePoint smile_of(const Slice& slice, double k, double shift) {
+  SmilePoint w = smile_at(slice.backbone, k);
+  w.w += shift;
+  if (slice.overlay.empty()) return w;
+  const OverlayPoint u = overlay_at(slice.overlay, k);
+  const double root = std::sqrt(w.w);
+  const double slope = 0.5 * w.dw_dk / root;
+  const double s = root + u.u;
+  const double ds = slope + u.du_dk;
+  const double d2s = 0.5 * (w.d2w_dk2 - 2 * slope * slope) / root + u.d2u_dk2;
+  return {s * s, 2 * s * ds, 2 * (ds * ds + s * d2s)};
+}
+
+SmilePoint TimedSmile::End::at(double k) const {
+  if (!faded) return smile_of(*slice, k);
+  SmilePoint w = smile_at(slice->backbone, k);
+  w.w += shift;
+  return w;
+}
+
+TimedSmile::TimedSmile(const Surface& surface, double t) : t_(t) {
   assert(!surface.slices.empty() && t > 0);
   const auto next = first_not_before(surface, t);
-  if (next == surface.slices.end()) {
-    const Slice& last = surface.slices.back();
-    return {last.backbone, last.backbone.theta * (t / last.year_fraction - 1)};
-  }
-  if (next->year_fraction == t) return {next->backbone, 0};
   if (next == surface.slices.begin()) {
-    const double weight = t / next->year_fraction;
-    return {{weight * next->backbone.theta, next->backbone.rho, weight * next->backbone.psi}, 0};
+    late_ = {&*next, next->year_fraction};
+    return;
   }
   const Slice& previous = *(next - 1);
-  const double weight =
-      (t - previous.year_fraction) / (next->year_fraction - previous.year_fraction);
-  return {interpolate(previous.backbone, next->backbone, weight), 0};
+  if (next != surface.slices.end()) {
+    early_ = {&previous, previous.year_fraction};
+    late_ = {&*next, next->year_fraction};
+  } else if (const double h = std::max(surface.horizon, previous.year_fraction); t < h) {
+    early_ = {&previous, previous.year_fraction};
+    late_ = {&previous, h, previous.backbone.theta * (h / previous.year_fraction - 1), true};
+  } else {
+    // Both ends are the faded slice, a year apart: its growth is all that is left.
+    const double growth = previous.backbone.theta / previous.year_fraction;
+    const double shift = growth * (t - previous.year_fraction);
+    early_ = {&previous, t - 1, shift - growth, true};
+    late_ = {&previous, t, shift, true};
+  }
+  rule_ = late_.faded && early_.faded ? Between::variance : previous.to_next;
+  const double span = late_.t - early_.t;
+  weight_ = (t - early_.t) / span;
+  weight_slope_ = 1 / span;
+  if (rule_ == Between::variance) return;
+  // The undiscounted call at the money over the forward is erf(sqrt(w / 8)).
+  const double first = early_.at(0).w, last = late_.at(0).w;
+  const auto call = [](double w) { return std::erf(std::sqrt(w / 8)); };
+  const double rise = call(last) - call(first);
+  if (!(rise > 0)) return;
+  const double w = std::lerp(first, last, weight_);
+  const double slope = std::exp(-w / 8) / std::sqrt(8 * std::numbers::pi * w);  // of call(w)
+  weight_ = std::clamp((call(w) - call(first)) / rise, 0.0, 1.0);
+  weight_slope_ = slope * (last - first) / (span * rise);
 }
 
-SmilePoint point_at(const TimedSmile& smile, double k) {
-  SmilePoint point = smile_at(smile.parameters, k);
-  point.w += smile.shift;
-  return point;
+SurfacePoint TimedSmile::at(double k) const {
+  const SmilePoint b = late_.at(k);
+  if (!early_.slice) {
+    const double part = t_ / late_.t;
+    return {part * b.w, part * b.dw_dk, part * b.d2w_dk2, b.w / late_.t};
+  }
+  const SmilePoint a = early_.at(k);
+  if (rule_ == Between::price) return mixed(a, b, k);
+  // At an expiry its own bits.
+  const auto mix = [&](double x, double y) { return weight_ == 1 ? y : x + weight_ * (y - x); };
+  return {mix(a.w, b.w), mix(a.dw_dk, b.dw_dk), mix(a.d2w_dk2, b.d2w_dk2),
+          weight_slope_ * (b.w - a.w)};
 }
 
-SmilePoint point_at(const Surface& surface, double k, double t) {
-  return point_at(smile_at_time(surface, t), k);
+// Prices are undiscounted, over the forward, out of the money; n is the standard normal density,
+// and every price and derivative is kept over n(d1) of the mixed smile, so that far wings keep
+// their digits.
+SurfacePoint TimedSmile::mixed(const SmilePoint& a, const SmilePoint& b, double k) const {
+  struct Side {
+    double s, d1, slope, g;  // total vol, d1, ds/dk, Durrleman's function
+    Side(const SmilePoint& p, double at)
+        : s(std::sqrt(p.w)), d1(0.5 * s - at / s), slope(0.5 * p.dw_dk / s), g(durrleman(p, at)) {}
+  };
+  const Side first(a, k), last(b, k);
+  const double x = -std::abs(k);
+  const double early_price = pricing::normalised_price(x, first.s);
+  const double late_price = pricing::normalised_price(x, last.s);
+  const double rise = late_price - early_price;
+  const double price = early_price + weight_ * rise;
+  // Too small for a number: the later smile is what is left.
+  if (!(price > std::numeric_limits<double>::min()) || !(rise > 0))
+    return {b.w, b.dw_dk, b.d2w_dk2, weight_slope_ * (b.w - a.w)};
+  if (weight_ == 1)
+    return {b.w, b.dw_dk, b.d2w_dk2,
+            2 * last.s * weight_slope_ * rise / pricing::normalised_vega(x, last.s)};
+  const double s = pricing::invert_normalised(x, price);
+  const double d1 = 0.5 * s - k / s;
+  // d price / dk = sign e^k N(sign d2) + n(d1) ds/dk, with sign + for puts, which are k < 0.
+  const double sign = k < 0 ? 1 : -1;
+  const auto digital = [&](double d2) {  // e^k N(sign * -d2) / n(d1), by e^k = n(d1) / n(d2)
+    constexpr double kSqrtHalfPi = 1.2533141373155002512;
+    return kSqrtHalfPi * pricing::scaled_erfc(sign * d2 / std::numbers::sqrt2);
+  };
+  const auto relative = [&](const Side& side) {
+    return std::exp(0.5 * (d1 - side.d1) * (d1 + side.d1));
+  };
+  const double pa = (1 - weight_) * relative(first), pb = weight_ * relative(last);
+  const double slope = pa * (sign * digital(first.d1 - first.s) + first.slope) +
+                       pb * (sign * digital(last.d1 - last.s) + last.slope) -
+                       sign * digital(d1 - s);
+  const double g = s * (pa * first.g / first.s + pb * last.g / last.s);
+  const double turn = 1 - k * slope / s;
+  const double curvature = (g - turn * turn + 0.25 * s * s * slope * slope) / s;
+  const double vega = pricing::normalised_vega(x, s);
+  return {s * s, 2 * s * slope, 2 * (slope * slope + s * curvature),
+          2 * s * weight_slope_ * rise / vega};
+}
+
+SurfacePoint point_at(const Surface& surface, double k, double t) {
+  return TimedSmile(surface, t).at(k);
 }
 
 double vol_at(const Surface& surface, double k, double t) {

@@ -144,10 +144,11 @@ TEST(RandomSurfaces, HaveNoButterflyAtOrBetweenOrOutsideTheirSlices) {
     const double last = s.slices.back().year_fraction,
                  reach = 12 * std::sqrt(s.slices.back().backbone.theta);
     for (const double t : {0.03, 0.1, 0.13, 0.17, 0.2, 0.289, 0.4, 0.6, last, 2 * last}) {
-      const TimedSmile smile = smile_at_time(s, t);
+      const TimedSmile smile(s, t);
       for (int j = -400; j <= 400; ++j) {
         const double k = reach * j * std::abs(j) / 160000.0;  // dense near the money
-        const double g = durrleman(point_at(smile, k), k);
+        const SurfacePoint p = smile.at(k);
+        const double g = durrleman({p.w, p.dw_dk, p.d2w_dk2}, k);
         ASSERT_GE(g, -kRounding) << "surface " << i << " t " << t << " k " << k << " seed "
                                  << kSeed + 1;
         least = std::min(least, g);
@@ -165,15 +166,14 @@ TEST(RandomSurfaces, TotalVarianceNeverFallsInTime) {
     const double last = s.slices.back().year_fraction,
                  reach = 12 * std::sqrt(s.slices.back().backbone.theta);
     std::vector<TimedSmile> smiles;
-    for (int m = 1; m <= 40; ++m) smiles.push_back(smile_at_time(s, 1.2 * last * m / 40));
-    for (const Slice& slice : s.slices) smiles.push_back({slice.backbone, 0});
-    std::sort(smiles.begin(), smiles.end(), [](const auto& a, const auto& b) {
-      return a.parameters.theta + a.shift < b.parameters.theta + b.shift;
-    });
+    for (int m = 1; m <= 40; ++m) smiles.emplace_back(s, 1.2 * last * m / 40);
+    for (const Slice& slice : s.slices) smiles.emplace_back(s, slice.year_fraction);
+    std::sort(smiles.begin(), smiles.end(),
+              [](const auto& a, const auto& b) { return a.year_fraction() < b.year_fraction(); });
     for (int j = -100; j <= 100; ++j) {
       const double k = reach * j * std::abs(j) / 10000.0;
       for (std::size_t m = 1; m < smiles.size(); ++m) {
-        const double before = point_at(smiles[m - 1], k).w, after = point_at(smiles[m], k).w;
+        const double before = smiles[m - 1].at(k).w, after = smiles[m].at(k).w;
         ASSERT_GE(after, before * (1 - kRounding))
             << "surface " << i << " k " << k << " seed " << kSeed + 2;
         least = std::min(least, after / before - 1);

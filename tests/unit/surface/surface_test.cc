@@ -20,20 +20,26 @@ Surface made(std::optional<double> spot = 100) {
 
 TEST(SmileAtTime, AtASliceIsTheSlice) {
   const Surface s = made();
-  for (const Slice& slice : s.slices) {
-    const TimedSmile smile = smile_at_time(s, slice.year_fraction);
-    EXPECT_EQ(smile.parameters.theta, slice.backbone.theta);
-    EXPECT_EQ(smile.parameters.rho, slice.backbone.rho);
-    EXPECT_EQ(smile.parameters.psi, slice.backbone.psi);
-    EXPECT_EQ(smile.shift, 0);
-  }
+  for (const Slice& slice : s.slices)
+    for (const double k : {-0.7, 0.0, 0.4}) {
+      const SurfacePoint point = point_at(s, k, slice.year_fraction);
+      const SmilePoint own = smile_at(slice.backbone, k);
+      EXPECT_EQ(point.w, own.w);
+      EXPECT_EQ(point.dw_dk, own.dw_dk);
+      EXPECT_EQ(point.d2w_dk2, own.d2w_dk2);
+    }
 }
 
-TEST(SmileAtTime, HalfWayBetweenSlicesThetaPsiAndRhoPsiAreMeans) {
-  const TimedSmile smile = smile_at_time(made(), 0.5);
-  EXPECT_DOUBLE_EQ(smile.parameters.theta, 0.02);
-  EXPECT_DOUBLE_EQ(smile.parameters.psi, 0.2);
-  EXPECT_DOUBLE_EQ(smile.parameters.rho * smile.parameters.psi, 0.5 * (-0.075 - 0.1));
+TEST(SmileAtTime, BetweenSlicesTotalVarianceIsLinearInTime) {
+  const Surface s = made();
+  for (const double k : {-0.7, 0.0, 0.4}) {
+    const SmilePoint a = smile_at(s.slices[0].backbone, k), b = smile_at(s.slices[1].backbone, k);
+    const SurfacePoint half = point_at(s, k, 0.5);
+    EXPECT_DOUBLE_EQ(half.w, 0.5 * (a.w + b.w));
+    EXPECT_DOUBLE_EQ(half.dw_dk, 0.5 * (a.dw_dk + b.dw_dk));
+    EXPECT_DOUBLE_EQ(half.d2w_dk2, 0.5 * (a.d2w_dk2 + b.d2w_dk2));
+    EXPECT_DOUBLE_EQ(half.dw_dt, (b.w - a.w) / 0.5);
+  }
 }
 
 TEST(SmileAtTime, VarianceIsContinuousAcrossSlices) {
@@ -56,7 +62,7 @@ TEST(SmileAtTime, BeforeTheFirstSliceItsVolatilitiesHold) {
 TEST(SmileAtTime, AfterTheLastSliceEveryStrikeGainsTheSameVariance) {
   const Surface s = made();
   for (const double k : {-1.0, 0.0, 0.7}) {
-    const SmilePoint last = point_at(s, k, 2.0), later = point_at(s, k, 3.0);
+    const SurfacePoint last = point_at(s, k, 2.0), later = point_at(s, k, 3.0);
     EXPECT_NEAR(later.w - last.w, 0.09 / 2, kRounding) << k;
     EXPECT_EQ(later.dw_dk, last.dw_dk) << k;
     EXPECT_EQ(later.d2w_dk2, last.d2w_dk2) << k;
