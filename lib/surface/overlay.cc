@@ -8,9 +8,9 @@ namespace duskgrid::surface {
 namespace {
 
 constexpr std::size_t kDegree = 3;
+constexpr std::size_t kLeastKnots = 6;
 
-// Knots with the missing neighbours past the ends mirrored in: functions that reach there do not
-// take part, but the recursion passes through them.
+// Knots, mirrored past the ends.
 double knot(const std::vector<double>& knots, std::ptrdiff_t i) {
   const auto n = static_cast<std::ptrdiff_t>(knots.size());
   if (i < 0) return 2 * knots.front() - knots[static_cast<std::size_t>(-i)];
@@ -21,7 +21,10 @@ double knot(const std::vector<double>& knots, std::ptrdiff_t i) {
 }  // namespace
 
 BasisPoint basis_at(const std::vector<double>& knots, double k) {
-  assert(knots.size() > kDegree + 1);
+  assert(knots.size() >= kLeastKnots);
+  const auto end = static_cast<std::ptrdiff_t>(knots.size()) - 2;  // coefficients
+  if (!(k > knots.front())) return {0, {1}, {}, {}};
+  if (!(k < knots.back())) return {end - 4, {0, 0, 0, 1}, {}, {}};
   const auto above = std::upper_bound(knots.begin(), knots.end() - 1, k);
   const auto interval = std::max<std::ptrdiff_t>(above - knots.begin(), 1) - 1;
   std::array<double, kDegree> left{}, right{};
@@ -53,27 +56,29 @@ BasisPoint basis_at(const std::vector<double>& knots, double k) {
     }
     return out;
   };
-  BasisPoint point{interval - static_cast<std::ptrdiff_t>(kDegree), n[3], lowered(n[2], 3),
-                   lowered(lowered(n[1], 2), 3)};
-  const auto count = static_cast<std::ptrdiff_t>(knots.size()) - 4;
+  // The function r here is the one that starts at knot interval - 3 + r, which takes the
+  // coefficient one further on, or the nearest there is.
+  const std::array<std::array<double, 4>, 3> alive{n[3], lowered(n[2], 3),
+                                                   lowered(lowered(n[1], 2), 3)};
+  const auto last = static_cast<std::ptrdiff_t>(knots.size()) - 3;
+  BasisPoint point{std::clamp<std::ptrdiff_t>(interval - 2, 0, last - 3), {}, {}, {}};
   for (std::size_t r = 0; r < 4; ++r) {
-    const auto i = point.first + static_cast<std::ptrdiff_t>(r);
-    if (i >= 0 && i < count) continue;
-    point.value[r] = point.slope[r] = point.curvature[r] = 0;
+    const auto i =
+        std::clamp<std::ptrdiff_t>(interval - 2 + static_cast<std::ptrdiff_t>(r), 0, last);
+    const auto at = static_cast<std::size_t>(i - point.first);
+    point.value[at] += alive[0][r];
+    point.slope[at] += alive[1][r];
+    point.curvature[at] += alive[2][r];
   }
   return point;
 }
 
 OverlayPoint overlay_at(const Overlay& overlay, double k) {
-  if (overlay.empty() || !(k > overlay.knots.front()) || !(k < overlay.knots.back()))
-    return {0, 0, 0};
+  if (overlay.empty()) return {0, 0, 0};
   const BasisPoint basis = basis_at(overlay.knots, k);
   OverlayPoint point{0, 0, 0};
-  const auto count = static_cast<std::ptrdiff_t>(overlay.coefficients.size());
   for (std::size_t r = 0; r < 4; ++r) {
-    const auto i = basis.first + static_cast<std::ptrdiff_t>(r);
-    if (i < 0 || i >= count) continue;
-    const double c = overlay.coefficients[static_cast<std::size_t>(i)];
+    const double c = overlay.coefficients[static_cast<std::size_t>(basis.first) + r];
     point.u += c * basis.value[r];
     point.du_dk += c * basis.slope[r];
     point.d2u_dk2 += c * basis.curvature[r];
@@ -83,8 +88,8 @@ OverlayPoint overlay_at(const Overlay& overlay, double k) {
 
 std::optional<std::string> Overlay::problem() const {
   if (knots.empty() && coefficients.empty()) return std::nullopt;
-  if (knots.size() < kDegree + 2 || coefficients.size() != knots.size() - kDegree - 1)
-    return "an overlay has 5 knots or more, and 4 fewer coefficients";
+  if (knots.size() < kLeastKnots || coefficients.size() != knots.size() - 2)
+    return "an overlay has 6 knots or more, and 2 fewer coefficients";
   for (std::size_t i = 0; i < knots.size(); ++i)
     if (!std::isfinite(knots[i]) || (i > 0 && !(knots[i] > knots[i - 1])))
       return "the knots of an overlay increase";

@@ -58,12 +58,7 @@ SmilePoint smile_of(const Slice& slice, double k, double shift) {
   w.w += shift;
   if (slice.overlay.empty()) return w;
   const OverlayPoint u = overlay_at(slice.overlay, k);
-  const double root = std::sqrt(w.w);
-  const double slope = 0.5 * w.dw_dk / root;
-  const double s = root + u.u;
-  const double ds = slope + u.du_dk;
-  const double d2s = 0.5 * (w.d2w_dk2 - 2 * slope * slope) / root + u.d2u_dk2;
-  return {s * s, 2 * s * ds, 2 * (ds * ds + s * d2s)};
+  return {w.w + u.u, w.dw_dk + u.du_dk, w.d2w_dk2 + u.d2u_dk2};
 }
 
 SmilePoint TimedSmile::End::at(double k) const {

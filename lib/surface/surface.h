@@ -41,8 +41,7 @@ struct Surface {
   double horizon = 0;
 };
 
-// Total variance of a slice and its derivatives in k: the square of sqrt(w of the backbone +
-// shift) + overlay.
+// Total variance of a slice, backbone + shift + overlay, and its derivatives in k.
 SmilePoint smile_of(const Slice& slice, double k, double shift = 0);
 
 struct SurfacePoint {
