@@ -10,8 +10,6 @@ using nlohmann::ordered_json;
 
 constexpr const char* kForm = "duskgrid-surface/2";
 
-constexpr double kMostYears = 1e6;
-
 struct Refusal {
   std::string why;
 };
@@ -88,8 +86,6 @@ std::string problem_of(const surface::Surface& surface) {
     if (const auto problem = s.overlay.problem()) return *problem;
     previous = s.year_fraction;
   }
-  if (!std::isfinite(surface.horizon) || surface.horizon < 0 || surface.horizon > kMostYears)
-    return "horizon must be a number of years";
   return {};
 }
 
@@ -102,7 +98,6 @@ std::string surface_to_json(const StoredSurface& stored) {
   out["underlying"] = stored.surface.underlying;
   out["as_of"] = quotes::format_instant(clock, stored.as_of.instant);
   out["spot"] = stored.surface.spot ? ordered_json(*stored.surface.spot) : ordered_json(nullptr);
-  out["horizon"] = stored.surface.horizon;
   out["slices"] = ordered_json::array();
   for (const auto& s : stored.surface.slices) out["slices"].push_back(slice_to_json(s, clock));
   return out.dump(1) + "\n";
@@ -121,7 +116,6 @@ Result<StoredSurface> surface_from_json(std::string_view text, const std::string
     StoredSurface stored{*as_of, {}};
     stored.surface.underlying = in.at("underlying").get<std::string>();
     if (!in.at("spot").is_null()) stored.surface.spot = number_of(in.at("spot"));
-    stored.surface.horizon = number_of(in.at("horizon"));
     for (const auto& s : in.at("slices"))
       stored.surface.slices.push_back(slice_from_json(s, as_of->clock));
     if (const auto problem = problem_of(stored.surface); !problem.empty()) return refuse(problem);

@@ -32,7 +32,6 @@ struct FittedSlice {
 
 struct SurfaceFit {
   std::vector<FittedSlice> slices;  // as many as given, in order
-  double horizon;                   // years; see Surface::horizon
   FitEnd end;                       // of the backbone
   bool settled;                     // false: the overlay did not settle and was given up
 };

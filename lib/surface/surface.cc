@@ -53,49 +53,32 @@ std::pair<LogCurves, LogCurves> neighbours(const Surface& surface, double t) {
 
 std::string_view word(Between rule) { return rule == Between::variance ? "variance" : "price"; }
 
-SmilePoint smile_of(const Slice& slice, double k, double shift) {
-  SmilePoint w = smile_at(slice.backbone, k);
-  w.w += shift;
+SmilePoint smile_of(const Slice& slice, double k) {
+  const SmilePoint w = smile_at(slice.backbone, k);
   if (slice.overlay.empty()) return w;
   const OverlayPoint u = overlay_at(slice.overlay, k);
   return {w.w + u.u, w.dw_dk + u.du_dk, w.d2w_dk2 + u.d2u_dk2};
 }
 
-SmilePoint TimedSmile::End::at(double k) const {
-  if (!faded) return smile_of(*slice, k);
-  SmilePoint w = smile_at(slice->backbone, k);
-  w.w += shift;
-  return w;
-}
-
 TimedSmile::TimedSmile(const Surface& surface, double t) : t_(t) {
   assert(!surface.slices.empty() && t > 0);
   const auto next = first_not_before(surface, t);
-  if (next == surface.slices.begin()) {
-    late_ = {&*next, next->year_fraction};
+  if (next == surface.slices.end()) {
+    late_ = &surface.slices.back();
+    growth_ = smile_of(*late_, 0).w / late_->year_fraction;
+    shift_ = growth_ * (t - late_->year_fraction);
     return;
   }
-  const Slice& previous = *(next - 1);
-  if (next != surface.slices.end()) {
-    early_ = {&previous, previous.year_fraction};
-    late_ = {&*next, next->year_fraction};
-  } else if (const double h = std::max(surface.horizon, previous.year_fraction); t < h) {
-    early_ = {&previous, previous.year_fraction};
-    late_ = {&previous, h, previous.backbone.theta * (h / previous.year_fraction - 1), true};
-  } else {
-    // Both ends are the faded slice, a year apart: its growth is all that is left.
-    const double growth = previous.backbone.theta / previous.year_fraction;
-    const double shift = growth * (t - previous.year_fraction);
-    early_ = {&previous, t - 1, shift - growth, true};
-    late_ = {&previous, t, shift, true};
-  }
-  rule_ = late_.faded && early_.faded ? Between::variance : previous.to_next;
-  const double span = late_.t - early_.t;
-  weight_ = (t - early_.t) / span;
+  late_ = &*next;
+  if (next == surface.slices.begin()) return;
+  early_ = &*(next - 1);
+  rule_ = early_->to_next;
+  const double span = late_->year_fraction - early_->year_fraction;
+  weight_ = (t - early_->year_fraction) / span;
   weight_slope_ = 1 / span;
   if (rule_ == Between::variance) return;
   // The undiscounted call at the money over the forward is erf(sqrt(w / 8)).
-  const double first = early_.at(0).w, last = late_.at(0).w;
+  const double first = smile_of(*early_, 0).w, last = smile_of(*late_, 0).w;
   const auto call = [](double w) { return std::erf(std::sqrt(w / 8)); };
   const double rise = call(last) - call(first);
   if (!(rise > 0)) return;
@@ -106,12 +89,13 @@ TimedSmile::TimedSmile(const Surface& surface, double t) : t_(t) {
 }
 
 SurfacePoint TimedSmile::at(double k) const {
-  const SmilePoint b = late_.at(k);
-  if (!early_.slice) {
-    const double part = t_ / late_.t;
-    return {part * b.w, part * b.dw_dk, part * b.d2w_dk2, b.w / late_.t};
+  const SmilePoint b = smile_of(*late_, k);
+  if (growth_ > 0) return {b.w + shift_, b.dw_dk, b.d2w_dk2, growth_};
+  if (!early_) {
+    const double part = t_ / late_->year_fraction;
+    return {part * b.w, part * b.dw_dk, part * b.d2w_dk2, b.w / late_->year_fraction};
   }
-  const SmilePoint a = early_.at(k);
+  const SmilePoint a = smile_of(*early_, k);
   if (rule_ == Between::price) return mixed(a, b, k);
   // At an expiry its own bits.
   const auto mix = [&](double x, double y) { return weight_ == 1 ? y : x + weight_ * (y - x); };

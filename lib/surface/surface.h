@@ -29,20 +29,17 @@ struct Slice {
   SliceParameters backbone;
   double k_low, k_high;  // range of the used quotes, log-moneyness
   Overlay overlay = {};
-  Between to_next = Between::variance;  // of the last slice: up to the horizon
+  Between to_next = Between::variance;  // of no meaning at the last slice
 };
 
 struct Surface {
   std::string underlying;
   std::optional<double> spot;
   std::vector<Slice> slices;  // by year_fraction, increasing; at least one
-  // From this time on the last slice's overlay has faded; years, not below the last slice's.
-  // 0 means at the last slice.
-  double horizon = 0;
 };
 
-// Total variance of a slice, backbone + shift + overlay, and its derivatives in k.
-SmilePoint smile_of(const Slice& slice, double k, double shift = 0);
+// Total variance of a slice, backbone and overlay, and its derivatives in k.
+SmilePoint smile_of(const Slice& slice, double k);
 
 struct SurfacePoint {
   double w;  // total variance
@@ -55,9 +52,8 @@ struct SurfacePoint {
 // - Between two slices: as the earlier slice's `to_next` says. Under the price rule the weights are
 //   such that total variance at the money is linear in time.
 // - Before the first: volatility at each k is that of the first slice.
-// - After the last: between the last slice and, at the horizon h, its backbone with theta (h/t - 1)
-//   added to total variance, as between two slices; then that amount goes on growing
-//   (Gatheral & Jacquier 2014, theorem 4.3).
+// - After the last: total variance grows by the same amount at every k, at the last slice's
+//   at-the-money variance a year.
 class TimedSmile {
  public:
   TimedSmile(const Surface& surface, double year_fraction);
@@ -65,18 +61,14 @@ class TimedSmile {
   double year_fraction() const { return t_; }
 
  private:
-  struct End {
-    const Slice* slice = nullptr;
-    double t = 0, shift = 0;
-    bool faded = false;
-    SmilePoint at(double k) const;
-  };
   SurfacePoint mixed(const SmilePoint& a, const SmilePoint& b, double k) const;
 
   double t_;
-  End early_, late_;  // early_.slice is null before the first; equal ends at a slice
+  const Slice* early_ = nullptr;   // none before the first slice and after the last
+  const Slice* late_;              // the last slice after it
+  double growth_ = 0, shift_ = 0;  // after the last: of total variance a year, and so far
   Between rule_ = Between::variance;
-  double weight_ = 1, weight_slope_ = 0;  // of the late end; a year
+  double weight_ = 1, weight_slope_ = 0;  // of the late slice; a year
 };
 
 SurfacePoint point_at(const Surface& surface, double k, double year_fraction);

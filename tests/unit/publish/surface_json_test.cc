@@ -137,7 +137,7 @@ TEST(SurfaceJson, TextThatIsNoJsonIsRefused) {
   expect_refused(std::string(100'000, '['));
 }
 
-TEST(SurfaceJson, OtherFormIsRefused) { expect_refused(broken("surface/2", "surface/2")); }
+TEST(SurfaceJson, OtherFormIsRefused) { expect_refused(broken("surface/2", "surface/1")); }
 
 TEST(SurfaceJson, MissingFieldIsRefused) {
   for (const char* key :
