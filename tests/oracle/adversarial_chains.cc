@@ -115,10 +115,6 @@ Truth essvi(Draw& draw, std::vector<double> times, const Skew& skew) {
   return out;
 }
 
-Truth ordinary(Draw& draw, std::vector<double> times) {
-  return essvi(draw, std::move(times), {draw.between(-0.8, 0.3), 0.08, 0.1, 0.8});
-}
-
 struct Component {
   double weight, forward, total_vol;
 };
@@ -130,6 +126,50 @@ double mixture_price(const std::vector<Component>& mixture, double k) {
   for (const auto& c : mixture)
     price += c.weight * pricing::black_price({side, c.forward, std::exp(k), 1}, c.total_vol);
   return price;
+}
+
+Smile smile_of(std::vector<Component> mixture) {
+  return [mixture = std::move(mixture)](double k) {
+    const double s = total_vol_of(k, mixture_price(mixture, k)).value();
+    return s * s;
+  };
+}
+
+// Business time: the clock runs faster over some stretches than over others.
+std::vector<double> uneven_clock(Draw& draw, const std::vector<double>& times) {
+  std::vector<double> out;
+  double before = 0, clock = 0;
+  for (const double t : times) {
+    out.push_back(clock += (t - std::exchange(before, t)) * std::exp(draw.between(-0.5, 0.5)));
+  }
+  return out;
+}
+
+// One of two vols, times a rare fall or else a small rise, of mean 1 and independent. All grow as
+// the root of business time, so every marginal is above the one before in the convex order. The
+// smiles are skewed, with humps that no eSSVI slice has where the fall is many deviations.
+Truth mixed_lognormals(Draw& draw, std::vector<double> times) {
+  const auto clock = uneven_clock(draw, times);
+  const double vol = draw.scale(0.06, 0.6), wider = vol * draw.between(1, 2);
+  const double share = draw.between(0.05, 0.5), rare = draw.between(0.05, 0.4);
+  const double fall =
+      std::min(vol * draw.between(0.3, 2.5), 0.6 / std::sqrt(clock.back()));  // a root year
+  Truth out{std::move(times), {}};
+  for (const double t : clock) {
+    const double root = std::sqrt(t), down = fall * root, up = down * rare / (1 - rare);
+    std::vector<Component> mixture;
+    for (const auto& [w, s] : {std::pair{1 - share, vol}, {share, wider}}) {
+      mixture.push_back({w * rare, 1 - down, s * root});
+      mixture.push_back({w * (1 - rare), 1 + up, s * root});
+    }
+    out.smiles.push_back(smile_of(std::move(mixture)));
+  }
+  return out;
+}
+
+Truth ordinary(Draw& draw, std::vector<double> times) {
+  if (draw.chance(0.5)) return mixed_lognormals(draw, std::move(times));
+  return essvi(draw, std::move(times), {draw.between(-0.8, 0.3), 0.08, 0.1, 0.8});
 }
 
 // Two vols that the market does not know apart, and from the announcement on a jump up or down with
@@ -156,10 +196,7 @@ Truth announced(Draw& draw) {
         mixture.push_back({w * (1 - up), fall, total});
       }
     }
-    out.smiles.emplace_back([mixture](double k) {
-      const double s = total_vol_of(k, mixture_price(mixture, k)).value();
-      return s * s;
-    });
+    out.smiles.push_back(smile_of(std::move(mixture)));
   }
   return out;
 }
@@ -373,10 +410,11 @@ std::pair<std::size_t, std::size_t> cross(Draw& draw, const FitSlice& early, Fit
   const std::size_t n = late.quotes.size();
   assert(n == early.quotes.size() && n >= 8);
   const std::size_t first = draw.whole(n / 4, n / 3), last = first + n / 3;
+  const double part = draw.between(0.9, 0.99);
   for (std::size_t i = first; i < last; ++i) {
     FitQuote& q = late.quotes[i];
     const double ask =
-        early.quotes[i].vol_bid * std::sqrt(0.9 * early.year_fraction / late.year_fraction);
+        early.quotes[i].vol_bid * std::sqrt(part * early.year_fraction / late.year_fraction);
     q.half_spread = std::min(q.half_spread, 0.3 * ask);
     q = in_vol(q.k, ask - q.half_spread, q.half_spread, 0);
   }
@@ -555,8 +593,9 @@ class Maker {
   }
 
   void crossed_calendar() {
-    const Truth truth = ordinary(draw_, some_times(draw_, 2, 6));
-    const std::size_t early = draw_.whole(0, truth.times.size() - 2);
+    // Close together, so that few half-spreads decide which of the two is missed.
+    const Truth truth = ordinary(draw_, close_times(draw_.between(0.5, 3) * kDay));
+    const std::size_t early = close_;
     const Style style{draw_.whole(16, 40), -3, 2.5, draw_.scale(0.002, 0.01), 0.2};
     const auto at = strikes(draw_, truth.smiles[early], style);
     quoted(truth, [&](double t, const Smile& smile) {
