@@ -2,7 +2,10 @@
 #pragma once
 
 #include <algorithm>
+#include <chrono>
+#include <cstdint>
 #include <span>
+#include <utility>
 
 #include "surface/fit.h"
 #include "surface/surface.h"
@@ -42,7 +45,23 @@ inline bool certified(const surface::Surface& surface) {
 }
 #endif
 
-// Forwards of 100 and no interest; prices are mixed between expiries with an overlay.
+// Gives the stretches between expiries their rule.
+#if __has_include("arbitrage/certificate.h")
+inline surface::Surface with_rules(surface::Surface surface) {
+  return arbitrage::with_proved_rules(std::move(surface));
+}
+#else
+inline surface::Surface with_rules(surface::Surface surface) {
+  for (std::size_t i = 0; i < surface.slices.size(); ++i) {
+    const bool overlaid = !surface.slices[i].overlay.empty();
+    if (overlaid) surface.slices[i].to_next = surface::Between::price;
+    if (overlaid && i > 0) surface.slices[i - 1].to_next = surface::Between::price;
+  }
+  return surface;
+}
+#endif
+
+// Forwards of 100 and no interest.
 inline surface::Surface surface_of(std::span<const surface::FitSlice> slices,
                                    const surface::SurfaceFit& fit) {
   surface::Surface out{"INVENTED", 100.0, {}};
@@ -56,11 +75,8 @@ inline surface::Surface surface_of(std::span<const surface::FitSlice> slices,
     const auto& fitted = fit.slices[i];
     out.slices.push_back({quotes::Instant(ahead), slices[i].year_fraction, 100, 1, fitted.backbone,
                           low->k, high->k, fitted.overlay});
-    if (fitted.overlay.empty()) continue;
-    out.slices.back().to_next = surface::Between::price;
-    if (i > 0) out.slices[i - 1].to_next = surface::Between::price;
   }
-  return out;
+  return with_rules(std::move(out));
 }
 
 }  // namespace duskgrid::fitted
