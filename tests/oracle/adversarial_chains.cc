@@ -245,14 +245,20 @@ Style some_style(Draw& draw) {
 
 double deviation(const Smile& smile) { return std::sqrt(smile(0)); }
 
-// Unevenly spaced, at least 0.4 of the mean distance apart.
+// Unevenly spaced, at least 0.4 of the mean distance apart. Where two narrow humps are far apart
+// the deviations lead to prices that are no numbers: there is no strike there.
 std::vector<double> strikes(Draw& draw, const Smile& smile, const Style& style) {
+  constexpr double kLeastPrice = 1e-30;
   const double unit = deviation(smile);
-  if (style.count == 1) return {unit * draw.between(style.low, style.high) / 4};
-  const double step = (style.high - style.low) / static_cast<double>(style.count - 1);
+  const double step =
+      (style.high - style.low) / static_cast<double>(std::max<std::size_t>(style.count, 2) - 1);
   std::vector<double> out;
-  for (std::size_t i = 0; i < style.count; ++i)
-    out.push_back(unit * (style.low + step * (static_cast<double>(i) + draw.between(-0.3, 0.3))));
+  for (std::size_t i = 0; i < style.count; ++i) {
+    const double place = style.count == 1 ? draw.between(0.4, 0.6) : static_cast<double>(i);
+    const double k = unit * (style.low + step * (place + draw.between(-0.3, 0.3)));
+    if (otm_price(k, std::sqrt(smile(k))) > kLeastPrice) out.push_back(k);
+  }
+  if (out.empty()) out.push_back(0);
   return out;
 }
 
@@ -341,9 +347,17 @@ FitSlice fully_spread(Draw& draw, double t, const Smile& smile) {
   return out;
 }
 
+struct Ticks {
+  double tick;  // over the forward
+  double part;  // of the price, on either side of it, at the least
+};
+constexpr Ticks kOneTick{kTick, 0};
+// A tick of 0.05 on a forward of 5,000, and 1 % of the price.
+constexpr Ticks kIndexTicks{0.1 * kTick, 0.005};
+
 // Bid and ask on the ticks about the truth. Without a bid a quote is not used, so it is left out;
 // at worst the one at the money stays, a tick wide.
-FitSlice ticked(Draw& draw, double t, const Smile& smile, double tick) {
+FitSlice ticked(Draw& draw, double t, const Smile& smile, const Ticks& ticks) {
   Style style = some_style(draw);
   style.low = -8;
   style.high = 8;
@@ -351,11 +365,13 @@ FitSlice ticked(Draw& draw, double t, const Smile& smile, double tick) {
   FitSlice out{t, {}};
   for (const double k : strikes(draw, smile, style)) {
     const double price = otm_price(k, std::sqrt(smile(k)));
-    const double bid = tick * std::floor(price / tick);
+    const double bid = ticks.tick * std::floor(price * (1 - ticks.part) / ticks.tick);
+    const double ask = ticks.tick * std::ceil(price * (1 + ticks.part) / ticks.tick);
     if (bid <= 0) continue;
-    if (const auto quote = in_price(k, t, bid, bid + tick)) out.quotes.push_back(*quote);
+    if (const auto quote = in_price(k, t, bid, std::max(ask, bid + ticks.tick)))
+      out.quotes.push_back(*quote);
   }
-  if (out.quotes.empty()) out.quotes.push_back(in_vol(0, vol_of(smile, t, 0), tick, 0));
+  if (out.quotes.empty()) out.quotes.push_back(in_vol(0, vol_of(smile, t, 0), ticks.tick, 0));
   return out;
 }
 
@@ -465,7 +481,8 @@ class Maker {
       case ChainKind::few_quotes: return few_quotes();
       case ChainKind::many_strikes: return many_strikes();
       case ChainKind::tick_spreads:
-        return each([&](double t, const Smile& smile) { return ticked(draw_, t, smile, kTick); });
+        return each(
+            [&](double t, const Smile& smile) { return ticked(draw_, t, smile, kOneTick); });
       case ChainKind::full_spreads:
         return each([&](double t, const Smile& smile) { return fully_spread(draw_, t, smile); });
       case ChainKind::zigzag:
@@ -503,9 +520,8 @@ class Maker {
   void same_day() {
     auto times = spread_out_times(draw_, draw_.whole(1, 5), draw_.between(1, 8) / (365 * 24));
     auto truth = essvi(draw_, std::move(times), {draw_.between(-0.9, -0.3), 0.05, 0.5, 0.95});
-    // A tick of 0.05 on a forward of 5,000.
     quoted(std::move(truth),
-           [&](double t, const Smile& smile) { return ticked(draw_, t, smile, 0.1 * kTick); });
+           [&](double t, const Smile& smile) { return ticked(draw_, t, smile, kIndexTicks); });
   }
 
   // The early mids go up and the late ones down by 0.9 of half-spreads wide enough for them to
@@ -646,7 +662,7 @@ class Maker {
     switch (draw_.whole(0, 8)) {
       case 0: return few(draw_, t, smile);
       case 1: return many(draw_, t, smile, 300);
-      case 2: return ticked(draw_, t, smile, 0.1 * kTick);
+      case 2: return ticked(draw_, t, smile, kIndexTicks);
       case 3: return fully_spread(draw_, t, smile);
       case 4: return zigzagging(draw_, t, smile);
       case 5: return ranged(draw_, t, smile, draw_.chance(0.5));
