@@ -29,7 +29,9 @@ inline constexpr bool kWithOverlay = false;
 inline Result<surface::SurfaceFit> fit(std::span<const surface::FitSlice> slices) {
   const auto backbone = surface::fit_backbone(slices, {});
   if (!backbone) return backbone.failure();
-  surface::SurfaceFit out{{}, slices.back().year_fraction, backbone->end, true};
+  surface::SurfaceFit out{};
+  out.end = backbone->end;
+  out.settled = true;
   for (const auto& s : backbone->slices) out.slices.push_back({s, {}});
   return out;
 }
@@ -61,11 +63,17 @@ inline surface::Surface with_rules(surface::Surface surface) {
 }
 #endif
 
+// Where a fit says from when on its overlay has faded.
+template <class Fit, class Surface>
+void carry_horizon(const Fit& fit, Surface& surface) {
+  if constexpr (requires { surface.horizon = fit.horizon; }) surface.horizon = fit.horizon;
+}
+
 // Forwards of 100 and no interest.
 inline surface::Surface surface_of(std::span<const surface::FitSlice> slices,
                                    const surface::SurfaceFit& fit) {
   surface::Surface out{"INVENTED", 100.0, {}};
-  out.horizon = fit.horizon;
+  carry_horizon(fit, out);
   for (std::size_t i = 0; i < slices.size(); ++i) {
     const auto& quotes = slices[i].quotes;
     const auto [low, high] = std::minmax_element(
