@@ -16,7 +16,7 @@ target_compile_definitions(duskgrid_pricing PRIVATE
   "HWY_DISABLED_TARGETS=(HWY_SVE|HWY_SVE2|HWY_SVE_256|HWY_SVE2_128|HWY_RVV)")
 
 add_stage(surface
-  SOURCES backbone.cc overlay.cc surface.cc
+  SOURCES backbone.cc fit.cc overlay.cc quadratic_program.cc slice_model.cc surface.cc
   NEEDS duskgrid::pricing PRIVATE_NEEDS Eigen3::Eigen fmt::fmt)
 
 add_stage(arbitrage

@@ -17,25 +17,9 @@
 
 namespace duskgrid::fitted {
 
-// Whether fits have an overlay; without one a fit is free of arbitrage but meets only the quotes
-// that its backbone can.
-#if __has_include("surface/fit.cc")
-inline constexpr bool kWithOverlay = true;
 inline Result<surface::SurfaceFit> fit(std::span<const surface::FitSlice> slices) {
   return surface::fit_surface(slices, {});
 }
-#else
-inline constexpr bool kWithOverlay = false;
-inline Result<surface::SurfaceFit> fit(std::span<const surface::FitSlice> slices) {
-  const auto backbone = surface::fit_backbone(slices, {});
-  if (!backbone) return backbone.failure();
-  surface::SurfaceFit out{};
-  out.end = backbone->end;
-  out.settled = true;
-  for (const auto& s : backbone->slices) out.slices.push_back({s, {}});
-  return out;
-}
-#endif
 
 #if __has_include("arbitrage/certificate.h")
 inline bool certified(const surface::Surface& surface) {
@@ -63,17 +47,10 @@ inline surface::Surface with_rules(surface::Surface surface) {
 }
 #endif
 
-// Where a fit says from when on its overlay has faded.
-template <class Fit, class Surface>
-void carry_horizon(const Fit& fit, Surface& surface) {
-  if constexpr (requires { surface.horizon = fit.horizon; }) surface.horizon = fit.horizon;
-}
-
 // Forwards of 100 and no interest.
 inline surface::Surface surface_of(std::span<const surface::FitSlice> slices,
                                    const surface::SurfaceFit& fit) {
   surface::Surface out{"INVENTED", 100.0, {}};
-  carry_horizon(fit, out);
   for (std::size_t i = 0; i < slices.size(); ++i) {
     const auto& quotes = slices[i].quotes;
     const auto [low, high] = std::minmax_element(

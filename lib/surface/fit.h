@@ -2,6 +2,7 @@
 // quotes inside their spreads without butterfly or calendar arbitrage.
 #pragma once
 
+#include <cstdint>
 #include <optional>
 #include <span>
 #include <string>
@@ -13,9 +14,10 @@
 namespace duskgrid::surface {
 
 struct OverlayOptions {
-  // Most coefficients of a slice. Range: 0 (no overlay) to 64.
+  // Most coefficients of a slice. Range: 0 (no overlay) or 6 to 64. Fewer cannot follow
+  // every smile; more cost time and change little, since roughness is penalised.
   int most_coefficients = 20;
-  // Most rounds of linearised constraints. Range: >= 1.
+  // Most rounds of linearised conditions before the overlay is given up. Range: >= 1.
   int most_rounds = 12;
   std::optional<std::string> problem() const;
 };
@@ -27,13 +29,19 @@ struct FitOptions {
 
 struct FittedSlice {
   SliceParameters backbone;
-  Overlay overlay;  // empty where the backbone alone serves
+  Overlay overlay;
+};
+
+enum class OverlayEnd : std::uint8_t {
+  none,      // every quote is well inside its spread without one, or none was asked for
+  settled,   // every slice has one
+  given_up,  // none found that is free of arbitrage: the backbone alone
 };
 
 struct SurfaceFit {
   std::vector<FittedSlice> slices;  // as many as given, in order
-  FitEnd end;                       // of the backbone
-  bool settled;                     // false: the overlay did not settle and was given up
+  FitEnd backbone_end;
+  OverlayEnd overlay_end;
 };
 
 // Each slice needs one quote or more. Failure: as fit_backbone. Deterministic. Cost linear in

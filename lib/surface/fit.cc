@@ -1,0 +1,375 @@
+#include "surface/fit.h"
+
+#include <fmt/format.h>
+
+#include <algorithm>
+#include <cmath>
+
+#include "surface/quadratic_program.h"
+#include "surface/slice_model.h"
+
+namespace duskgrid::surface {
+namespace {
+
+using Blocks = std::vector<Eigen::VectorXd>;
+
+// Least values asked for where a condition is watched; half of them is enough to pass, and leaves
+// the certificate room. Of g; of total variance over the money's; of its step between expiries,
+// relative.
+constexpr double kLeastButterfly = 0.03;
+constexpr double kLeastVariance = 0.05;
+constexpr double kLeastStep = 1e-4;
+constexpr double kPasses = 0.5;
+// Prices of breaking a spread, by half-spreads, and a condition, by its own units: so dear that
+// conditions give way to nothing, and spreads only to conditions.
+constexpr double kSpreadPenalty = 20;
+constexpr double kConditionPenalty = 1e5;
+// Quotes are asked to be inside by this share of the spread, so that rounding leaves them so.
+constexpr double kInside = 0.98;
+constexpr int kMostModes = 2;
+
+// One place on a slice, and which conditions are watched there.
+struct Place {
+  Probe probe;
+  unsigned watched = 0;  // a bit a condition
+};
+
+// One place where two neighbouring slices are compared.
+struct Crossing {
+  Probe first, second;
+  double floor;  // least step of total variance
+  bool watched = false;
+};
+
+double k_of(const Place& p) { return p.probe.k; }
+double k_of(const Crossing& c) { return c.first.k; }
+
+// Backbones whose wings go on at the slopes with which the quotes end, up to a factor of those of
+// the shapes, under conditions B1, B2, C1 and C2 of docs/methods.md, strictly. theta grows as these
+// ask; near the money the overlay makes up for it.
+std::vector<SliceParameters> wings_of(const std::vector<SliceParameters>& shapes,
+                                      const std::vector<SliceModel>& models) {
+  constexpr double kReach = 2;
+  constexpr double kSteepest = 3.8;  // of psi (1 +- rho), below 4
+  constexpr double kShallowest = 1e-3;
+  constexpr double kStrictly = 1 + 1e-6;
+  std::vector<SliceParameters> out;
+  double down = 0, up = 0;
+  for (std::size_t j = 0; j < models.size(); ++j) {
+    const SliceParameters& shape = shapes[j];
+    const auto ends = models[j].end_slopes();
+    const auto slope = [&](double own, double end, double before) {
+      const double wanted = std::clamp(2 * end, own / kReach, own * kReach);
+      return std::max(std::clamp(wanted, kShallowest * models[j].s0(), kSteepest),
+                      before * kStrictly);
+    };
+    down = slope(shape.psi * (1 - shape.rho), -ends[0], down);
+    up = slope(shape.psi * (1 + shape.rho), ends[1], up);
+    const double psi = 0.5 * (down + up);
+    double theta = std::max(shape.theta, 0.25 * psi * std::max(down, up) * kStrictly);
+    if (j > 0) theta = std::max(theta, out[j - 1].theta * psi / out[j - 1].psi * kStrictly);
+    out.push_back({theta, (up - down) / (up + down), psi});
+  }
+  return out;
+}
+
+class OverlayFit {
+ public:
+  OverlayFit(std::vector<SliceModel> models, int most_rounds)
+      : models_(std::move(models)), most_rounds_(most_rounds) {
+    for (const auto& m : models_) {
+      x_.push_back(m.smooth());
+      places_.emplace_back();
+      for (const double k : m.places()) places_.back().push_back({m.probe_at(k)});
+    }
+    for (std::size_t j = 0; j + 1 < models_.size(); ++j) {
+      auto ks = models_[j].places();
+      const auto more = models_[j + 1].places();
+      ks.insert(ks.end(), more.begin(), more.end());
+      std::sort(ks.begin(), ks.end());
+      crossings_.emplace_back();
+      for (const double k : ks) crossings_.back().push_back(crossing_at(j, k));
+    }
+  }
+
+  // Whether the overlays settled with every condition met wherever it was looked for.
+  bool run() {
+    if (!settle()) return false;
+    constexpr int kSmoothings = 3;
+    for (int i = 0; i < kSmoothings && smoother(); ++i) {
+    }
+    return true;
+  }
+
+  Overlay overlay(std::size_t slice) const { return models_[slice].overlay(x_[slice]); }
+
+ private:
+  Crossing crossing_at(std::size_t j, double k) const {
+    const SliceModel &a = models_[j], &b = models_[j + 1];
+    Crossing c{a.probe_at(k), b.probe_at(k), 0};
+    const double wa = a.total_variance(c.first.backbone);
+    c.floor = std::min(kLeastStep * wa, 0.5 * (b.total_variance(c.second.backbone) - wa));
+    return c;
+  }
+
+  bool settle() {
+    bool asked = false;
+    for (int round = 0; round <= most_rounds_; ++round) {
+      bool broken = watch();
+      if (!broken && (asked || outside() == 0)) broken = look_closer();
+      if (!broken && (asked || outside() == 0)) return true;
+      x_ = solve_quadratic(program(), x_).x;
+      asked = true;
+    }
+    return false;
+  }
+
+  // Makes slices with a density of many modes smoother, as long as no further quote leaves its
+  // spread. Returns whether that went well and something is left to do.
+  bool smoother() {
+    constexpr double kFactor = 4;
+    std::vector<std::size_t> many;
+    for (std::size_t j = 0; j < models_.size(); ++j)
+      if (modes(j) > kMostModes) many.push_back(j);
+    if (many.empty()) return false;
+    const Blocks before = x_;
+    const std::size_t out = outside();
+    for (const std::size_t j : many) models_[j].roughen(kFactor);
+    x_ = solve_quadratic(program(), x_).x;
+    if (settle() && outside() <= out) return true;
+    x_ = before;
+    return false;
+  }
+
+  // Local maxima of the density.
+  int modes(std::size_t j) const {
+    int count = 0;
+    double before = 0;
+    bool rising = true;
+    for (const Place& p : places_[j]) {
+      const double density = models_[j].density(p.probe, x_[j]);
+      if (rising && density < before) ++count;
+      rising = density > before || (rising && density == before);
+      before = density;
+    }
+    return count;
+  }
+
+  std::size_t outside() const {
+    std::size_t n = 0;
+    for (std::size_t j = 0; j < models_.size(); ++j) n += models_[j].outside(x_[j]);
+    return n;
+  }
+
+  // Begins to watch what is below its floor; true if anything does not pass.
+  bool watch() {
+    bool broken = false;
+    for (std::size_t j = 0; j < models_.size(); ++j)
+      for (Place& p : places_[j]) broken |= watch(j, p);
+    for (std::size_t j = 0; j < crossings_.size(); ++j)
+      for (Crossing& c : crossings_[j]) broken |= watch(j, c);
+    return broken;
+  }
+
+  bool watch(std::size_t j, Place& place) {
+    bool broken = false;
+    each_condition(j, place.probe, [&](Condition condition, double value, double floor) {
+      if (value >= kPasses * floor) return;
+      broken = true;
+      const auto bit = 1U << static_cast<unsigned>(condition);
+      if ((place.watched & bit) == 0) watched_.push_back({j, place.probe, condition, floor});
+      place.watched |= bit;
+    });
+    return broken;
+  }
+
+  bool watch(std::size_t j, Crossing& c) {
+    if (step(j, c) >= kPasses * c.floor) return false;
+    c.watched = true;
+    return true;
+  }
+
+  // Calls visit(condition, value, floor) for each condition that has a meaning at a place.
+  template <class Visit>
+  void each_condition(std::size_t j, const Probe& p, Visit visit) const {
+    const SliceModel& m = models_[j];
+    const ScaledSmile at = m.smile(p, x_[j]);
+    visit(Condition::positive, at.w, kLeastVariance);
+    // Where variance is next to nothing the other conditions have no meaning yet.
+    if (at.w < kPasses * kLeastVariance) return;
+    const double own = condition_at(Condition::butterfly, p.backbone, p.z, m.s0()).value;
+    const double floor = std::min(kLeastButterfly, 0.5 * own);
+    const bool falls = j + 1 == models_.size() && p.z * at.slope < 0;
+    for (const auto c : {Condition::butterfly, Condition::later_bend, Condition::later_turn})
+      if (c == Condition::butterfly || falls)
+        visit(c, condition_at(c, at, p.z, m.s0()).value, floor);
+  }
+
+  // How far the worst condition is above what passes.
+  double room(std::size_t j, const Place& place) const {
+    double least = HUGE_VAL;
+    each_condition(j, place.probe, [&](Condition, double value, double floor) {
+      least = std::min(least, value - kPasses * floor);
+    });
+    return least;
+  }
+  double room(std::size_t j, const Crossing& c) const {
+    return (step(j, c) - kPasses * c.floor) / models_[j].total_variance(c.first.backbone);
+  }
+
+  Place make(std::size_t j, double k, const Place&) const { return {models_[j].probe_at(k)}; }
+  Crossing make(std::size_t j, double k, const Crossing&) const { return crossing_at(j, k); }
+
+  // Looks between the places too, about each low point, and begins to watch what is broken there.
+  bool look_closer() {
+    bool broken = false;
+    for (std::size_t j = 0; j < models_.size(); ++j) broken |= look_closer(j, places_[j]);
+    for (std::size_t j = 0; j < crossings_.size(); ++j) broken |= look_closer(j, crossings_[j]);
+    return broken;
+  }
+
+  template <class At>
+  bool look_closer(std::size_t j, std::vector<At>& at) {
+    constexpr double kNear = 0.1;  // a low point above this is not looked at
+    constexpr int kParts = 8;
+    std::vector<double> rooms;
+    for (const At& a : at) rooms.push_back(room(j, a));
+    std::vector<At> found;
+    for (std::size_t i = 1; i + 1 < at.size(); ++i) {
+      if (rooms[i] > kNear || rooms[i] > rooms[i - 1] || rooms[i] > rooms[i + 1]) continue;
+      std::optional<At> worst;
+      double least = 0;
+      for (const std::size_t from : {i - 1, i})
+        for (int p = 1; p < kParts; ++p) {
+          const double k = std::lerp(k_of(at[from]), k_of(at[from + 1]), static_cast<double>(p) / kParts);
+          At here = make(j, k, at[i]);
+          const double r = room(j, here);
+          if (r < least) least = r, worst = std::move(here);
+        }
+      if (worst) found.push_back(std::move(*worst));
+    }
+    for (At& a : found) {
+      watch(j, a);
+      const auto next = std::upper_bound(at.begin(), at.end(), k_of(a),
+                                         [](double k, const At& b) { return k < k_of(b); });
+      at.insert(next, std::move(a));
+    }
+    return !found.empty();
+  }
+
+  double step(std::size_t j, const Crossing& c) const {
+    const SliceModel &a = models_[j], &b = models_[j + 1];
+    return b.total_variance(b.smile(c.second, x_[j + 1])) -
+           a.total_variance(a.smile(c.first, x_[j]));
+  }
+
+  QuadraticProgram program() const {
+    QuadraticProgram out;
+    for (std::size_t j = 0; j < models_.size(); ++j) {
+      out.hessian.push_back(models_[j].hessian());
+      out.gradient.push_back(models_[j].gradient());
+      for (const QuoteRow& q : models_[j].quotes()) add_rows(j, q, out);
+    }
+    for (const Watched& w : watched_) out.rows.push_back(row_of(w));
+    for (std::size_t j = 0; j < crossings_.size(); ++j)
+      for (const Crossing& c : crossings_[j])
+        if (c.watched) out.rows.push_back(row_of(j, c));
+    return out;
+  }
+
+  static void add_rows(std::size_t j, const QuoteRow& q, QuadraticProgram& out) {
+    if (q.stray) return;
+    QuadraticRow row{j, q.basis.first, q.basis.value, kInside * q.low - q.offset, kSpreadPenalty};
+    for (double& v : row.value) v *= q.scale;
+    out.rows.push_back(row);
+    for (double& v : row.value) v = -v;
+    row.bound = q.offset - kInside * q.high;
+    out.rows.push_back(row);
+  }
+
+  // A condition of one slice at one place.
+  struct Watched {
+    std::size_t slice;
+    Probe probe;
+    Condition condition;
+    double floor;
+  };
+
+  // The condition to first order about where the overlay stands.
+  QuadraticRow row_of(const Watched& w) const {
+    const SliceModel& m = models_[w.slice];
+    const Probe& p = w.probe;
+    ScaledSmile at = m.smile(p, x_[w.slice]);
+    at.w = std::max(at.w, kPasses * kLeastVariance);
+    const Conditioned c = condition_at(w.condition, at, p.z, m.s0());
+    QuadraticRow row{w.slice, p.basis.first, {}, w.floor - c.value, kConditionPenalty};
+    for (std::size_t r = 0; r < 4; ++r) {
+      row.value[r] = c.by_w * p.basis.value[r] + c.by_slope * p.basis.slope[r] +
+                     c.by_curvature * p.basis.curvature[r];
+      row.bound += row.value[r] * x_[w.slice][p.basis.first + static_cast<Eigen::Index>(r)];
+    }
+    return row;
+  }
+
+  // In units of the early slice's variance.
+  QuadraticRow row_of(std::size_t j, const Crossing& c) const {
+    const SliceModel &a = models_[j], &b = models_[j + 1];
+    const double wa = a.total_variance(c.first.backbone), wb = b.total_variance(c.second.backbone);
+    QuadraticRow row{j, c.first.basis.first, {}, (c.floor + wa - wb) / wa, kConditionPenalty};
+    for (std::size_t r = 0; r < 4; ++r) {
+      row.value[r] = -a.s0() * a.s0() / wa * c.first.basis.value[r];
+      row.next_value[r] = b.s0() * b.s0() / wa * c.second.basis.value[r];
+    }
+    row.ties = true;
+    row.next_first = c.second.basis.first;
+    return row;
+  }
+
+  std::vector<SliceModel> models_;
+  int most_rounds_;
+  Blocks x_;
+  std::vector<std::vector<Place>> places_;        // by slice, increasing in k
+  std::vector<std::vector<Crossing>> crossings_;  // by earlier slice, increasing in k
+  std::vector<Watched> watched_;
+};
+
+}  // namespace
+
+std::optional<std::string> OverlayOptions::problem() const {
+  if (most_coefficients != 0 && (most_coefficients < 6 || most_coefficients > 64))
+    return fmt::format("most_coefficients = {}, must be 0 or 6 to 64", most_coefficients);
+  if (most_rounds < 1) return fmt::format("most_rounds = {}, must be >= 1", most_rounds);
+  return std::nullopt;
+}
+
+Result<SurfaceFit> fit_surface(std::span<const FitSlice> slices, const FitOptions& options) {
+  if (const auto problem = options.overlay.problem())
+    return Failure{Fault::configuration, "overlay", *problem};
+  const auto shapes = fit_backbone(slices, options.backbone);
+  if (!shapes) return shapes.failure();
+  SurfaceFit fit{{}, shapes->end, OverlayEnd::none};
+  for (const auto& shape : shapes->slices) fit.slices.push_back({shape, {}});
+  if (options.overlay.most_coefficients == 0) return fit;
+
+  std::vector<SliceModel> models;
+  for (std::size_t j = 0; j < slices.size(); ++j)
+    models.emplace_back(slices[j], shapes->slices[j], options);
+  const auto met = [](const SliceModel& m) { return m.met_by_backbone(); };
+  if (std::all_of(models.begin(), models.end(), met)) return fit;
+  for (auto& m : models) m.choose_roughness(false);
+  const auto wings = wings_of(shapes->slices, models);
+  for (std::size_t j = 0; j < models.size(); ++j) {
+    models[j].rebase(wings[j]);
+    models[j].choose_roughness(true);
+  }
+  OverlayFit overlays(std::move(models), options.overlay.most_rounds);
+  if (!overlays.run()) {
+    fit.overlay_end = OverlayEnd::given_up;
+    return fit;
+  }
+  fit.overlay_end = OverlayEnd::settled;
+  for (std::size_t j = 0; j < slices.size(); ++j) fit.slices[j] = {wings[j], overlays.overlay(j)};
+  return fit;
+}
+
+}  // namespace duskgrid::surface
