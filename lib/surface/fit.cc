@@ -20,10 +20,10 @@ constexpr double kLeastButterfly = 0.03;
 constexpr double kLeastVariance = 0.05;
 constexpr double kLeastStep = 1e-4;
 constexpr double kPasses = 0.5;
-// Prices of breaking a spread, by half-spreads, and a condition, by its own units: so dear that
-// conditions give way to nothing, and spreads only to conditions.
+// Price of leaving a spread, by half-spreads: dearer than any pull to a mid inside one. Breaking a
+// condition costs so many times what all spreads of the slice together could gain by it.
 constexpr double kSpreadPenalty = 20;
-constexpr double kConditionPenalty = 1e5;
+constexpr double kConditionPenalty = 100;
 // Quotes are asked to be inside by this share of the spread, so that rounding leaves them so.
 constexpr double kInside = 0.98;
 constexpr int kMostModes = 2;
@@ -53,6 +53,8 @@ std::vector<SliceParameters> wings_of(const std::vector<SliceParameters>& shapes
   constexpr double kSteepest = 3.8;  // of psi (1 +- rho), below 4
   constexpr double kShallowest = 1e-3;
   constexpr double kStrictly = 1 + 1e-6;
+  constexpr double kDeepest = 0.8, kLargest = 4;
+  constexpr double kShrink = 0.9, kLeastPart = 0.2;
   std::vector<SliceParameters> out;
   double down = 0, up = 0;
   for (std::size_t j = 0; j < models.size(); ++j) {
@@ -63,12 +65,25 @@ std::vector<SliceParameters> wings_of(const std::vector<SliceParameters>& shapes
       return std::max(std::clamp(wanted, kShallowest * models[j].s0(), kSteepest),
                       before * kStrictly);
     };
+    const double least_down = down * kStrictly, least_up = up * kStrictly;
     down = slope(shape.psi * (1 - shape.rho), -ends[0], down);
     up = slope(shape.psi * (1 + shape.rho), ends[1], up);
-    const double psi = 0.5 * (down + up);
-    double theta = std::max(shape.theta, 0.25 * psi * std::max(down, up) * kStrictly);
-    if (j > 0) theta = std::max(theta, out[j - 1].theta * psi / out[j - 1].psi * kStrictly);
-    out.push_back({theta, (up - down) / (up + down), psi});
+    // Brought down to the money again, a hyperbola of too large a theta would not stay above 0.
+    const double rho = (up - down) / (up + down);
+    const double most = shape.theta * std::clamp(kDeepest / (rho * rho), 1.0, kLargest);
+    const auto theta_for = [&](double part) {
+      const double d = std::max(least_down, part * down), u = std::max(least_up, part * up);
+      const double psi = 0.5 * (d + u);
+      const double by_curvature = 0.25 * psi * std::max(d, u) * kStrictly;
+      const double by_before = j > 0 ? out[j - 1].theta * psi / out[j - 1].psi * kStrictly : 0;
+      return std::max(by_curvature, by_before);
+    };
+    double part = 1;
+    while (part > kLeastPart && theta_for(part) > most) part *= kShrink;
+    const double theta = std::max(shape.theta, theta_for(part));
+    down = std::max(least_down, part * down);
+    up = std::max(least_up, part * up);
+    out.push_back({theta, (up - down) / (up + down), 0.5 * (down + up)});
   }
   return out;
 }
@@ -78,6 +93,9 @@ class OverlayFit {
   OverlayFit(std::vector<SliceModel> models, int most_rounds)
       : models_(std::move(models)), most_rounds_(most_rounds) {
     for (const auto& m : models_) {
+      double gain = 1;
+      for (const QuoteRow& q : m.quotes()) gain += kSpreadPenalty * q.scale;
+      penalties_.push_back(kConditionPenalty * gain);
       x_.push_back(m.smooth());
       places_.emplace_back();
       for (const double k : m.places()) places_.back().push_back({m.probe_at(k)});
@@ -92,8 +110,9 @@ class OverlayFit {
     }
   }
 
-  // Whether the overlays settled with every condition met wherever it was looked for.
-  bool run() {
+  // From the smooth overlays, which may break conditions. Whether all are met in the end, wherever
+  // they were looked for.
+  bool from_smooth() {
     if (!settle()) return false;
     constexpr int kSmoothings = 3;
     for (int i = 0; i < kSmoothings && smoother(); ++i) {
@@ -101,7 +120,49 @@ class OverlayFit {
     return true;
   }
 
+  // From no overlay, where every condition is met, by steps that keep it so.
+  void from_backbone() {
+    constexpr double kShortest = 1e-3, kSmall = 0.01;
+    // What the way to the smooth overlays would break is watched from the start.
+    for (int halvings = 0; halvings < 4; ++halvings) {
+      watch();
+      for (auto& x : x_) x *= 0.5;
+    }
+    for (auto& x : x_) x.setZero();
+    for (int round = 0; round < 3 * most_rounds_; ++round) {
+      const Blocks before = x_;
+      const Blocks target = solve_quadratic(program(), before).x;
+      const std::size_t known = rows_watched_;
+      double step = 1;
+      for (; step > kShortest; step *= 0.5) {
+        for (std::size_t j = 0; j < x_.size(); ++j)
+          x_[j] = before[j] + step * (target[j] - before[j]);
+        if (!watch() && !look_closer()) break;
+      }
+      const bool stuck = step <= kShortest;
+      if (stuck) x_ = before;
+      if ((stuck && rows_watched_ == known) || (step == 1 && change_from(before) < kSmall)) return;
+    }
+  }
+
   Overlay overlay(std::size_t slice) const { return models_[slice].overlay(x_[slice]); }
+
+  // Quotes outside their spreads, and by how many half-spreads together; strays aside.
+  std::size_t outside() const {
+    std::size_t n = 0;
+    for (std::size_t j = 0; j < models_.size(); ++j) n += models_[j].outside(x_[j]);
+    return n;
+  }
+
+  double missed() const {
+    double sum = 0;
+    for (std::size_t j = 0; j < models_.size(); ++j)
+      for (const QuoteRow& q : models_[j].quotes()) {
+        const double r = models_[j].misfit(q, x_[j]);
+        if (!q.stray) sum += std::max({0.0, r - q.high, q.low - r});
+      }
+    return sum;
+  }
 
  private:
   Crossing crossing_at(std::size_t j, double k) const {
@@ -118,7 +179,9 @@ class OverlayFit {
       bool broken = watch();
       if (!broken && (asked || outside() == 0)) broken = look_closer();
       if (!broken && (asked || outside() == 0)) return true;
-      x_ = solve_quadratic(program(), x_).x;
+      QuadraticSolution found = solve_quadratic(program(), x_);
+      if (!found.solved) return false;
+      x_ = std::move(found.x);
       asked = true;
     }
     return false;
@@ -155,10 +218,14 @@ class OverlayFit {
     return count;
   }
 
-  std::size_t outside() const {
-    std::size_t n = 0;
-    for (std::size_t j = 0; j < models_.size(); ++j) n += models_[j].outside(x_[j]);
-    return n;
+  // The largest change of a quote's misfit, half-spreads.
+  double change_from(const Blocks& before) const {
+    double most = 0;
+    for (std::size_t j = 0; j < models_.size(); ++j)
+      for (const QuoteRow& q : models_[j].quotes())
+        most =
+            std::max(most, std::abs(models_[j].misfit(q, x_[j]) - models_[j].misfit(q, before[j])));
+    return most;
   }
 
   // Begins to watch what is below its floor; true if anything does not pass.
@@ -177,7 +244,9 @@ class OverlayFit {
       if (value >= kPasses * floor) return;
       broken = true;
       const auto bit = 1U << static_cast<unsigned>(condition);
-      if ((place.watched & bit) == 0) watched_.push_back({j, place.probe, condition, floor});
+      if ((place.watched & bit) != 0) return;
+      watched_.push_back({j, place.probe, condition, floor});
+      ++rows_watched_;
       place.watched |= bit;
     });
     return broken;
@@ -185,6 +254,7 @@ class OverlayFit {
 
   bool watch(std::size_t j, Crossing& c) {
     if (step(j, c) >= kPasses * c.floor) return false;
+    rows_watched_ += c.watched ? 0 : 1;
     c.watched = true;
     return true;
   }
@@ -241,7 +311,8 @@ class OverlayFit {
       double least = 0;
       for (const std::size_t from : {i - 1, i})
         for (int p = 1; p < kParts; ++p) {
-          const double k = std::lerp(k_of(at[from]), k_of(at[from + 1]), static_cast<double>(p) / kParts);
+          const double k =
+              std::lerp(k_of(at[from]), k_of(at[from + 1]), static_cast<double>(p) / kParts);
           At here = make(j, k, at[i]);
           const double r = room(j, here);
           if (r < least) least = r, worst = std::move(here);
@@ -300,9 +371,9 @@ class OverlayFit {
     const SliceModel& m = models_[w.slice];
     const Probe& p = w.probe;
     ScaledSmile at = m.smile(p, x_[w.slice]);
-    at.w = std::max(at.w, kPasses * kLeastVariance);
+    if (w.condition != Condition::positive) at.w = std::max(at.w, kPasses * kLeastVariance);
     const Conditioned c = condition_at(w.condition, at, p.z, m.s0());
-    QuadraticRow row{w.slice, p.basis.first, {}, w.floor - c.value, kConditionPenalty};
+    QuadraticRow row{w.slice, p.basis.first, {}, w.floor - c.value, penalties_[w.slice]};
     for (std::size_t r = 0; r < 4; ++r) {
       row.value[r] = c.by_w * p.basis.value[r] + c.by_slope * p.basis.slope[r] +
                      c.by_curvature * p.basis.curvature[r];
@@ -315,7 +386,8 @@ class OverlayFit {
   QuadraticRow row_of(std::size_t j, const Crossing& c) const {
     const SliceModel &a = models_[j], &b = models_[j + 1];
     const double wa = a.total_variance(c.first.backbone), wb = b.total_variance(c.second.backbone);
-    QuadraticRow row{j, c.first.basis.first, {}, (c.floor + wa - wb) / wa, kConditionPenalty};
+    QuadraticRow row{
+        j, c.first.basis.first, {}, (c.floor + wa - wb) / wa, penalties_[j] + penalties_[j + 1]};
     for (std::size_t r = 0; r < 4; ++r) {
       row.value[r] = -a.s0() * a.s0() / wa * c.first.basis.value[r];
       row.next_value[r] = b.s0() * b.s0() / wa * c.second.basis.value[r];
@@ -327,11 +399,22 @@ class OverlayFit {
 
   std::vector<SliceModel> models_;
   int most_rounds_;
+  std::vector<double> penalties_;  // of conditions, by slice
   Blocks x_;
   std::vector<std::vector<Place>> places_;        // by slice, increasing in k
   std::vector<std::vector<Crossing>> crossings_;  // by earlier slice, increasing in k
   std::vector<Watched> watched_;
+  std::size_t rows_watched_ = 0;
 };
+
+std::vector<SliceModel> on(const std::vector<SliceParameters>& backbones,
+                           std::vector<SliceModel> models) {
+  for (std::size_t j = 0; j < models.size(); ++j) {
+    models[j].rebase(backbones[j]);
+    models[j].choose_roughness(true);
+  }
+  return models;
+}
 
 }  // namespace
 
@@ -358,17 +441,17 @@ Result<SurfaceFit> fit_surface(std::span<const FitSlice> slices, const FitOption
   if (std::all_of(models.begin(), models.end(), met)) return fit;
   for (auto& m : models) m.choose_roughness(false);
   const auto wings = wings_of(shapes->slices, models);
-  for (std::size_t j = 0; j < models.size(); ++j) {
-    models[j].rebase(wings[j]);
-    models[j].choose_roughness(true);
-  }
-  OverlayFit overlays(std::move(models), options.overlay.most_rounds);
-  if (!overlays.run()) {
-    fit.overlay_end = OverlayEnd::given_up;
-    return fit;
-  }
+  OverlayFit first(on(wings, models), options.overlay.most_rounds);
+  const bool settled = first.from_smooth();
   fit.overlay_end = OverlayEnd::settled;
-  for (std::size_t j = 0; j < slices.size(); ++j) fit.slices[j] = {wings[j], overlays.overlay(j)};
+  for (std::size_t j = 0; j < slices.size(); ++j) fit.slices[j] = {wings[j], first.overlay(j)};
+  if (settled && first.outside() == 0) return fit;
+  // The backbones of the shapes are free of arbitrage by themselves: a safe place to start from.
+  OverlayFit second(on(shapes->slices, models), options.overlay.most_rounds);
+  second.from_backbone();
+  if (settled && first.missed() <= second.missed()) return fit;
+  for (std::size_t j = 0; j < slices.size(); ++j)
+    fit.slices[j] = {shapes->slices[j], second.overlay(j)};
   return fit;
 }
 

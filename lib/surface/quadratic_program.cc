@@ -13,6 +13,7 @@ using Blocks = std::vector<VectorXd>;
 
 constexpr int kMostIterations = 60;
 constexpr double kAccuracy = 1e-9;  // of complementarity, per row, in units of the objective
+constexpr double kSmallPull = 1;    // pulls are not measured against less
 constexpr double kKeepInside = 0.995;
 
 double product(const QuadraticRow& row, const Blocks& x) {
@@ -108,7 +109,7 @@ class Solver {
     if (p_.rows.empty()) return without_rows();
     for (int i = 0; i < kMostIterations; ++i) {
       const double mu = residuals();
-      if (mu < kAccuracy && dual_residual_ < kAccuracy * scale_ && primal_residual_ < kAccuracy)
+      if (mu < kAccuracy && dual_residual_ < kAccuracy && primal_residual_ < kAccuracy)
         return {std::move(x_), true, i};
       if (!std::isfinite(mu)) break;
       if (!factor()) break;
@@ -116,9 +117,8 @@ class Solver {
       const double predicted = mu_after(std::min(longest(1.0), 1.0));
       const double center = std::pow(predicted / mu, 3) * mu;
       affine_ = step_;
-      direction(
-          [&](std::size_t k) { return center - affine_[k].v * affine_[k].z; },
-          [&](std::size_t k) { return center - affine_[k].t * affine_[k].y; });
+      direction([&](std::size_t k) { return center - affine_[k].v * affine_[k].z; },
+                [&](std::size_t k) { return center - affine_[k].t * affine_[k].y; });
       advance(longest(kKeepInside));
     }
     return {std::move(x_), false, kMostIterations};
@@ -134,21 +134,24 @@ class Solver {
     return {factored ? std::move(x) : std::move(x_), factored, 1};
   }
 
+  // Rows whose penalty is beyond any pull begin like hard ones: their shortfall is next to nothing
+  // and a'x - bound + t may differ from v at first.
   State first_state(const QuadraticRow& row) const {
+    constexpr double kLeast = 1e-2, kFirstProduct = 0.1, kDear = 1e3;
     const double gap = product(row, x_) - row.bound;
     State s{};
-    if (std::isfinite(row.penalty)) {
-      s.z = s.y = 0.5 * row.penalty;
-      const double least = 1e-2;
-      s.v = std::max(gap, 0.0) + least;
-      s.t = std::max(-gap, 0.0) + least;
-      // Far on one side the multiplier is near its end.
-      if (gap > 1) s.z = std::min(s.z, s.y / gap), s.y = row.penalty - s.z;
-      if (gap < -1) s.y = std::min(s.y, s.z / -gap), s.z = row.penalty - s.y;
+    if (row.penalty < kDear) {
+      s.v = std::max(gap, 0.0) + kLeast;
+      s.t = std::max(-gap, 0.0) + kLeast;
+      s.z = row.penalty * s.t / (s.v + s.t);
+      s.y = row.penalty - s.z;
       return s;
     }
-    s.v = std::max(gap, 1e-2);
-    s.z = std::min(1.0, 0.1 / s.v);
+    s.v = std::max(gap, kLeast);
+    s.z = std::min(1.0, kFirstProduct / s.v);
+    if (!std::isfinite(row.penalty)) return s;
+    s.y = row.penalty - s.z;
+    s.t = kFirstProduct / s.y;
     return s;
   }
 
@@ -157,20 +160,22 @@ class Solver {
     double mu = 0;
     primal_residual_ = 0;
     dual_ = p_.gradient;
-    for (std::size_t j = 0; j < x_.size(); ++j) dual_[j].noalias() += p_.hessian[j] * x_[j];
+    Blocks size(x_.size());  // of the terms of each component
+    for (std::size_t j = 0; j < x_.size(); ++j) {
+      size[j] = dual_[j].cwiseAbs() + p_.hessian[j].cwiseAbs() * x_[j].cwiseAbs();
+      dual_[j].noalias() += p_.hessian[j] * x_[j];
+    }
     for (std::size_t i = 0; i < states_.size(); ++i) {
       const State& s = states_[i];
       mu += s.v * s.z + s.t * s.y;
       add(p_.rows[i], -s.z, dual_);
-      primal_residual_ =
-          std::max(primal_residual_, std::abs(product(p_.rows[i], x_) - p_.rows[i].bound + s.t - s.v));
+      primal_residual_ = std::max(primal_residual_,
+                                  std::abs(product(p_.rows[i], x_) - p_.rows[i].bound + s.t - s.v));
     }
     dual_residual_ = 0;
-    scale_ = 1;
-    for (std::size_t j = 0; j < x_.size(); ++j) {
-      dual_residual_ = std::max(dual_residual_, dual_[j].lpNorm<Eigen::Infinity>());
-      scale_ = std::max(scale_, p_.hessian[j].diagonal().lpNorm<Eigen::Infinity>());
-    }
+    for (std::size_t j = 0; j < x_.size(); ++j)
+      dual_residual_ = std::max(
+          dual_residual_, (dual_[j].array().abs() / (size[j].array() + kSmallPull)).maxCoeff());
     return mu / complementary_;
   }
 
@@ -199,8 +204,7 @@ class Solver {
     chain_.solve(right_);
     for (std::size_t i = 0; i < states_.size(); ++i) {
       const State& s = states_[i];
-      const double dz =
-          weight(s) * (step_[i].v - step_[i].t - product(p_.rows[i], right_));
+      const double dz = weight(s) * (step_[i].v - step_[i].t - product(p_.rows[i], right_));
       const bool soft = s.y > 0;
       const double dv = (target_v(i) - s.v * dz) / s.z - s.v;
       const double dt = soft ? (target_t(i) + s.t * dz) / s.y - s.t : 0;
@@ -227,7 +231,8 @@ class Solver {
     double mu = 0;
     for (std::size_t i = 0; i < states_.size(); ++i) {
       const State &s = states_[i], &d = step_[i];
-      mu += (s.v + length * d.v) * (s.z + length * d.z) + (s.t + length * d.t) * (s.y + length * d.y);
+      mu +=
+          (s.v + length * d.v) * (s.z + length * d.z) + (s.t + length * d.t) * (s.y + length * d.y);
     }
     return mu / complementary_;
   }
@@ -248,7 +253,7 @@ class Solver {
   std::vector<State> states_, step_, affine_;
   Chain chain_;
   double complementary_ = 0;
-  double primal_residual_ = 0, dual_residual_ = 0, scale_ = 1;
+  double primal_residual_ = 0, dual_residual_ = 0;
 };
 
 }  // namespace

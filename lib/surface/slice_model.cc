@@ -48,8 +48,8 @@ Conditioned condition_at(Condition condition, const ScaledSmile& p, double z, do
               2 * (1 - q) * q / p.w + 0.25 * lean * lean,
               -(1 - q) * z / p.w - 0.5 * lean - 0.125 * square * p.slope, 0.5};
     case Condition::later_bend:
-      return {1 - square * p.slope * p.slope / 16 + 0.5 * p.curvature, 0,
-              -0.125 * square * p.slope, 0.5};
+      return {1 - square * p.slope * p.slope / 16 + 0.5 * p.curvature, 0, -0.125 * square * p.slope,
+              0.5};
     case Condition::later_turn:
       return {1 - q - 0.125 * p.slope * lean - square * p.slope * p.slope / 16 + 0.5 * p.curvature,
               q / p.w + 0.125 * lean * lean,
@@ -109,9 +109,7 @@ void SliceModel::add_quote(const FitQuote& q, double least_half_spread) {
   const double h = std::max(q.half_spread, least_half_spread);
   const double z = q.k / s0_;
   const double scale = s0_ * s0_ / (2 * q.vol * t_ * h);
-  const auto from_mid = [&](double vol) {
-    return (vol - q.vol) * (vol + q.vol) / (2 * q.vol * h);
-  };
+  const auto from_mid = [&](double vol) { return (vol - q.vol) * (vol + q.vol) / (2 * q.vol * h); };
   const double from_zero = from_mid(0);
   quotes_.push_back({.basis = basis_at_z(z),
                      .k = q.k,
@@ -198,7 +196,7 @@ void SliceModel::find_strays(const VectorXd& x) {
 }
 
 void SliceModel::choose_roughness(bool finely) {
-  constexpr double kLightest = 1e-3, kHeaviest = 1e9, kStep = 8, kFinest = 1.1;
+  constexpr double kLightest = 1e-3, kHeaviest = 1e6, kStep = 8, kFinest = 1.1;
   constexpr int kReweightings = 10;
   measure_roughness();
   weigh_quotes();
