@@ -16,8 +16,8 @@ target_compile_definitions(duskgrid_pricing PRIVATE
   "HWY_DISABLED_TARGETS=(HWY_SVE|HWY_SVE2|HWY_SVE_256|HWY_SVE2_128|HWY_RVV)")
 
 add_stage(surface
-  SOURCES backbone.cc overlay.cc surface.cc
-  NEEDS duskgrid::pricing PRIVATE_NEEDS Eigen3::Eigen fmt::fmt)
+  SOURCES backbone.cc derived.cc overlay.cc surface.cc
+  NEEDS duskgrid::pricing PRIVATE_NEEDS Boost::boost Eigen3::Eigen fmt::fmt)
 
 add_stage(arbitrage
   SOURCES grid_checks.cc quote_checks.cc surface_checks.cc violation.cc
