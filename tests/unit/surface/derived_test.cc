@@ -119,6 +119,16 @@ TEST(DerivedAt, GreeksAreDifferencesOfThePriceAtTheVolatilityOfTheStrike) {
   }
 }
 
+// The worked number of docs/methods.md, to its digits.
+TEST(DerivedAt, WorkedNumberOfTheManual) {
+  const Surface s{"HALYRD", {}, {{quotes::Instant{}, 1, 100, 1, {0.04, 0, 0}, 0, 0}}};
+  const TimedSmile smile(s, 1);
+  const auto d = derived_at(smile, carried_at(s, 1), 0).value();
+  EXPECT_NEAR(d.density.value(), 0.01984763, 5e-9);
+  EXPECT_NEAR(d.local_vol.value(), 0.2, kRounding);
+  EXPECT_NEAR(variance_swap(smile)->vol, 0.2, 1e-12);
+}
+
 TEST(DerivedAt, AtTheForwardHasItsBits) {
   const Surface s = curved();
   EXPECT_EQ(derived_at(TimedSmile(s, 0.75), carried_at(s, 0.75), 0)->strike, 103);
