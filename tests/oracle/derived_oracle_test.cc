@@ -211,8 +211,11 @@ double integral(const TimedSmile& smile, const F& f) {
   std::sort(ends.begin(), ends.end());
   boost::math::quadrature::tanh_sinh<double> rule;
   double sum = 0;
-  for (std::size_t i = 1; i < ends.size(); ++i)
-    if (ends[i] - ends[i - 1] > 1e-12) sum += rule.integrate(f, ends[i - 1], ends[i], 1e-13);
+  for (std::size_t i = 1; i < ends.size(); ++i) {
+    const double middle = 0.5 * (ends[i] + ends[i - 1]), half = 0.5 * (ends[i] - ends[i - 1]);
+    if (half == 0) continue;
+    sum += half * rule.integrate([&](double y) { return f(middle + half * y); }, 1e-13);
+  }
   return sum;
 }
 
@@ -398,8 +401,8 @@ std::vector<double> repriced(const Surface& surface, int half_nodes, int steps) 
 // Both schemes are of second order, so halved steps leave a quarter of the error; terms of third
 // order and the knots, where the curvature of v jumps, are allowed a sixth of that.
 constexpr double kQuarter = 4, kOtherOrders = 4.0 / 6;
-// What is left on the finest grid, in vol points: a node every 0.01 deviations of the first expiry
-// would leave some 0.001.
+// What is left on the finest grid, in vol points: its nodes are 0.013 deviations of the first
+// expiry apart, and errors of the order of the square of that, 1.6e-4, of vols of 20 points.
 constexpr double kFinest = 0.003;
 
 TEST(LocalVariance, RepricesTheSurfaceThroughItsForwardEquation) {
