@@ -9,5 +9,6 @@ namespace duskgrid::commands {
 void add_build(CLI::App& program, int& status);
 void add_survey(CLI::App& program, int& status);
 void add_check(CLI::App& program, int& status);
+void add_value(CLI::App& program, int& status);
 
 }  // namespace duskgrid::commands

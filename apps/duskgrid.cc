@@ -21,6 +21,7 @@ int main(int argc, char** argv) {
   commands::add_build(program, status);
   commands::add_survey(program, status);
   commands::add_check(program, status);
+  commands::add_value(program, status);
   try {
     program.parse(argc, argv);
   } catch (const CLI::ParseError& error) {

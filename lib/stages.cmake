@@ -16,16 +16,16 @@ target_compile_definitions(duskgrid_pricing PRIVATE
   "HWY_DISABLED_TARGETS=(HWY_SVE|HWY_SVE2|HWY_SVE_256|HWY_SVE2_128|HWY_RVV)")
 
 add_stage(surface
-  SOURCES backbone.cc fit.cc overlay.cc quadratic_program.cc slice_model.cc surface.cc
-  NEEDS duskgrid::pricing PRIVATE_NEEDS Eigen3::Eigen fmt::fmt)
+  SOURCES backbone.cc derived.cc fit.cc overlay.cc quadratic_program.cc slice_model.cc surface.cc
+  NEEDS duskgrid::pricing PRIVATE_NEEDS Boost::boost Eigen3::Eigen fmt::fmt)
 
 add_stage(arbitrage
   SOURCES grid_checks.cc quote_checks.cc surface_checks.cc violation.cc
   NEEDS duskgrid::surface PRIVATE_NEEDS fmt::fmt)
 
 add_stage(publish
-  SOURCES digest.cc grid.cc grid_file.cc run_folder.cc run_record.cc surface_json.cc tables.cc
-    text.cc
+  SOURCES digest.cc grid.cc grid_file.cc points_file.cc run_folder.cc run_record.cc
+    surface_json.cc tables.cc text.cc values.cc
   NEEDS duskgrid::arbitrage
   PRIVATE_NEEDS Boost::boost OpenSSL::Crypto fmt::fmt nlohmann_json::nlohmann_json)
 

@@ -36,9 +36,11 @@ double number_of(const ordered_json& in) {
   return in.is_number() ? in.get<double>() : quotes::kAbsent;
 }
 
-std::vector<double> numbers_of(const ordered_json& in) {
+// A number, null or object would pass for a list of what it holds.
+std::vector<double> numbers_of(const ordered_json& in, const char* key) {
+  if (!in.at(key).is_array()) throw Refusal{std::string(key) + " is not a list"};
   std::vector<double> out;
-  for (const auto& item : in) out.push_back(number_of(item));
+  for (const auto& item : in.at(key)) out.push_back(number_of(item));
   return out;
 }
 
@@ -60,7 +62,7 @@ surface::Slice slice_from_json(const ordered_json& in, const quotes::Clock& cloc
   s.backbone = {number("theta"), number("rho"), number("psi")};
   s.k_low = number("k_low");
   s.k_high = number("k_high");
-  s.overlay = {numbers_of(in.at("knots")), numbers_of(in.at("coefficients"))};
+  s.overlay = {numbers_of(in, "knots"), numbers_of(in, "coefficients")};
   s.to_next = rule_of(in.at("to_next"));
   return s;
 }

@@ -17,7 +17,8 @@ struct StoredSurface {
 // Reloads to the same surface bit for bit.
 std::string surface_to_json(const StoredSurface& stored);
 // Failure (not_quotes, at `where`): not JSON, not of this form, or parameters that no
-// surface has (times not increasing, theta not > 0, |rho| >= 1, psi < 0, ...).
+// surface has (times not increasing, theta not > 0, |rho| >= 1, psi < 0, knots not increasing,
+// ...).
 Result<StoredSurface> surface_from_json(std::string_view text, const std::string& where);
 
 }  // namespace duskgrid::publish

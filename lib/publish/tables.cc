@@ -31,6 +31,16 @@ class Line {
   bool first_ = true;
 };
 
+Line time_cells(const ValueTime& time, InstantTexts& instants) {
+  Line line;
+  line.raw(instants.of(time.expiry))
+      .raw(time.tenor)
+      .number(time.year_fraction)
+      .number(time.carried.forward)
+      .number(time.carried.discount_factor);
+  return line;
+}
+
 }  // namespace
 
 const std::string& InstantTexts::of(quotes::Instant instant) {
@@ -117,6 +127,31 @@ std::string violations_line(const arbitrage::Violation& v, std::string_view unde
       .number(v.vol_points)
       .number(v.half_spreads)
       .text(format_legs(v.legs, clock))
+      .end();
+}
+
+std::string values_line(const ValueTime& time, const ValueRow& row, InstantTexts& instants) {
+  Line line = time_cells(time, instants);
+  line.number(row.strike).number(row.k);
+  if (!row.derived) return line.empty(8).end();
+  const auto& d = *row.derived;
+  return line.number(d.vol)
+      .raw(d.put_call == quotes::PutCall::call ? "C" : "P")
+      .number(d.price)
+      .number(d.greeks.delta)
+      .number(d.greeks.gamma)
+      .number(d.greeks.vega)
+      .number(d.density.value_or(quotes::kAbsent))
+      .number(d.local_vol.value_or(quotes::kAbsent))
+      .end();
+}
+
+std::string swaps_line(const ValueTime& time, double vol_at_forward,
+                       const std::optional<surface::VarianceSwap>& swap, InstantTexts& instants) {
+  return time_cells(time, instants)
+      .number(vol_at_forward)
+      .number(swap ? swap->vol : quotes::kAbsent)
+      .number(swap ? swap->variance : quotes::kAbsent)
       .end();
 }
 

@@ -1,8 +1,9 @@
-// The CSV tables of a run. Each has a header line and one writer a row; columns are described
-// in docs/formats.md.
+// The CSV tables of a run and of single values. Each has a header line and one writer a row;
+// columns are described in docs/formats.md.
 #pragma once
 
 #include <cstdint>
+#include <optional>
 #include <string>
 #include <string_view>
 #include <unordered_map>
@@ -11,6 +12,7 @@
 #include "arbitrage/violation.h"
 #include "market/parity.h"
 #include "publish/grid.h"
+#include "publish/values.h"
 #include "quotes/instants.h"
 #include "quotes/quote.h"
 
@@ -27,6 +29,12 @@ inline constexpr std::string_view kForwardsHeader =
 inline constexpr std::string_view kViolationsHeader =
     "underlying,scope,kind,expiry,expiry_2,strike_1,strike_2,strike_3,amount,vol_points,"
     "half_spreads,legs\n";
+
+inline constexpr std::string_view kValuesHeader =
+    "expiry,tenor,year_fraction,forward,discount_factor,strike,log_moneyness,vol,put_call,price,"
+    "delta,gamma,vega,density,local_vol\n";
+inline constexpr std::string_view kSwapsHeader =
+    "expiry,tenor,year_fraction,forward,discount_factor,vol_at_forward,swap_vol,swap_variance\n";
 
 struct ForwardRow {
   quotes::Instant expiry;
@@ -55,5 +63,9 @@ std::string forwards_line(const ForwardRow& row, std::string_view underlying,
                           const quotes::Clock& clock);
 std::string violations_line(const arbitrage::Violation& violation, std::string_view underlying,
                             const quotes::Clock& clock);
+std::string values_line(const ValueTime& time, const ValueRow& row, InstantTexts& instants);
+// vol_at_forward in decimals a year.
+std::string swaps_line(const ValueTime& time, double vol_at_forward,
+                       const std::optional<surface::VarianceSwap>& swap, InstantTexts& instants);
 
 }  // namespace duskgrid::publish

@@ -49,6 +49,62 @@ std::pair<LogCurves, LogCurves> neighbours(const Surface& surface, double t) {
   return {logs_of(*(next - 1)), logs_of(*next)};
 }
 
+constexpr double kSqrtHalfPi = 1.2533141373155002512;
+
+// One end of a mixture of prices.
+struct Side {
+  double s, d1, slope, g;  // total vol, d1, ds/dk, Durrleman's function
+  Side(const SmilePoint& p, double k)
+      : s(std::sqrt(p.w)), d1(0.5 * s - k / s), slope(0.5 * p.dw_dk / s), g(durrleman(p, k)) {}
+};
+
+// n(from) / n(to).
+double relative_density(double from, double to) {
+  return std::exp(0.5 * (to - from) * (to + from));
+}
+
+struct Mixture {
+  double s;               // total vol of the mixed price
+  double rise_over_vega;  // later less earlier price, over vega at s
+};
+
+// Where prices are below the smallest double: the same by logarithms. ln b is all but linear in
+// 1/s^2 there, and so is solved by Newton in that variable from the end that holds the price.
+Mixture faint_mixture(double x, double first, double last, double weight) {
+  const auto exponent = [&](double s) { return -0.5 * (x * x / (s * s) + 0.25 * s * s); };
+  const auto log_price = [&](double s) {
+    return std::log(pricing::scaled_price(x, s)) + exponent(s);
+  };
+  const double early = log_price(first), late = log_price(last), top = std::max(early, late);
+  const double target =
+      top + std::log((1 - weight) * std::exp(early - top) + weight * std::exp(late - top));
+  constexpr int kMostSteps = 20;
+  constexpr double kSettled = 1e-15;
+  double s = weight == 1 || late > early ? last : first;
+  for (int i = 0; i < kMostSteps && weight != 1; ++i) {
+    const double price_over_vega = 2 * kSqrtHalfPi * pricing::scaled_price(x, s);
+    const double step = 2 * (log_price(s) - target) * price_over_vega / s;  // of 1/s^2, relative
+    s /= std::sqrt(1 + step);
+    if (!(std::abs(step) > kSettled)) break;
+  }
+  const auto over_vega = [&](double side) {
+    return 2 * kSqrtHalfPi * pricing::scaled_price(x, side) *
+           std::exp(exponent(side) - exponent(s));
+  };
+  return {s, over_vega(last) - over_vega(first)};
+}
+
+// At x = -|k| <= 0 of total vols `first` and `last`.
+Mixture mixture(double x, double first, double last, double weight) {
+  const double early = pricing::normalised_price(x, first);
+  const double late = pricing::normalised_price(x, last);
+  const double price = early + weight * (late - early);
+  if (x < 0 && !(price > std::numeric_limits<double>::min()))
+    return faint_mixture(x, first, last, weight);
+  const double s = weight == 1 ? last : pricing::invert_normalised(x, price);
+  return {s, (late - early) / pricing::normalised_vega(x, s)};
+}
+
 }  // namespace
 
 std::string_view word(Between rule) { return rule == Between::variance ? "variance" : "price"; }
@@ -103,48 +159,42 @@ SurfacePoint TimedSmile::at(double k) const {
           weight_slope_ * (b.w - a.w)};
 }
 
+std::vector<double> TimedSmile::breaks() const {
+  std::vector<double> out;
+  for (const Slice* slice : {early_, late_})
+    if (slice) out.insert(out.end(), slice->overlay.knots.begin(), slice->overlay.knots.end());
+  std::sort(out.begin(), out.end());
+  out.erase(std::unique(out.begin(), out.end()), out.end());
+  return out;
+}
+
 // Prices are undiscounted, over the forward, out of the money; n is the standard normal density,
 // and every price and derivative is kept over n(d1) of the mixed smile, so that far wings keep
 // their digits.
 SurfacePoint TimedSmile::mixed(const SmilePoint& a, const SmilePoint& b, double k) const {
-  struct Side {
-    double s, d1, slope, g;  // total vol, d1, ds/dk, Durrleman's function
-    Side(const SmilePoint& p, double at)
-        : s(std::sqrt(p.w)), d1(0.5 * s - at / s), slope(0.5 * p.dw_dk / s), g(durrleman(p, at)) {}
-  };
   const Side first(a, k), last(b, k);
-  const double x = -std::abs(k);
-  const double early_price = pricing::normalised_price(x, first.s);
-  const double late_price = pricing::normalised_price(x, last.s);
-  const double rise = late_price - early_price;
-  const double price = early_price + weight_ * rise;
-  // Too small for a number: the later smile is what is left.
-  if (!(price > std::numeric_limits<double>::min()) || !(rise > 0))
+  const Mixture mix = mixture(-std::abs(k), first.s, last.s, weight_);
+  const double s = mix.s;
+  // No number to be had from such slices: the later smile is what is left.
+  if (!(s > 0) || !std::isfinite(s) || !std::isfinite(mix.rise_over_vega))
     return {b.w, b.dw_dk, b.d2w_dk2, weight_slope_ * (b.w - a.w)};
-  if (weight_ == 1)
-    return {b.w, b.dw_dk, b.d2w_dk2,
-            2 * last.s * weight_slope_ * rise / pricing::normalised_vega(x, last.s)};
-  const double s = pricing::invert_normalised(x, price);
+  const double dw_dt = 2 * s * weight_slope_ * mix.rise_over_vega;
+  if (weight_ == 1) return {b.w, b.dw_dk, b.d2w_dk2, dw_dt};
   const double d1 = 0.5 * s - k / s;
-  // d price / dk = sign e^k N(sign d2) + n(d1) ds/dk, with sign + for puts, which are k < 0.
+  // d price / dk = sign e^k N(-sign d2) + n(d1) ds/dk, with sign + for puts, which are k < 0.
   const double sign = k < 0 ? 1 : -1;
-  const auto digital = [&](double d2) {  // e^k N(sign * -d2) / n(d1), by e^k = n(d1) / n(d2)
-    constexpr double kSqrtHalfPi = 1.2533141373155002512;
+  const auto digital = [&](double d2) {  // e^k N(-sign d2) / n(d1), by e^k = n(d1) / n(d2)
     return kSqrtHalfPi * pricing::scaled_erfc(sign * d2 / std::numbers::sqrt2);
   };
-  const auto relative = [&](const Side& side) {
-    return std::exp(0.5 * (d1 - side.d1) * (d1 + side.d1));
-  };
-  const double pa = (1 - weight_) * relative(first), pb = weight_ * relative(last);
+  const double pa = (1 - weight_) * relative_density(first.d1, d1);
+  const double pb = weight_ * relative_density(last.d1, d1);
   const double slope = pa * (sign * digital(first.d1 - first.s) + first.slope) +
                        pb * (sign * digital(last.d1 - last.s) + last.slope) -
                        sign * digital(d1 - s);
   const double g = s * (pa * first.g / first.s + pb * last.g / last.s);
   const double turn = 1 - k * slope / s;
   const double curvature = (g - turn * turn + 0.25 * s * s * slope * slope) / s;
-  const double vega = pricing::normalised_vega(x, s);
-  return {s * s, 2 * s * slope, 2 * (slope * slope + s * curvature),
-          2 * s * weight_slope_ * rise / vega};
+  return {s * s, 2 * s * slope, 2 * (slope * slope + s * curvature), dw_dt};
 }
 
 SurfacePoint point_at(const Surface& surface, double k, double t) {

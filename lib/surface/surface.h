@@ -59,6 +59,8 @@ class TimedSmile {
   TimedSmile(const Surface& surface, double year_fraction);
   SurfacePoint at(double k) const;
   double year_fraction() const { return t_; }
+  // Log-moneyness, increasing, where the third derivative in k may jump: the knots in use.
+  std::vector<double> breaks() const;
 
  private:
   SurfacePoint mixed(const SmilePoint& a, const SmilePoint& b, double k) const;

@@ -219,7 +219,7 @@ TEST_F(Command, OutputThatCannotBeMadeIsCannotCreate) {
 }
 
 TEST_F(Command, HelpOfEveryCommandShowsAnExampleAndEndsWithZero) {
-  for (const char* command : {"build", "survey", "check"}) {
+  for (const char* command : {"build", "survey", "check", "value"}) {
     const auto ran = duskgrid({command, "--help"});
     EXPECT_EQ(ran.status, 0);
     EXPECT_NE(ran.out.find("Example"), std::string::npos) << command;

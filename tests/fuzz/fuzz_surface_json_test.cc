@@ -1,12 +1,14 @@
 // Hostile stored surfaces: mutated at random they must give a failure that says something, or a
-// surface with parameters that a surface can have, which is stored and read again unchanged. The
-// seed of each run is its number, printed when it fails.
+// surface with parameters that a surface can have, which is stored and read again unchanged, and
+// whose values are numbers or said not to be. The seed of each run is its number, printed when it
+// fails.
 #include <gtest/gtest.h>
 
 #include <cmath>
 
 #include "mutate.h"
 #include "publish/surface_json.h"
+#include "surface/derived.h"
 
 namespace duskgrid::publish {
 namespace {
@@ -17,10 +19,14 @@ const std::vector<std::string>& seed_texts() {
   static const std::vector<std::string> kTexts = [] {
     const quotes::Instant as_of = std::chrono::sys_days{std::chrono::year{2031} / 3 / 14} + 21h;
     const quotes::Clock clock{"", std::chrono::minutes{-300}};
-    const surface::Surface two{"HALYRD",
-                               100.25,
-                               {{as_of + 2400h, 0.3, 101, 0.99, {0.01, -0.5, 0.15}, -0.3, 0.2},
-                                {as_of + 9000h, 1.03, 104, 0.97, {0.04, 0.25, 0.2}, -0.5, 0.5}}};
+    surface::Surface two{"HALYRD",
+                         100.25,
+                         {{as_of + 2400h, 0.3, 101, 0.99, {0.01, -0.5, 0.15}, -0.3, 0.2},
+                          {as_of + 9000h, 1.03, 104, 0.97, {0.04, 0.25, 0.2}, -0.5, 0.5}}};
+    two.slices[0].overlay = {{-0.3, -0.2, -0.1, 0, 0.1, 0.2}, {0.001, -0.002}};
+    two.slices[0].to_next = surface::Between::price;
+    two.slices[1].overlay = {{-0.5, -0.2, 0, 0.2, 0.5}, {0.003}};
+    two.horizon = 2;
     const surface::Surface one{
         "=K\"\xC3\xA9", {}, {{as_of + 24h, 1 / 365.0, 7, 1, {1e-5, 0, 0}, 0, 0}}};
     const quotes::AsOf night{as_of, clock};
@@ -68,7 +74,10 @@ const std::vector<std::string>& morsels() {
                                                  std::string(300, '9'),
                                                  std::string(300, '['),
                                                  "\"theta\": 1,",
-                                                 "\"slices\": [],"};
+                                                 "\"slices\": [],",
+                                                 "[0.1, 0.2]",
+                                                 "\"price\"",
+                                                 "\"horizon\": 1.5,"};
   return kMorsels;
 }
 
@@ -86,6 +95,25 @@ void check_surface(const surface::Surface& surface) {
     EXPECT_TRUE(positive(s.backbone.theta) && std::isfinite(s.backbone.psi));
     EXPECT_TRUE(s.backbone.psi >= 0 && std::abs(s.backbone.rho) < 1);
     EXPECT_TRUE(std::isfinite(s.k_low) && std::isfinite(s.k_high) && s.k_low <= s.k_high);
+    EXPECT_EQ(s.overlay.problem(), std::nullopt);
+  }
+  EXPECT_TRUE(surface.horizon == 0 || (surface.horizon >= last && surface.horizon <= 1e6));
+}
+
+void check_values(const surface::Surface& surface) {
+  for (const double t : {0.1, 0.3, 0.6, 1.5, 3.0}) {
+    const surface::TimedSmile smile(surface, t);
+    const auto carried = surface::carried_at(surface, t);
+    for (const double k : {-40.0, -0.25, 0.0, 0.05, 3.0})
+      if (const auto d = surface::derived_at(smile, carried, k)) {
+        EXPECT_TRUE(positive(d->strike) && positive(d->vol));
+        EXPECT_FALSE(std::isnan(d->price) || std::isnan(d->greeks.delta));
+        EXPECT_TRUE(std::isfinite(d->density.value_or(0)));
+        EXPECT_TRUE(std::isfinite(d->local_vol.value_or(0)));
+      }
+    if (const auto swap = surface::variance_swap(smile)) {
+      EXPECT_TRUE(positive(swap->vol));
+    }
   }
 }
 
@@ -106,6 +134,7 @@ TEST(FuzzSurfaceJson, MutatedTextsGiveAFailureOrASurfaceThatReloads) {
     const auto stored = surface_from_json(text, "halyrd.json");
     if (stored) {
       check_stored(*stored);
+      check_values(stored->surface);
       ++taken;
     } else {
       EXPECT_EQ(stored.failure().fault, Fault::not_quotes);

@@ -2,6 +2,7 @@
 
 #include <gtest/gtest.h>
 
+#include <algorithm>
 #include <bit>
 #include <cmath>
 #include <limits>
@@ -23,6 +24,16 @@ surface::Surface made() {
            {kInstant + 9000h + 7s, 1.03, 1.0 / 3, 0.97, {0.03, 0.25, 0}, -0.5, -0.5}}};
 }
 
+// With everything that a fit may add.
+surface::Surface fitted() {
+  auto surface = made();
+  surface.slices[0].overlay = {{-0.3, -0.2, -0.1, 1.0 / 30, 0.1, 0.2}, {0.001, -1.0 / 300}};
+  surface.slices[0].to_next = surface::Between::price;
+  surface.slices[1].to_next = surface::Between::price;
+  surface.horizon = 2.0 / 1.5;
+  return surface;
+}
+
 std::string text_of(const surface::Surface& surface) { return surface_to_json({kAsOf, surface}); }
 
 // The bits of everything a slice holds.
@@ -31,6 +42,11 @@ std::vector<std::uint64_t> bits_of(const surface::Slice& s) {
   for (const double v : {s.year_fraction, s.forward, s.discount_factor, s.backbone.theta,
                          s.backbone.rho, s.backbone.psi, s.k_low, s.k_high})
     bits.push_back(std::bit_cast<std::uint64_t>(v));
+  for (const auto& list : {s.overlay.knots, s.overlay.coefficients}) {
+    bits.push_back(list.size());
+    for (const double v : list) bits.push_back(std::bit_cast<std::uint64_t>(v));
+  }
+  bits.push_back(static_cast<std::uint64_t>(s.to_next));
   return bits;
 }
 
@@ -43,12 +59,37 @@ void expect_reloads(const surface::Surface& surface) {
   ASSERT_EQ(stored->surface.spot.has_value(), surface.spot.has_value());
   EXPECT_EQ(std::bit_cast<std::uint64_t>(stored->surface.spot.value_or(0)),
             std::bit_cast<std::uint64_t>(surface.spot.value_or(0)));
+  EXPECT_EQ(std::bit_cast<std::uint64_t>(stored->surface.horizon),
+            std::bit_cast<std::uint64_t>(surface.horizon));
   ASSERT_EQ(stored->surface.slices.size(), surface.slices.size());
   for (std::size_t i = 0; i < surface.slices.size(); ++i)
     EXPECT_EQ(bits_of(stored->surface.slices[i]), bits_of(surface.slices[i])) << "slice " << i;
 }
 
 TEST(SurfaceJson, SurfaceReloadsBitForBit) { expect_reloads(made()); }
+
+TEST(SurfaceJson, OverlaysRulesAndHorizonReloadBitForBit) {
+  expect_reloads(fitted());
+  auto surface = fitted();
+  std::swap(surface.slices[0].overlay, surface.slices[1].overlay);
+  surface.slices[0].to_next = surface::Between::variance;
+  surface.horizon = surface.slices[1].year_fraction;  // the earliest there may be
+  expect_reloads(surface);
+}
+
+TEST(SurfaceJson, ReloadedSurfaceHasTheSameSmiles) {
+  const auto surface = fitted();
+  const auto stored = surface_from_json(text_of(surface), "memory");
+  ASSERT_TRUE(stored.ok());
+  for (const double t : {0.1, 0.3, 0.7, 1.03, 1.2, 2.0})
+    for (const double k : {-0.4, -0.15, 0.0, 0.12}) {
+      const auto was = surface::point_at(surface, k, t);
+      const auto is = surface::point_at(stored->surface, k, t);
+      EXPECT_EQ(std::bit_cast<std::uint64_t>(is.w), std::bit_cast<std::uint64_t>(was.w));
+      EXPECT_EQ(std::bit_cast<std::uint64_t>(is.d2w_dk2),
+                std::bit_cast<std::uint64_t>(was.d2w_dk2));
+    }
+}
 
 TEST(SurfaceJson, SurfaceWithoutASpotReloads) {
   auto surface = made();
@@ -92,6 +133,10 @@ TEST(SurfaceJson, RandomDoublesReload) {
     s.backbone = {any_positive(), unit(random), any_positive()};
     s.k_low = -any_positive();
     s.k_high = any_positive();
+    std::vector<double> knots(8);
+    for (double& knot : knots) knot = (unit(random) < 0 ? -1 : 1) * any_positive();
+    std::sort(knots.begin(), knots.end());
+    s.overlay = {knots, {any_positive(), -any_positive(), unit(random), 0}};
     expect_reloads(surface);
     if (HasFailure()) FAIL() << "seed " << kSeed << ", case " << i;
   }
@@ -140,9 +185,9 @@ TEST(SurfaceJson, TextThatIsNoJsonIsRefused) {
 TEST(SurfaceJson, OtherFormIsRefused) { expect_refused(broken("surface/2", "surface/1")); }
 
 TEST(SurfaceJson, MissingFieldIsRefused) {
-  for (const char* key :
-       {"form", "underlying", "as_of", "spot", "slices", "expiry", "year_fraction", "forward",
-        "discount_factor", "theta", "rho", "psi", "k_low", "k_high"})
+  for (const char* key : {"form", "underlying", "as_of", "spot", "slices", "expiry",
+                          "year_fraction", "forward", "discount_factor", "theta", "rho", "psi",
+                          "k_low", "k_high", "knots", "coefficients", "to_next", "horizon"})
     expect_refused(broken("\"" + std::string(key) + "\"", "\"other\""));
 }
 
@@ -152,6 +197,19 @@ TEST(SurfaceJson, ValueOfAnotherKindIsRefused) {
     if (std::string(other) != "null") expect_refused(broken("100.25", other));
   }
   expect_refused(broken("\"HALYRD\"", "7"));
+}
+
+// A number, null or object passed for a list of what it holds.
+TEST(SurfaceJson, ListsAndRulesOfAnotherKindAreRefused) {
+  for (const char* key : {"knots", "coefficients"})
+    for (const char* other : {"null", "0", "\"\"", "{}", "[null]", "[true]", "[\"0\"]", "[[]]"}) {
+      const std::string piece = "\"" + std::string(key) + "\": ";
+      expect_refused(broken(piece + "[]", piece + other));
+    }
+  for (const char* other : {"null", "\"\"", "\"Price\"", "0", "[]"})
+    expect_refused(broken("\"variance\"", other));
+  for (const char* other : {"null", "\"0\"", "true", "[]"})
+    expect_refused(broken("\"horizon\": 0.0", "\"horizon\": " + std::string(other)));
 }
 
 TEST(SurfaceJson, DatesThatAreNoneAreRefused) {
@@ -187,6 +245,35 @@ TEST(SurfaceJson, ParametersNoSurfaceHasAreRefused) {
       with([](S& s) { s.slices[0].k_low = 0.3; }),
       with([](S& s) { s.slices[0].forward = Limits::quiet_NaN(); }),
       with([](S& s) { s.slices[0].k_high = Limits::infinity(); }),
+      with([](S& s) { s.horizon = -1; }),
+      with([](S& s) { s.horizon = 1.02; }),  // before the last slice
+      with([](S& s) { s.horizon = 2e6; }),
+      with([](S& s) { s.horizon = Limits::quiet_NaN(); }),
+      with([](S& s) { s.horizon = Limits::infinity(); }),
+      with([](S& s) {
+        s.slices[0].overlay = {{}, {0.1}};
+      }),
+      with([](S& s) {
+        s.slices[0].overlay = {{-0.3, -0.1, 0.1, 0.3}, {}};
+      }),  // too few
+      with([](S& s) {
+        s.slices[0].overlay = {{-0.3, -0.1, 0, 0.1, 0.3}, {}};
+      }),
+      with([](S& s) {
+        s.slices[0].overlay = {{-0.3, -0.1, 0, 0.1, 0.3}, {0.1, 0.1}};
+      }),
+      with([](S& s) {
+        s.slices[0].overlay = {{-0.3, -0.1, 0, 0, 0.3}, {0.1}};
+      }),
+      with([](S& s) {
+        s.slices[0].overlay = {{-0.3, 0, -0.1, 0.1, 0.3}, {0.1}};
+      }),
+      with([](S& s) {
+        s.slices[0].overlay = {{-0.3, -0.1, 0, 0.1, Limits::infinity()}, {0.1}};
+      }),
+      with([](S& s) {
+        s.slices[0].overlay = {{-0.3, -0.1, 0, 0.1, 0.3}, {Limits::quiet_NaN()}};
+      }),
   };
   for (std::size_t i = 0; i < kBroken.size(); ++i) {
     SCOPED_TRACE(i);

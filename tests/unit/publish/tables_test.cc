@@ -3,6 +3,7 @@
 #include <gtest/gtest.h>
 
 #include <algorithm>
+#include <cmath>
 
 namespace duskgrid::publish {
 namespace {
@@ -204,6 +205,39 @@ TEST(ViolationsLine, LegsAreGuardedAndSecondExpiryIsOfCalendarsOnly) {
   EXPECT_EQ(cell(kViolationsHeader, line, "expiry_2"), "2031-06-21T16:00:00-05:00");
   EXPECT_TRUE(cell(kViolationsHeader, line, "legs").starts_with("'+1 C 95 2031-06-20 @6; -1 C 100"))
       << line;
+}
+
+const ValueTime kTime{kExpiry, "3M", 0.25, {101.5, 0.99}};
+
+TEST(ValuesLine, EveryNumberStandsUnderItsHeader) {
+  InstantTexts instants(kClock);
+  const surface::Derived derived{95, 0.2, quotes::PutCall::put, 1.5, {-0.25, 0.03, 9.5}, 0.02, 0.3};
+  const auto line = values_line(kTime, {95, -0.0625, derived}, instants);
+  EXPECT_EQ(line,
+            "2031-06-20T16:00:00-05:00,3M,0.25,101.5,0.99,95,-0.0625,0.2,P,1.5,-0.25,0.03,9.5,"
+            "0.02,0.3\n");
+  EXPECT_EQ(cells_of(line).size(), cells_of(kValuesHeader).size());
+  EXPECT_EQ(cell(kValuesHeader, line, "vega"), "9.5");
+  EXPECT_EQ(cell(kValuesHeader, line, "local_vol"), "0.3");
+}
+
+TEST(ValuesLine, NumbersThatDoNotExistAreEmptyCells) {
+  InstantTexts instants(kClock);
+  surface::Derived derived{95, 0.2, quotes::PutCall::call, 1.5, {0.25, 0.03, 9.5}, {}, {}};
+  const auto line = values_line(kTime, {95, -0.0625, derived}, instants);
+  EXPECT_TRUE(line.ends_with(",9.5,,\n")) << line;
+  const auto bare = values_line(kTime, {INFINITY, 800, {}}, instants);
+  EXPECT_EQ(cells_of(bare).size(), cells_of(kValuesHeader).size());
+  EXPECT_TRUE(bare.ends_with(",0.99,,800,,,,,,,,\n")) << bare;
+}
+
+TEST(SwapsLine, AStrikeThatDoesNotExistIsAnEmptyCell) {
+  InstantTexts instants(kClock);
+  const auto line = swaps_line(kTime, 0.2, surface::VarianceSwap{0.0625, 0.25}, instants);
+  EXPECT_EQ(line, "2031-06-20T16:00:00-05:00,3M,0.25,101.5,0.99,0.2,0.25,0.0625\n");
+  EXPECT_EQ(cells_of(line).size(), cells_of(kSwapsHeader).size());
+  EXPECT_EQ(swaps_line(kTime, 0.2, {}, instants),
+            "2031-06-20T16:00:00-05:00,3M,0.25,101.5,0.99,0.2,,\n");
 }
 
 TEST(InstantTexts, EachInstantHasItsOwnTextHoweverOftenAsked) {

@@ -84,6 +84,22 @@ TEST(SmileAtTime, OneSliceServesEveryTime) {
   EXPECT_NEAR(vol_at(s, 0.0, 4.0), vol_at(s, 0.0, 0.25), kRounding);
 }
 
+// Where the later of two crossing slices is the lower one, the smile jumped to it.
+TEST(SmileAtTime, PricesMixAlsoWhereTheSlicesCross) {
+  Surface s = made();
+  s.slices.resize(2);
+  s.slices[0].to_next = Between::price;
+  s.slices[0].backbone = {0.02, 0, 0.25};
+  s.slices[1].backbone = {0.03, 0, 0};  // flat, and below the first from |k| = 0.14 on
+  const TimedSmile half(s, 0.5);
+  for (const double k : {-2.0, -0.5, 0.5, 2.0}) {
+    const double first = smile_at(s.slices[0].backbone, k).w, w = half.at(k).w;
+    EXPECT_GT(w, 0.03) << k;
+    EXPECT_LT(w, first) << k;
+    EXPECT_LT(half.at(k).dw_dt, 0) << k;
+  }
+}
+
 TEST(CarriedAt, AtASliceIsTheSlices) {
   const Carried c = carried_at(made(), 0.75);
   EXPECT_EQ(c.forward, 103);
