@@ -1,0 +1,477 @@
+#include "arbitrage/certificate.h"
+
+#include <fmt/format.h>
+
+#include <algorithm>
+#include <cmath>
+#include <limits>
+#include <utility>
+
+#include "arbitrage/enclosure.h"
+#include "arbitrage/exact_sum.h"
+#include "arbitrage/search.h"
+
+namespace duskgrid::arbitrage {
+namespace {
+
+using surface::SliceParameters;
+
+constexpr double kInfinity = std::numeric_limits<double>::infinity();
+
+// ---- Conditions on backbones, by exact signs (docs/methods.md 5.1) ----
+
+// 4 - psi (1 +- rho).
+ExactSum wing_room(const SliceParameters& p, double sign) {
+  return ExactSum().add(4).add(-p.psi).add_product(-sign * p.psi, p.rho);
+}
+
+// B1 and B2: with them a slice has no butterfly arbitrage (Gatheral & Jacquier 2014, theorem 4.2),
+// nor has it with any constant added to w (theorem 4.3).
+bool meets_b(const SliceParameters& p) {
+  if (!wing_room(p, -1).positive() || !wing_room(p, 1).positive()) return false;
+  const double rho = std::abs(p.rho), high = p.psi * p.psi, low = std::fma(p.psi, p.psi, -high);
+  if (p.psi != 0 && !(high > 0x1p-700)) return false;
+  return ExactSum()
+      .add(4 * p.theta)
+      .add(-high)
+      .add(-low)
+      .add_product(-high, rho)
+      .add_product(-low, rho)
+      .not_negative();
+}
+
+// psi (1 +- rho) of b less that of a.
+ExactSum wing_step(const SliceParameters& a, const SliceParameters& b, double sign) {
+  return ExactSum()
+      .add(b.psi)
+      .add(-a.psi)
+      .add_product(sign * b.psi, b.rho)
+      .add_product(-sign * a.psi, a.rho);
+}
+
+// C1 and C2, and theta not falling: with them w of b is nowhere below that of a.
+bool meets_c(const SliceParameters& a, const SliceParameters& b) {
+  return wing_step(a, b, -1).not_negative() && wing_step(a, b, 1).not_negative() &&
+         ExactSum().add_product(a.psi, b.theta).add_product(-b.psi, a.theta).not_negative() &&
+         b.theta >= a.theta;
+}
+
+// ---- Smiles and the ranges they are looked at over ----
+
+struct Smile {
+  Hyperbola backbone;
+  std::vector<Cubic> pieces;
+};
+
+struct Stretch {
+  double low, high;
+  const Cubic* first;  // null: no overlay here
+  const Cubic* second;
+};
+
+// The ranges between the knots of both smiles; with `outside`, widened to where the tails begin.
+struct Ranges {
+  std::vector<Stretch> stretches;
+  double left_tail, right_tail;  // |k| > 0 where they begin
+};
+
+const Cubic* piece_over(const Smile* smile, double low, double high) {
+  if (!smile) return nullptr;
+  const auto& pieces = smile->pieces;
+  const auto after = std::upper_bound(pieces.begin(), pieces.end(), low,
+                                      [](double k, const Cubic& p) { return k < p.start; });
+  if (after == pieces.begin()) return nullptr;
+  const Cubic& piece = *(after - 1);
+  return piece.end >= high ? &piece : nullptr;
+}
+
+Ranges ranges_of(const Smile& first, const Smile* second, bool outside) {
+  std::vector<double> marks;
+  double reach = first.backbone.reach();
+  for (const Cubic& p : first.pieces) marks.push_back(p.start);
+  if (!first.pieces.empty()) marks.push_back(first.pieces.back().end);
+  if (second) {
+    for (const Cubic& p : second->pieces) marks.push_back(p.start);
+    if (!second->pieces.empty()) marks.push_back(second->pieces.back().end);
+    reach = std::max(reach, second->backbone.reach());
+  }
+  std::sort(marks.begin(), marks.end());
+  Ranges out{{}, reach, reach};
+  if (!marks.empty()) {
+    out.left_tail = std::max(reach, -marks.front());
+    out.right_tail = std::max(reach, marks.back());
+  }
+  if (outside) {
+    marks.insert(marks.begin(), -out.left_tail);
+    marks.push_back(out.right_tail);
+  }
+  for (std::size_t i = 0; i + 1 < marks.size(); ++i) {
+    if (!(marks[i] < marks[i + 1])) continue;
+    const Cubic* a = piece_over(&first, marks[i], marks[i + 1]);
+    const Cubic* b = piece_over(second, marks[i], marks[i + 1]);
+    if (outside || a || b) out.stretches.push_back({marks[i], marks[i + 1], a, b});
+  }
+  return out;
+}
+
+// Runs over the stretches, and over both tails as ranges of y = 1/|k| from 0.
+template <class InStretch, class InTail>
+void run(Search& search, const Ranges& ranges, bool tails, InStretch in_stretch, InTail in_tail) {
+  for (const Stretch& s : ranges.stretches)
+    search.over(
+        {s.low, s.high}, [&](const Box& box) { return in_stretch(s, box); },
+        [](double k) { return k; });
+  if (!tails) return;
+  for (const bool left : {true, false}) {
+    const double most = affine_rounding::above(1 / (left ? ranges.left_tail : ranges.right_tail));
+    search.over(
+        {0, most}, [&](const Box& box) { return in_tail(left, box); },
+        [&](double y) { return (left ? -1 : 1) / y; });
+  }
+}
+
+// ---- Durrleman's function ----
+
+// A smile as g needs it. In k: lead = 2w - k w' and unit = 1. In the tails, where w and w'' stand
+// for y w and w'': lead = y (2w - k w') = 2 y w - w', and unit = y. Both give
+//   n = lead^2 + w (2 w w'' - unit w'^2) - (w w')^2 / 4,
+// which is 4 w^2 g, in the tails times y^2.
+struct Turned {
+  Form form;
+  Affine lead, unit;
+};
+
+Turned turned(const Form& form, const Affine& k) {
+  return {form, scaled(form.w, 2) - k * form.slope, 1.0};
+}
+
+Turned turned_tail(const Hyperbola& backbone, const Affine& y) {
+  const Form form = backbone.tail(y);
+  return {form, scaled(form.w, 2) - form.slope, y};
+}
+
+Form form_of(const Smile& smile, const Cubic* piece, const Affine& k) {
+  const Form backbone = smile.backbone.at(k);
+  return piece ? total_vol(backbone, *piece, k).squared() : backbone;
+}
+
+Look look_at_g(const Affine& scaled_g, const Affine& size, const Affine& vol) {
+  Look look{};
+  if (vol.upper_at_centre() <= 0) return {-kInfinity, vol.upper_at_centre(), vol.c, true};
+  look.least = vol.lower() > 0 ? scaled_g.lower() : -kInfinity;
+  look.most = vol.lower_at_centre() > 0 ? scaled_g.upper_at_centre() : kInfinity;
+  look.value = scaled_g.c / size.c;
+  return look;
+}
+
+Look durrleman_of(const Turned& t) {
+  const auto& [w, slope, bend] = t.form;
+  const Affine n = square(t.lead) + w * (scaled(w * bend, 2) - t.unit * square(slope)) -
+                   scaled(square(w * slope), 0.25);
+  return look_at_g(n, scaled(square(w), 4), w);
+}
+
+// s^2 g = (s - k s')^2 - (s^2 s')^2 / 4 + s^3 s''.
+Look durrleman_of(const VolForm& vol, const Affine& k) {
+  const auto& [s, slope, bend] = vol;
+  const Affine s2 = square(s);
+  const Affine n = square(s - k * slope) - scaled(square(s2 * slope), 0.25) + s2 * (s * bend);
+  return look_at_g(n, s2, s);
+}
+
+Search butterfly(const Smile& smile, bool by_theorem, std::int64_t budget) {
+  Search search(budget);
+  run(
+      search, ranges_of(smile, nullptr, !by_theorem), !by_theorem,
+      [&](const Stretch& stretch, const Box& box) {
+        const Affine k = Affine::range(box.low, box.high);
+        const Form form = smile.backbone.at(k);
+        return stretch.first ? durrleman_of(total_vol(form, *stretch.first, k), k)
+                             : durrleman_of(turned(form, k));
+      },
+      [&, mirrored = smile.backbone.mirrored()](bool left, const Box& box) {
+        return durrleman_of(
+            turned_tail(left ? mirrored : smile.backbone, Affine::range(box.low, box.high)));
+      });
+  return search;
+}
+
+// ---- Calendar ----
+
+Look step_of(const Affine& step, double size) {
+  return {step.lower(), step.upper_at_centre(), step.c / size};
+}
+
+// (root + u)^2 - root^2.
+Affine overlay_variance(const Form& backbone, const Cubic& piece, const Affine& k) {
+  const Affine u = overlay_over(piece, k).s;
+  return u * (scaled(sqrt(backbone.w), 2) + u);
+}
+
+Affine variance(const Smile& smile, const Cubic* piece, const Affine& k) {
+  const Form form = smile.backbone.at(k);
+  return piece ? form.w + overlay_variance(form, *piece, k) : form.w;
+}
+
+Search calendar(const Smile& first, const Smile& second, bool by_theorem, std::int64_t budget) {
+  Search search(budget);
+  run(
+      search, ranges_of(first, &second, !by_theorem), !by_theorem,
+      [&](const Stretch& s, const Box& box) {
+        const Affine k = Affine::range(box.low, box.high);
+        return step_of(variance(second, s.second, k) - variance(first, s.first, k), 1);
+      },
+      [&, left_first = first.backbone.mirrored(), left_second = second.backbone.mirrored()](
+          bool left, const Box& box) {
+        const Affine y = Affine::range(box.low, box.high);
+        return step_of((left ? left_second : second.backbone).tail(y).w -
+                           (left ? left_first : first.backbone).tail(y).w,
+                       box.centre());
+      });
+  return search;
+}
+
+// The faded smile is the backbone's total variance plus `shift` >= 0.
+Search fading(const Smile& last, const Affine& shift, std::int64_t budget) {
+  Search search(budget);
+  run(
+      search, ranges_of(last, nullptr, false), false,
+      [&](const Stretch& s, const Box& box) {
+        const Affine k = Affine::range(box.low, box.high);
+        return step_of(shift - overlay_variance(last.backbone.at(k), *s.first, k), 1);
+      },
+      [](bool, const Box&) { return Look{}; });
+  return search;
+}
+
+// ---- Between two smiles, w = (1 - weight) w1 + weight w2 ----
+
+Turned at_weight(const Turned& a, const Turned& b, double weight) {
+  if (weight == 0) return a;
+  if (weight == 1) return b;
+  const Affine late = weight, early = 1.0 - late;
+  const auto mix = [&](const Affine& x, const Affine& y) { return early * x + late * y; };
+  return {{mix(a.form.w, b.form.w), mix(a.form.slope, b.form.slope), mix(a.form.bend, b.form.bend)},
+          mix(a.lead, b.lead),
+          a.unit};
+}
+
+// n of Turned is a polynomial of degree 4 in the weight. A polynomial is nowhere below the least of
+// its Bernstein coefficients (G. Farin, Curves and Surfaces for CAGD, chapter 6), here over weights
+// from a to b. With square brackets for coefficients, lead^2 = [p0 p1 p2], 2 w w'' - unit w'^2 =
+// [e0 e1 e2], w^2 = [x0 x1 x2] and w'^2 = [y0 y1 y2]; products and degrees raised by the usual
+// rules.
+Look durrleman_between(const Turned& a, const Turned& b) {
+  const auto& [wa, da, ha] = a.form;
+  const auto& [wb, db, hb] = b.form;
+  const Affine p0 = square(a.lead), p1 = a.lead * b.lead, p2 = square(b.lead);
+  const Affine x0 = square(wa), x1 = wa * wb, x2 = square(wb);
+  const Affine y0 = square(da), y1 = da * db, y2 = square(db);
+  const Affine e0 = scaled(wa * ha, 2) - a.unit * y0, e1 = wa * hb + wb * ha - a.unit * y1,
+               e2 = scaled(wb * hb, 2) - a.unit * y2;
+  const Affine early = e0 + scaled(e1, 2), late = e2 + scaled(e1, 2);
+  // Times 1, 4, 6, 4, 1, which are also their weights half way, up to the sum of 16.
+  const Affine n0 = p0 + wa * e0 - scaled(x0 * y0, 0.25);
+  const Affine n1 = scaled(p0 + p1, 2) + wa * early + wb * e0 - scaled(x0 * y1 + x1 * y0, 0.5);
+  const Affine n2 = p0 + scaled(p1, 4) + p2 + wa * late + wb * early -
+                    scaled(x0 * y2 + scaled(x1 * y1, 4) + x2 * y0, 0.25);
+  const Affine n3 = scaled(p1 + p2, 2) + wb * late + wa * e2 - scaled(x1 * y2 + x2 * y1, 0.5);
+  const Affine n4 = p2 + wb * e2 - scaled(x2 * y2, 0.25);
+  const Affine middle = scaled(n0 + n1 + n2 + n3 + n4, 0.0625);
+  const Affine w = scaled(wa + wb, 0.5);
+  Look look{kInfinity, middle.upper_at_centre(), middle.c / (4 * w.c * w.c)};
+  for (const Affine* n : {&n0, &n1, &n2, &n3, &n4}) {
+    const double least = n->lower();
+    if (least < look.least || std::isnan(least)) look.least = least;  // then NaN stays
+    look.split_weight = look.split_weight || n->upper_at_centre() < 0;
+  }
+  return look;
+}
+
+Search between(const Smile& first, const Smile& second, bool outside, std::int64_t budget) {
+  Search search(budget);
+  const auto look = [](const Turned& a, const Turned& b, const Box& box) {
+    return durrleman_between(at_weight(a, b, box.weight_low), at_weight(a, b, box.weight_high));
+  };
+  run(
+      search, ranges_of(first, &second, outside), outside,
+      [&](const Stretch& s, const Box& box) {
+        const Affine k = Affine::range(box.low, box.high);
+        return look(turned(form_of(first, s.first, k), k), turned(form_of(second, s.second, k), k),
+                    box);
+      },
+      [&, left_first = first.backbone.mirrored(), left_second = second.backbone.mirrored()](
+          bool left, const Box& box) {
+        const Affine y = Affine::range(box.low, box.high);
+        return look(turned_tail(left ? left_first : first.backbone, y),
+                    turned_tail(left ? left_second : second.backbone, y), box);
+      });
+  return search;
+}
+
+// ---- The surface ----
+
+bool in_range(const surface::Surface& surface) {
+  double before = 0;
+  for (const auto& s : surface.slices) {
+    const auto& p = s.backbone;
+    if (!(s.year_fraction > before) || !std::isfinite(s.year_fraction)) return false;
+    if (!(p.theta > 0) || !std::isfinite(p.theta) || !(std::abs(p.rho) < 1)) return false;
+    if (!(p.psi >= 0) || !std::isfinite(p.psi) || s.overlay.problem()) return false;
+    before = s.year_fraction;
+  }
+  return !surface.slices.empty() && std::isfinite(surface.horizon) && surface.horizon >= 0;
+}
+
+class Certifier {
+ public:
+  Certifier(const surface::Surface& surface, std::int64_t budget)
+      : surface_(surface), budget_(budget) {
+    smiles_.reserve(surface.slices.size());
+    for (const auto& s : surface.slices)
+      smiles_.push_back({Hyperbola::of(s.backbone), pieces_of(s.overlay)});
+    const auto& last = surface.slices.back();
+    const Affine t = last.year_fraction;
+    // theta (h / t - 1), and not below 0.
+    if (surface.horizon > last.year_fraction)
+      shift_ = Affine(last.backbone.theta) * ((surface.horizon - t) / t);
+  }
+
+  Certificate run() {
+    for (std::size_t i = 0; i < smiles_.size(); ++i) {
+      slice(i);
+      if (i + 1 < smiles_.size()) step(i);
+      if (has_variance_rule(i)) note(Proof::between, i, time_between(i));
+    }
+    horizon();
+    out_.certified = out_.findings.empty();
+    return std::move(out_);
+  }
+
+  // Whether a time strictly after slice i and before the next, or the horizon, has the rule.
+  bool has_variance_rule(std::size_t i) const {
+    if (surface_.slices[i].to_next != surface::Between::variance) return false;
+    return i + 1 < smiles_.size() || surface_.horizon > surface_.slices[i].year_fraction;
+  }
+
+  Search time_between(std::size_t i) const {
+    const auto& first = surface_.slices[i].backbone;
+    if (i + 1 == smiles_.size()) {
+      // Beyond the overlay this is the backbone with a constant added: theorem 4.3, whose
+      // conditions are those of horizon().
+      const Smile faded{Hyperbola::of(first, shift_), {}};
+      return between(smiles_[i], faded, false, budget_);
+    }
+    // Where the first smile is flat, w is a multiple, by the weight <= 1, of the second with a
+    // constant added: theorem 4.3 again, and the argument of time_before_first().
+    const bool by_theorem = first.psi == 0 && meets_b(surface_.slices[i + 1].backbone);
+    return between(smiles_[i], smiles_[i + 1], !by_theorem, budget_);
+  }
+
+ private:
+  void note(Proof proof, std::size_t i, const Search& search) {
+    out_.boxes += search.used;
+    if (search.proved()) return;
+    if (search.broken && search.positive_fails) proof = Proof::positive;
+    out_.findings.push_back({proof, i, search.k, search.value, search.broken});
+  }
+
+  // Times before the first slice need no more than that slice: there w = a w1 with 0 < a <= 1, and
+  //   4 w^2 g / a^2 = (2 w1 - k w1')^2 + a w1 (2 w1 w1'' - w1'^2) - a^2 (w1 w1')^2 / 4
+  // is concave in a, a square at a = 0 and not negative at a = 1: not negative between. And w
+  // grows.
+  void slice(std::size_t i) {
+    const auto& p = surface_.slices[i].backbone;
+    for (const double sign : {-1.0, 1.0}) {
+      // Lee 2004: g tends to 1/4 - m^2 / 16 in a wing of slope m = psi (1 +- rho) / 2.
+      if (!wing_room(p, sign).negative()) continue;
+      const double m = 0.5 * p.psi * (1 + sign * p.rho);
+      out_.findings.push_back(
+          {Proof::butterfly, i, sign * kInfinity, 0.25 * (1 - 0.25 * m * m), true});
+      return;
+    }
+    note(Proof::butterfly, i, butterfly(smiles_[i], meets_b(p), budget_));
+  }
+
+  void step(std::size_t i) {
+    const auto& a = surface_.slices[i].backbone;
+    const auto& b = surface_.slices[i + 1].backbone;
+    for (const double sign : {-1.0, 1.0}) {
+      // The wing with the smaller slope ends below the other.
+      if (!wing_step(a, b, sign).negative()) continue;
+      const double fall = 0.5 * (b.psi * (1 + sign * b.rho) - a.psi * (1 + sign * a.rho));
+      out_.findings.push_back({Proof::calendar, i, sign * kInfinity, fall, true});
+      return;
+    }
+    note(Proof::calendar, i, calendar(smiles_[i], smiles_[i + 1], meets_c(a, b), budget_));
+  }
+
+  // After the horizon the backbone grows by a constant: Gatheral & Jacquier 2014, theorem 4.3. Up
+  // to it, the overlay fades: at the same time, if there is none later.
+  void horizon() {
+    const std::size_t i = smiles_.size() - 1;
+    if (!meets_b(surface_.slices[i].backbone))
+      out_.findings.push_back({Proof::horizon, i, 0, 0, false});
+    note(Proof::horizon, i, fading(smiles_[i], shift_, budget_));
+  }
+
+  const surface::Surface& surface_;
+  std::int64_t budget_;
+  std::vector<Smile> smiles_;
+  Affine shift_;
+  Certificate out_{false, {}, 0};
+};
+
+}  // namespace
+
+std::string_view word(Proof proof) {
+  switch (proof) {
+    case Proof::parameters: return "parameters";
+    case Proof::positive: return "positive";
+    case Proof::butterfly: return "butterfly";
+    case Proof::calendar: return "calendar";
+    case Proof::between: return "between";
+    case Proof::horizon: return "horizon";
+  }
+  return "";
+}
+
+std::optional<std::string> CertificateOptions::problem() const {
+  if (most_boxes < 1) return fmt::format("most_boxes = {}, must be >= 1", most_boxes);
+  return std::nullopt;
+}
+
+Certificate certify(const surface::Surface& surface, const CertificateOptions& options) {
+  if (!in_range(surface) || options.problem())
+    return {false, {{Proof::parameters, 0, 0, 0, false}}, 0};
+  return Certifier(surface, options.most_boxes).run();
+}
+
+surface::Surface with_proved_rules(surface::Surface surface, const CertificateOptions& options) {
+  const bool usable = in_range(surface) && !options.problem();
+  std::vector<std::size_t> unproved;
+  if (usable) {
+    const Certifier certifier(surface, options.most_boxes);
+    for (std::size_t i = 0; i < surface.slices.size(); ++i)
+      if (certifier.has_variance_rule(i) && !certifier.time_between(i).proved())
+        unproved.push_back(i);
+  }
+  for (std::size_t i = 0; i < surface.slices.size(); ++i)
+    if (!usable || std::find(unproved.begin(), unproved.end(), i) != unproved.end())
+      surface.slices[i].to_next = surface::Between::price;
+  return surface;
+}
+
+Certificate certify_smile(const Hyperbola& backbone, const surface::Overlay& overlay,
+                          const CertificateOptions& options) {
+  if (overlay.problem() || options.problem())
+    return {false, {{Proof::parameters, 0, 0, 0, false}}, 0};
+  const Search search = butterfly({backbone, pieces_of(overlay)}, false, options.most_boxes);
+  Certificate out{search.proved(), {}, search.used};
+  if (search.proved()) return out;
+  const Proof proof = search.broken && search.positive_fails ? Proof::positive : Proof::butterfly;
+  out.findings.push_back({proof, 0, search.k, search.value, search.broken});
+  return out;
+}
+
+}  // namespace duskgrid::arbitrage

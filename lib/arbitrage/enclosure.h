@@ -1,0 +1,59 @@
+// Enclosures of a smile and its derivatives over a range of log-moneyness, for certificate.h.
+#pragma once
+
+#include <vector>
+
+#include "arbitrage/affine.h"
+#include "surface/backbone.h"
+#include "surface/overlay.h"
+
+namespace duskgrid::arbitrage {
+
+// J. Gatheral's raw SVI: w = a + b (rho (k - m) + sqrt((k - m)^2 + sigma^2)).
+struct RawSlice {
+  double a, b, rho, m, sigma;
+};
+
+// w and its first two derivatives in k; in the tails, with y = 1 / k, they are y w, dw/dk and
+// d2w/dk2 (see tail()).
+struct Form {
+  Affine w, slope, bend;
+};
+
+// w = level + tilt k + sqrt((stretch k + offset)^2 + breadth), whose parts are exact up to the
+// rounding kept with them: the backbone and raw SVI.
+struct Hyperbola {
+  Affine level, tilt, stretch, offset, breadth;
+
+  // shift is added to total variance.
+  static Hyperbola of(const surface::SliceParameters& slice, const Affine& shift = 0.0);
+  static Hyperbola of(const RawSlice& slice);
+
+  Form at(const Affine& k) const;
+  // At k = 1 / y, y >= 0, also at y = 0, where all are limits.
+  Form tail(const Affine& y) const;
+  // The same smile with k for -k.
+  Hyperbola mirrored() const { return {level, -tilt, stretch, -offset, breadth}; }
+  // Where the bend gives way to the wings: the k > 0 past which tails are looked at in y.
+  double reach() const;
+};
+
+// One piece of an overlay: u = sum of a[i] (k - start)^i.
+struct Cubic {
+  double start, end;
+  Affine a0, a1, a2, a3;
+};
+
+// The pieces between neighbouring knots, in order.
+std::vector<Cubic> pieces_of(const surface::Overlay& overlay);
+
+// Total volatility s and its first two derivatives in k.
+struct VolForm {
+  Affine s, slope, bend;
+  Form squared() const;
+};
+// u over one piece; zero without a piece.
+VolForm overlay_over(const Cubic& piece, const Affine& k);
+VolForm total_vol(const Form& backbone, const Cubic& piece, const Affine& k);
+
+}  // namespace duskgrid::arbitrage
