@@ -37,7 +37,8 @@ struct Affine {
   double c = 0, d = 0, e = 0;
 
   constexpr Affine() = default;
-  constexpr Affine(double exact) : c(exact) {}  // NOLINT: a double is an exact number
+  // A double is an exact number, unless it is infinite or none: then e is not a number.
+  constexpr Affine(double exact) : c(exact), e(exact - exact) {}  // NOLINT: implicit
   constexpr Affine(double centre, double slope, double error) : c(centre), d(slope), e(error) {}
 
   // Every real of [low, high]; xi says where.

@@ -3,6 +3,7 @@
 #include <fmt/format.h>
 
 #include <algorithm>
+#include <array>
 #include <cmath>
 #include <limits>
 #include <utility>
@@ -157,7 +158,8 @@ Form form_of(const Smile& smile, const Cubic* piece, const Affine& k) {
 
 Look look_at_g(const Affine& scaled_g, const Affine& size, const Affine& vol) {
   Look look{};
-  if (vol.upper_at_centre() <= 0) return {-kInfinity, vol.upper_at_centre(), vol.c, true};
+  // Nothing is worse.
+  if (vol.upper_at_centre() <= 0) return {-kInfinity, -kInfinity, vol.c, true};
   look.least = vol.lower() > 0 ? scaled_g.lower() : -kInfinity;
   look.most = vol.lower_at_centre() > 0 ? scaled_g.upper_at_centre() : kInfinity;
   look.value = scaled_g.c / size.c;
@@ -271,20 +273,29 @@ Look durrleman_between(const Turned& a, const Turned& b) {
                e2 = scaled(wb * hb, 2) - a.unit * y2;
   const Affine early = e0 + scaled(e1, 2), late = e2 + scaled(e1, 2);
   // Times 1, 4, 6, 4, 1, which are also their weights half way, up to the sum of 16.
-  const Affine n0 = p0 + wa * e0 - scaled(x0 * y0, 0.25);
-  const Affine n1 = scaled(p0 + p1, 2) + wa * early + wb * e0 - scaled(x0 * y1 + x1 * y0, 0.5);
-  const Affine n2 = p0 + scaled(p1, 4) + p2 + wa * late + wb * early -
-                    scaled(x0 * y2 + scaled(x1 * y1, 4) + x2 * y0, 0.25);
-  const Affine n3 = scaled(p1 + p2, 2) + wb * late + wa * e2 - scaled(x1 * y2 + x2 * y1, 0.5);
-  const Affine n4 = p2 + wb * e2 - scaled(x2 * y2, 0.25);
-  const Affine middle = scaled(n0 + n1 + n2 + n3 + n4, 0.0625);
+  const std::array<Affine, 5> n{
+      p0 + wa * e0 - scaled(x0 * y0, 0.25),
+      scaled(p0 + p1, 2) + wa * early + wb * e0 - scaled(x0 * y1 + x1 * y0, 0.5),
+      p0 + scaled(p1, 4) + p2 + wa * late + wb * early -
+          scaled(x0 * y2 + scaled(x1 * y1, 4) + x2 * y0, 0.25),
+      scaled(p1 + p2, 2) + wb * late + wa * e2 - scaled(x1 * y2 + x2 * y1, 0.5),
+      p2 + wb * e2 - scaled(x2 * y2, 0.25)};
+  const Affine middle = scaled(n[0] + n[1] + n[2] + n[3] + n[4], 0.0625);
   const Affine w = scaled(wa + wb, 0.5);
   Look look{kInfinity, middle.upper_at_centre(), middle.c / (4 * w.c * w.c)};
-  for (const Affine* n : {&n0, &n1, &n2, &n3, &n4}) {
-    const double least = n->lower();
+  constexpr std::array<double, 5> kShare{1, 0.25, 1.0 / 6, 0.25, 1};
+  double lowest = kInfinity, highest = -kInfinity, reach = 0;
+  for (std::size_t i = 0; i < n.size(); ++i) {
+    const double least = kShare[i] * n[i].lower(), centre = kShare[i] * n[i].c;
     if (least < look.least || std::isnan(least)) look.least = least;  // then NaN stays
-    look.split_weight = look.split_weight || n->upper_at_centre() < 0;
+    if (centre < lowest) {
+      lowest = centre;
+      reach = kShare[i] * (std::abs(n[i].d) + n[i].e);
+    }
+    highest = std::max(highest, centre);
   }
+  // Halve what the coefficient in the way varies with most.
+  look.split_weight = lowest < 0 && highest - lowest > reach;
   return look;
 }
 
@@ -317,7 +328,9 @@ bool in_range(const surface::Surface& surface) {
     const auto& p = s.backbone;
     if (!(s.year_fraction > before) || !std::isfinite(s.year_fraction)) return false;
     if (!(p.theta > 0) || !std::isfinite(p.theta) || !(std::abs(p.rho) < 1)) return false;
-    if (!(p.psi >= 0) || !std::isfinite(p.psi) || s.overlay.problem()) return false;
+    // Half of psi is to be exact.
+    if (!(p.psi == 0 || p.psi > 0x1p-1000) || !std::isfinite(p.psi)) return false;
+    if (s.overlay.problem()) return false;
     before = s.year_fraction;
   }
   return !surface.slices.empty() && std::isfinite(surface.horizon) && surface.horizon >= 0;
@@ -396,11 +409,15 @@ class Certifier {
   void step(std::size_t i) {
     const auto& a = surface_.slices[i].backbone;
     const auto& b = surface_.slices[i + 1].backbone;
+    // The wing with the smaller slope ends below the other.
+    Finding worst{Proof::calendar, i, 0, kInfinity, true};
     for (const double sign : {-1.0, 1.0}) {
-      // The wing with the smaller slope ends below the other.
       if (!wing_step(a, b, sign).negative()) continue;
       const double fall = 0.5 * (b.psi * (1 + sign * b.rho) - a.psi * (1 + sign * a.rho));
-      out_.findings.push_back({Proof::calendar, i, sign * kInfinity, fall, true});
+      if (fall < worst.value) worst = {Proof::calendar, i, sign * kInfinity, fall, true};
+    }
+    if (worst.k != 0) {
+      out_.findings.push_back(worst);
       return;
     }
     note(Proof::calendar, i, calendar(smiles_[i], smiles_[i + 1], meets_c(a, b), budget_));

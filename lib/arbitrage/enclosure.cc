@@ -61,29 +61,32 @@ Hyperbola Hyperbola::of(const surface::SliceParameters& s, const Affine& shift) 
 
 Hyperbola Hyperbola::of(const RawSlice& s) {
   const Affine b = s.b, tilt = b * s.rho;
-  return {s.a - tilt * s.m, tilt, b, -(b * s.m), square(b * s.sigma)};
+  return {s.a - tilt * s.m, tilt, s.b, -(b * s.m), square(b * s.sigma)};
 }
 
 // w' = tilt + stretch z / root and w'' = stretch^2 breadth / root^3, z = stretch k + offset.
 Form Hyperbola::at(const Affine& k) const {
-  const Affine z = stretch * k + offset;
+  const Affine z = scaled(k, stretch) + offset;
   const Affine root = arbitrage::sqrt(square(z) + breadth);
   const Affine inverse = reciprocal(root);
-  const Affine part = stretch * inverse;
+  const Affine part = scaled(inverse, stretch);
   return {level + tilt * k + root, tilt + part * z, square(part) * (breadth * inverse)};
 }
 
-// With z = stretch + offset y and root = sqrt(z^2 + breadth y^2), both y times those above.
+// With z = stretch + offset y and root = sqrt(z^2 + breadth y^2), both y times those above. Without
+// stretch the root is y times a constant.
 Form Hyperbola::tail(const Affine& y) const {
+  if (stretch == 0)
+    return {tilt + (level + arbitrage::sqrt(square(offset) + breadth)) * y, tilt, 0.0};
   const Affine z = stretch + offset * y;
   const Affine root = arbitrage::sqrt(square(z) + breadth * square(y));
   const Affine inverse = reciprocal(root);
-  const Affine part = stretch * inverse, near = y * inverse;
+  const Affine part = scaled(inverse, stretch), near = y * inverse;
   return {tilt + level * y + root, tilt + part * z, square(part) * (breadth * (square(y) * near))};
 }
 
 double Hyperbola::reach() const {
-  const double k = (std::abs(offset.c) + std::sqrt(std::max(breadth.c, 0.0))) / stretch.c;
+  const double k = (std::abs(offset.c) + std::sqrt(std::max(breadth.c, 0.0))) / stretch;
   return std::isfinite(k) && k > 0 ? k : 1;
 }
 

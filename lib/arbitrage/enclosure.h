@@ -23,7 +23,9 @@ struct Form {
 // w = level + tilt k + sqrt((stretch k + offset)^2 + breadth), whose parts are exact up to the
 // rounding kept with them: the backbone and raw SVI.
 struct Hyperbola {
-  Affine level, tilt, stretch, offset, breadth;
+  Affine level, tilt;
+  double stretch;  // >= 0; 0 for a straight line
+  Affine offset, breadth;
 
   // shift is added to total variance.
   static Hyperbola of(const surface::SliceParameters& slice, const Affine& shift = 0.0);

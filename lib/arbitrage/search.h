@@ -75,7 +75,7 @@ struct Search {
 
  private:
   static constexpr int kMostDepth = 60;  // beyond the digits of a double
-  static constexpr int kMostWeightDepth = 12;
+  static constexpr int kMostWeightDepth = 40;
   static constexpr double kWorthwhile = 1.01;        // a break is worth improving by 1 %
   static constexpr std::int64_t kAfterBreak = 500;   // boxes spent on improving it
   static constexpr std::int64_t kAfterOpen = 2'000;  // and on finding one where rounding hides it
@@ -86,7 +86,8 @@ struct Search {
   }
 
   void note_break(const Look& look, double at) {
-    if (broken && !(look.value < value)) return;
+    if (broken && look.positive_fails == positive_fails && !(look.value < value)) return;
+    if (positive_fails && !look.positive_fails) return;
     broken = true;
     positive_fails = look.positive_fails;
     k = at;
