@@ -15,10 +15,15 @@
 #pragma once
 
 #include <algorithm>
+#include <cfloat>
 #include <cmath>
 #include <limits>
 
 namespace duskgrid::arbitrage {
+
+// Every operation rounds to a double, to nearest.
+static_assert(std::numeric_limits<double>::is_iec559 && FLT_EVAL_METHOD == 0);
+static_assert(std::numeric_limits<double>::round_style == std::round_to_nearest);
 
 namespace affine_rounding {
 inline constexpr double kUnit = std::numeric_limits<double>::epsilon() / 2;  // u

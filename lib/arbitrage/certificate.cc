@@ -429,7 +429,11 @@ class Certifier {
     const std::size_t i = smiles_.size() - 1;
     if (!meets_b(surface_.slices[i].backbone))
       out_.findings.push_back({Proof::horizon, i, 0, 0, false});
-    note(Proof::horizon, i, fading(smiles_[i], shift_, budget_));
+    // B-splines are not negative: without a positive coefficient the overlay only rises as it
+    // fades.
+    const auto& coefficients = surface_.slices[i].overlay.coefficients;
+    if (std::any_of(coefficients.begin(), coefficients.end(), [](double c) { return c > 0; }))
+      note(Proof::horizon, i, fading(smiles_[i], shift_, budget_));
   }
 
   const surface::Surface& surface_;
