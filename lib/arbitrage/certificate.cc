@@ -204,15 +204,15 @@ Look step_of(const Affine& step, double size) {
   return {step.lower(), step.upper_at_centre(), step.c / size};
 }
 
-// (root + u)^2 - root^2.
-Affine overlay_variance(const Form& backbone, const Cubic& piece, const Affine& k) {
+// (root + u)^2 - root^2, root^2 = backbone.
+Affine overlay_variance(const Affine& backbone, const Cubic& piece, const Affine& k) {
   const Affine u = overlay_over(piece, k).s;
-  return u * (scaled(sqrt(backbone.w), 2) + u);
+  return u * (scaled(sqrt(backbone), 2) + u);
 }
 
 Affine variance(const Smile& smile, const Cubic* piece, const Affine& k) {
-  const Form form = smile.backbone.at(k);
-  return piece ? form.w + overlay_variance(form, *piece, k) : form.w;
+  const Affine backbone = smile.backbone.variance_at(k);
+  return piece ? backbone + overlay_variance(backbone, *piece, k) : backbone;
 }
 
 Search calendar(const Smile& first, const Smile& second, bool by_theorem, std::int64_t budget) {
@@ -240,7 +240,7 @@ Search fading(const Smile& last, const Affine& shift, std::int64_t budget) {
       search, ranges_of(last, nullptr, false), false,
       [&](const Stretch& s, const Box& box) {
         const Affine k = Affine::range(box.low, box.high);
-        return step_of(shift - overlay_variance(last.backbone.at(k), *s.first, k), 1);
+        return step_of(shift - overlay_variance(last.backbone.variance_at(k), *s.first, k), 1);
       },
       [](bool, const Box&) { return Look{}; });
   return search;

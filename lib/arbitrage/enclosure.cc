@@ -73,6 +73,10 @@ Form Hyperbola::at(const Affine& k) const {
   return {level + tilt * k + root, tilt + part * z, square(part) * (breadth * inverse)};
 }
 
+Affine Hyperbola::variance_at(const Affine& k) const {
+  return level + tilt * k + arbitrage::sqrt(square(scaled(k, stretch) + offset) + breadth);
+}
+
 // With z = stretch + offset y and root = sqrt(z^2 + breadth y^2), both y times those above. Without
 // stretch the root is y times a constant.
 Form Hyperbola::tail(const Affine& y) const {

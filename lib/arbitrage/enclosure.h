@@ -32,6 +32,7 @@ struct Hyperbola {
   static Hyperbola of(const RawSlice& slice);
 
   Form at(const Affine& k) const;
+  Affine variance_at(const Affine& k) const;  // w alone
   // At k = 1 / y, y >= 0, also at y = 0, where all are limits.
   Form tail(const Affine& y) const;
   // The same smile with k for -k.

@@ -5,6 +5,7 @@
 #include <algorithm>
 #include <array>
 #include <boost/multiprecision/cpp_bin_float.hpp>
+#include <boost/multiprecision/cpp_int.hpp>
 #include <cmath>
 #include <functional>
 #include <limits>
@@ -197,6 +198,25 @@ TEST(Certify, EqualCurvatureIsCertified) {
   }
 }
 
+// B2, psi^2 (1 + |rho|) <= 4 theta, at its bound and one unit to either side, against rationals.
+TEST(Certify, ConditionsOnTheLastBackboneAreDecidedExactly) {
+  using Rational = boost::multiprecision::cpp_rational;
+  Random random(21);
+  int met = 0, missed = 0;
+  for (int trial = 0; trial < 600; ++trial) {
+    SliceParameters p{0, uniform(random, -0.9, 0.9), uniform(random, 0.01, 1)};
+    p.theta = 0.25 * (p.psi * p.psi * (1 + std::abs(p.rho)));
+    if (trial % 3) p.theta = std::nextafter(p.theta, trial % 3 == 1 ? 0 : 1);
+    const Rational psi = p.psi, rho = std::abs(p.rho), theta = p.theta;
+    const bool holds = psi * psi * (1 + rho) <= 4 * theta;
+    const auto c = certify({"EDGE", {}, {slice_at(1, p)}});
+    EXPECT_EQ(found(c, Proof::horizon, 0) == nullptr, holds) << trial;
+    (holds ? met : missed) += 1;
+  }
+  EXPECT_GT(met, 100);
+  EXPECT_GT(missed, 100);
+}
+
 TEST(Certify, CalendarArbitrageOfTheTailsAloneIsFound) {
   Random random(6);
   for (int trial = 0; trial < 200; ++trial) {
@@ -215,6 +235,48 @@ TEST(Certify, CalendarArbitrageOfTheTailsAloneIsFound) {
     EXPECT_LT(b.psi * (1 + wing * b.rho), a.psi * (1 + wing * a.rho));
     EXPECT_LE(f->value, 0);
   }
+}
+
+TEST(Certify, FlatSlicesThatFallAreRefused) {
+  const auto c = certify({"FALL", {}, {slice_at(0.5, {0.02, 0, 0}), slice_at(1, {0.019, 0, 0})}});
+  const Finding* f = found(c, Proof::calendar, 0);
+  ASSERT_NE(f, nullptr);
+  EXPECT_TRUE(f->broken);
+  constexpr double kRounding = 4 * 0.02 * std::numeric_limits<double>::epsilon();
+  EXPECT_NEAR(f->value, -0.001, kRounding);
+}
+
+// C1 alone does not order two slices: whether they cross is for the ranges to say.
+TEST(Certify, SlicesWhoseCurvatureRisesAreRefusedExactlyWhenPointsSayTheyCross) {
+  Random random(20);
+  int crossing = 0, ordered = 0;
+  for (int trial = 0; trial < 2000; ++trial) {
+    const SliceParameters a{0.04, uniform(random, -0.8, 0.8), uniform(random, 0.01, 0.15)};
+    const SliceParameters b{0.04 * uniform(random, 1, 1.5), uniform(random, -0.8, 0.8),
+                            uniform(random, 0.05, 0.25)};
+    if (b.psi * (1 + b.rho) <= a.psi * (1 + a.rho) || b.psi * (1 - b.rho) <= a.psi * (1 - a.rho) ||
+        b.psi / b.theta <= a.psi / a.theta)
+      continue;
+    double least = kInfinity;
+    for (int i = -2000; i <= 2000; ++i) {
+      const double k = 0.2 * std::sinh(5e-3 * i);
+      least = std::min(least, surface::smile_at(b, k).w - surface::smile_at(a, k).w);
+    }
+    const auto c = certify({"CURL", {}, {slice_at(0.5, a), slice_at(1, b)}});
+    const Finding* f = found(c, Proof::calendar, 0);
+    constexpr double kBetweenPoints = 1e-6;  // (w'' / 2) (step of k / 2)^2, near the money
+    if (least < 0) {
+      ASSERT_NE(f, nullptr) << trial;
+      EXPECT_TRUE(f->broken);
+      EXPECT_LT(surface::smile_at(b, f->k).w, surface::smile_at(a, f->k).w);
+      ++crossing;
+    } else if (least > kBetweenPoints) {
+      EXPECT_EQ(f, nullptr) << trial << ' ' << list(c);
+      ++ordered;
+    }
+  }
+  EXPECT_GT(crossing, 50);
+  EXPECT_GT(ordered, 50);
 }
 
 // psi (1 + |rho|) = 4.2: R. Lee, Mathematical Finance 14 (2004) 469-480.
@@ -338,6 +400,8 @@ TEST(Certify, NarrowBumpsThatBreakTheButterflyAreAllFoundAndSmallerOnesCertified
   Random random(9);
   for (int trial = 0; trial < 200; ++trial) {
     Surface s = random_backbones(random, 3);
+    // One in four has wings so steep that the term in w'^2 / 16 matters.
+    if (trial % 4 == 3) s.slices = {slice_at(1, {2, uniform(random, -0.4, 0.4), 2.2})};
     const auto which = static_cast<std::size_t>(trial) % s.slices.size();
     Slice& slice = s.slices[which];
     const double deviation = std::sqrt(slice.backbone.theta);
