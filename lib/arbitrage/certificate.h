@@ -40,6 +40,7 @@ struct Finding {
   double k;           // where; infinite for a wing as a whole
   // At k: total volatility (positive), g (butterfly, between), step of total variance (calendar,
   // horizon); at an infinite k the limit of g, or the step of the wing's slope.
+  // Where nothing was decided, the value computed there, 0 if none was.
   double value;
   bool broken;  // true: arbitrage, proved at k (in far wings k is rounded); false: not decided
 };

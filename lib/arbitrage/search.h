@@ -4,6 +4,7 @@
 
 #include <algorithm>
 #include <array>
+#include <cmath>
 #include <cstddef>
 #include <cstdint>
 
@@ -99,7 +100,7 @@ struct Search {
     if (open) return;
     open = true;
     k = at;
-    value = look.value;
+    value = std::isfinite(look.value) ? look.value : 0;
   }
 };
 
