@@ -20,7 +20,7 @@ add_stage(surface
   NEEDS duskgrid::pricing PRIVATE_NEEDS Boost::boost Eigen3::Eigen fmt::fmt)
 
 add_stage(arbitrage
-  SOURCES grid_checks.cc quote_checks.cc surface_checks.cc violation.cc
+  SOURCES certificate.cc enclosure.cc grid_checks.cc quote_checks.cc surface_checks.cc violation.cc
   NEEDS duskgrid::surface PRIVATE_NEEDS fmt::fmt)
 
 add_stage(publish

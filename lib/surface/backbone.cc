@@ -21,6 +21,10 @@ constexpr Eigen::Index kPerSlice = 3;
 constexpr double kLargestRho = 0.999;
 // theta may not stand still: a calendar margin far below any price. In units of total variance.
 constexpr double kLeastGrowth = 1e-12;
+// Kept within the conditions, relative, so that the numbers as rounded satisfy them exactly and the
+// certificate need not argue about last digits.
+constexpr double kWingMargin = 1e-12;
+constexpr double kGrowthMargin = 1e-10;
 // Short of 1 so that the strict inequalities of the parametrisation stay strict after rounding.
 constexpr double kLargestC = 0.9999;
 // Pulls, in half-spreads per unit, on what a slice with under five quotes cannot tell: towards its
@@ -50,15 +54,15 @@ std::vector<Slice<T>> map_parameters(const std::vector<T>& q) {
     }
     const T up = (1.0 + out[i - 1].rho) / (1.0 + out[i].rho);
     const T down = (1.0 - out[i - 1].rho) / (1.0 - out[i].rho);
-    p[i] = up > down ? up : down;
-    out[i].theta = out[i - 1].theta * p[i] + q[kPerSlice * i + 1];
+    p[i] = (1 + kWingMargin) * (up > down ? up : down);
+    out[i].theta = (1 + kGrowthMargin) * out[i - 1].theta * p[i] + q[kPerSlice * i + 1];
   }
   // Largest psi_i that leaves room for itself and every later slice.
   for (std::size_t i = n; i-- > 0;) {
     const T slope = 1.0 + (out[i].rho < 0 ? T(-out[i].rho) : out[i].rho);
     const T by_wing = 4.0 / slope;
     const T by_curvature = sqrt(T(4.0 * out[i].theta / slope));
-    reach[i] = by_wing < by_curvature ? by_wing : by_curvature;
+    reach[i] = (1 - kWingMargin) * (by_wing < by_curvature ? by_wing : by_curvature);
     if (i + 1 < n) {
       const T later = reach[i + 1] / p[i + 1];
       if (later < reach[i]) reach[i] = later;
