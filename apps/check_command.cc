@@ -4,6 +4,7 @@
 #include <fstream>
 #include <iterator>
 
+#include "arbitrage/certificate.h"
 #include "arbitrage/grid_checks.h"
 #include "arbitrage/surface_checks.h"
 #include "commands.h"
@@ -22,6 +23,7 @@ struct CheckArguments {
 
 struct Tally {
   std::size_t violations = 0;
+  std::size_t unproved = 0;  // surfaces
   bool header = false;
 
   void print(const std::vector<arbitrage::Violation>& found, const std::string& underlying,
@@ -45,14 +47,25 @@ Result<bool> check_grid_file(const std::string& path, double tolerance, Tally& t
   return true;
 }
 
+// "certified", or each statement that is not proved and where.
+std::string verdict(const arbitrage::Certificate& certificate) {
+  if (certificate.certified) return "certified: proved free of arbitrage";
+  std::string out = "not certified";
+  for (const auto& f : certificate.findings)
+    out += fmt::format("; {} of expiry {} {} near k {:.6g}", arbitrage::word(f.proof), f.slice + 1,
+                       f.broken ? "broken" : "not decided", f.k);
+  return out;
+}
+
 Result<bool> check_surface_file(const std::string& path, const std::string& text, Tally& tally) {
   const auto stored = publish::surface_from_json(text, path);
   if (!stored) return stored.failure();
-  const auto check = arbitrage::check_surface(stored->surface);
-  tally.print(check.violations, stored->surface.underlying, stored->as_of.clock);
-  fmt::print(stderr, "{}: {} expiries, arbitrages found on dense points: {}, least g {:.3g}\n",
-             stored->surface.underlying, stored->surface.slices.size(), check.violations.size(),
-             check.least_durrleman);
+  const auto certificate = arbitrage::certify(stored->surface);
+  const auto found = arbitrage::violations_of(stored->surface, certificate);
+  tally.print(found, stored->surface.underlying, stored->as_of.clock);
+  fmt::print(stderr, "{}: {} expiries, {}\n", stored->surface.underlying,
+             stored->surface.slices.size(), verdict(certificate));
+  tally.unproved += certificate.certified ? 0 : 1;
   return true;
 }
 
@@ -73,7 +86,7 @@ int check(const CheckArguments& args) {
   for (const auto& path : args.files)
     if (auto checked = check_file(path, args.tolerance, tally); !checked)
       return console::report(checked.failure());
-  return tally.violations == 0 ? console::kDone : console::kFlagged;
+  return tally.violations == 0 && tally.unproved == 0 ? console::kDone : console::kFlagged;
 }
 
 }  // namespace
@@ -94,12 +107,15 @@ void add_check(CLI::App& program, int& status) {
                    "need about 10^-d sqrt(years)")
       ->capture_default_str();
   command->footer(
-      "Prints violations as CSV on standard output, a line a grid on standard error.\n\n"
+      "A grid is checked at its nodes. A stored surface is proved free of arbitrage\n"
+      "everywhere, or where it is not is found. Violations go as CSV to standard\n"
+      "output, a line a grid or surface to standard error.\n\n"
       "Examples:\n"
       "  duskgrid check marks/2031-03-14/grid.csv\n"
       "  duskgrid check --tolerance 1e-5 theirs.csv > breaks.csv\n"
       "  duskgrid check marks/2031-03-14/surfaces/*.json\n\n"
-      "Exit status: 0 none found; 3 some found; 65 not such a file; 66 no input.");
+      "Exit status: 0 none found; 3 some found, or a surface is not proved; 65 not such a file; 66 "
+      "no input.");
   command->callback([args, &status] { status = check(*args); });
 }
 

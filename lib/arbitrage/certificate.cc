@@ -227,8 +227,7 @@ Look growth_of(const Turned& t) {
   const auto& [w, slope, bend] = t.form;
   const Affine rise = 4.0 - scaled(square(slope), 0.25) + scaled(bend, 2);
   // 4 k w' = 4 (2 w - lead).
-  const Affine turn =
-      scaled(w * (rise - 4.0), 2) + scaled(t.lead, 4) - t.unit * square(slope);
+  const Affine turn = scaled(w * (rise - 4.0), 2) + scaled(t.lead, 4) - t.unit * square(slope);
   Look look{std::min(rise.lower(), turn.lower()),
             std::min(rise.upper_at_centre(), turn.upper_at_centre()), std::min(rise.c, turn.c)};
   // Neither condition is necessary: nothing is ever proved broken.

@@ -33,9 +33,7 @@ struct Hyperbola {
   Form at(const Affine& k) const;
   Affine variance_at(const Affine& k) const;  // w alone
   // The same smile with a constant added.
-  Hyperbola raised(const Affine& by) const {
-    return {level + by, tilt, stretch, offset, breadth};
-  }
+  Hyperbola raised(const Affine& by) const { return {level + by, tilt, stretch, offset, breadth}; }
   // At k = 1 / y, y >= 0, also at y = 0, where all are limits.
   Form tail(const Affine& y) const;
   // The same smile with k for -k.

@@ -24,12 +24,20 @@ struct Stage {
   double forward, discount_factor;
 };
 
+Stage stage_at(const surface::Surface& surface, double t, quotes::Instant expiry) {
+  const auto carried = surface::carried_at(surface, t);
+  return {t, expiry, surface::TimedSmile(surface, t), carried.forward, carried.discount_factor};
+}
+
+Stage stage_of(const surface::Surface& surface, std::size_t slice) {
+  const auto& s = surface.slices[slice];
+  return stage_at(surface, s.year_fraction, s.expiry);
+}
+
 std::vector<Stage> stages_of(const surface::Surface& surface) {
   std::vector<Stage> out;
   const auto add = [&](double t, quotes::Instant expiry) {
-    const auto carried = surface::carried_at(surface, t);
-    out.push_back(
-        {t, expiry, surface::TimedSmile(surface, t), carried.forward, carried.discount_factor});
+    out.push_back(stage_at(surface, t, expiry));
   };
   for (std::size_t i = 0; i < surface.slices.size(); ++i) {
     const auto& s = surface.slices[i];
@@ -97,6 +105,48 @@ Violation calendar_at(const Stage& early, const Stage& late, double k) {
           .vol_points = vol_points(early, k, amount),
           .half_spreads = kNaN,
           .legs = {sold, bought}};
+}
+
+// Wide enough that what it locks in is not lost in the rounding of its prices: the best of several.
+Violation best_butterfly_at(const Stage& stage, double k) {
+  constexpr int kWidths = 30;
+  const double widest = 0.1 * std::sqrt(stage.smile.at(0).w);
+  Violation best = butterfly_at(stage, k, widest);
+  for (int i = 1; i < kWidths; ++i) {
+    Violation v = butterfly_at(stage, k, widest * std::exp2(-i));
+    if (v.amount > best.amount || std::isnan(best.amount)) best = std::move(v);
+  }
+  return best;
+}
+
+// The time between two slices at which g is worst at k.
+Stage worst_between(const surface::Surface& surface, std::size_t slice, double k) {
+  constexpr int kParts = 64;
+  const auto &a = surface.slices[slice], &b = surface.slices[slice + 1];
+  int worst = 1;
+  double least = kInfinity;
+  for (int i = 1; i < kParts; ++i) {
+    const double t = std::lerp(a.year_fraction, b.year_fraction, static_cast<double>(i) / kParts);
+    const double g = durrleman_at(surface::TimedSmile(surface, t), k);
+    if (g < least) least = g, worst = i;
+  }
+  const double t = std::lerp(a.year_fraction, b.year_fraction, static_cast<double>(worst) / kParts);
+  return stage_at(surface, t, a.expiry + (b.expiry - a.expiry) * worst / kParts);
+}
+
+// Far out in a wing that is broken as a whole.
+double finite(double k, const Stage& stage) {
+  return std::isfinite(k) ? k : std::copysign(20 * std::sqrt(stage.smile.at(0).w), k);
+}
+
+Violation violation_of(const surface::Surface& surface, const Finding& f) {
+  const Stage stage = stage_of(surface, f.slice);
+  const double k = finite(f.k, stage);
+  if (f.proof == Proof::calendar) return calendar_at(stage, stage_of(surface, f.slice + 1), k);
+  Violation v = f.proof == Proof::between ? best_butterfly_at(worst_between(surface, f.slice, k), k)
+                                          : best_butterfly_at(stage, k);
+  if (!std::isfinite(f.k)) v.kind = Kind::wing;
+  return v;
 }
 
 class Checker {
@@ -173,6 +223,14 @@ class Checker {
 };
 
 }  // namespace
+
+std::vector<Violation> violations_of(const surface::Surface& surface,
+                                     const Certificate& certificate) {
+  std::vector<Violation> out;
+  for (const Finding& f : certificate.findings)
+    if (f.broken) out.push_back(violation_of(surface, f));
+  return out;
+}
 
 SurfaceCheck check_surface(const surface::Surface& surface, const SurfaceCheckOptions& options) {
   return Checker(surface, options).run();

@@ -4,6 +4,7 @@
 
 #include <vector>
 
+#include "arbitrage/certificate.h"
 #include "arbitrage/violation.h"
 #include "surface/surface.h"
 
@@ -26,5 +27,10 @@ struct SurfaceCheck {
 // g and the steps of w may fall short of zero by rounding only.
 SurfaceCheck check_surface(const surface::Surface& surface,
                            const SurfaceCheckOptions& options = {});
+
+// The trades behind what a certificate found broken, in its order: where it was found, with legs as
+// near to one another as prices of doubles can tell apart. Undecided findings have none.
+std::vector<Violation> violations_of(const surface::Surface& surface,
+                                     const Certificate& certificate);
 
 }  // namespace duskgrid::arbitrage

@@ -213,6 +213,18 @@ const std::vector<Field<surface::BackboneOptions>>& backbone_fields() {
   return fields;
 }
 
+const std::vector<Field<surface::OverlayOptions>>& overlay_fields() {
+  using O = surface::OverlayOptions;
+  static const std::vector<Field<O>> fields{
+      field<O>("most_coefficients", "0 or 6 to 64",
+               "most coefficients of a slice's spline over the backbone; 0 for the backbone alone",
+               DUSKGRID_AT(most_coefficients), to_count),
+      field<O>("most_rounds", ">= 1", "most rounds of linearised no-arbitrage conditions",
+               DUSKGRID_AT(most_rounds), to_count),
+  };
+  return fields;
+}
+
 const std::vector<Field<publish::GridOptions>>& grid_fields() {
   using G = publish::GridOptions;
   static const std::vector<Field<G>> fields{
@@ -264,6 +276,7 @@ void each_table(Config& config, Visit visit) {
   visit("parity", parity_fields(), config.parity);
   visit("selection", selection_fields(), config.selection);
   visit("backbone", backbone_fields(), config.backbone);
+  visit("overlay", overlay_fields(), config.overlay);
   visit("grid", grid_fields(), config.grid);
   visit("flags", flag_fields(), config.flags);
 }
@@ -395,6 +408,7 @@ std::optional<std::string> problem_of(const NightConfig& c) {
   if (auto p = in("parity", c.parity.problem())) return p;
   if (auto p = in("selection", c.selection.problem())) return p;
   if (auto p = in("backbone", c.backbone.problem())) return p;
+  if (auto p = in("overlay", c.overlay.problem())) return p;
   if (auto p = in("grid", c.grid.problem())) return p;
   if (c.spot && !(*c.spot > 0)) return fmt::format("spot = {}, must be > 0", *c.spot);
   if (!(c.flags.most_missed >= 0 && c.flags.most_missed <= 1))

@@ -14,7 +14,7 @@
 #include "publish/grid.h"
 #include "quotes/clean.h"
 #include "quotes/load.h"
-#include "surface/backbone.h"
+#include "surface/fit.h"
 
 namespace duskgrid::night {
 
@@ -45,6 +45,7 @@ struct NightConfig {
   market::ParityOptions parity;
   pricing::SelectionOptions selection;
   surface::BackboneOptions backbone;
+  surface::OverlayOptions overlay;
   publish::GridOptions grid;
   FlagOptions flags;
 };

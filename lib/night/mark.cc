@@ -5,6 +5,7 @@
 #include <algorithm>
 #include <cmath>
 
+#include "arbitrage/certificate.h"
 #include "arbitrage/quote_checks.h"
 #include "arbitrage/surface_checks.h"
 #include "market/day_count.h"
@@ -65,10 +66,7 @@ class Marker {
     fit();
     judge_fit();
     check_the_quotes();
-    if (out_.surface) {
-      check_the_surface();
-      sample();
-    }
+    if (out_.surface) sample();
     conclude();
     return std::move(out_);
   }
@@ -189,7 +187,8 @@ class Marker {
       if (s.forward)
         for (const auto row : s.rows->rows)
           if (const Quote& q = quote(row); q.reason == Reason::none)
-            target.quotes.push_back({k_of(q, s), q.vol_mid, 0.5 * (q.vol_ask - q.vol_bid)});
+            target.quotes.push_back(
+                {k_of(q, s), q.vol_mid, 0.5 * (q.vol_ask - q.vol_bid), q.vol_bid, q.vol_ask});
       if (target.quotes.empty()) continue;
       const auto [low, high] =
           std::minmax_element(target.quotes.begin(), target.quotes.end(),
@@ -205,14 +204,39 @@ class Marker {
       targets.push_back(std::move(target));
     }
     if (targets.empty()) return;
-    const auto fit = surface::fit_backbone(targets, config_.backbone);
+    surface::FitOptions options{config_.backbone, config_.overlay};
+    fit_and_prove(targets, options, surface);
+    if (out_.surface && !out_.record.certified && options.overlay.most_coefficients > 0) {
+      // The backbone alone meets fewer quotes, but is free of arbitrage by construction.
+      options.overlay.most_coefficients = 0;
+      fit_and_prove(targets, options, surface);
+      flag("overlay given up, not proved free of arbitrage");
+    }
+    if (out_.surface && !out_.record.certified) report_unproved();
+  }
+
+  void fit_and_prove(const std::vector<surface::FitSlice>& targets,
+                     const surface::FitOptions& options, surface::Surface surface) {
+    const auto fit = surface::fit_surface(targets, options);
     if (!fit) {
       flag("fit failed: " + fit.failure().text());
       return;
     }
-    for (std::size_t i = 0; i < targets.size(); ++i) surface.slices[i].backbone = fit->slices[i];
-    if (fit->end == surface::FitEnd::stopped_early) flag("fit stopped early");
-    out_.surface = std::move(surface);
+    for (std::size_t i = 0; i < targets.size(); ++i) {
+      surface.slices[i].backbone = fit->slices[i].backbone;
+      surface.slices[i].overlay = fit->slices[i].overlay;
+    }
+    if (fit->backbone_end == surface::FitEnd::stopped_early) flag("fit stopped early");
+    out_.surface = arbitrage::with_proved_rules(std::move(surface));
+    certificate_ = arbitrage::certify(*out_.surface);
+    out_.record.certified = certificate_.certified;
+  }
+
+  void report_unproved() {
+    const auto found = arbitrage::violations_of(*out_.surface, certificate_);
+    flag(found.empty() ? "not proved free of arbitrage"
+                       : counted(found.size(), "arbitrage") + " in the surface");
+    out_.violations.insert(out_.violations.end(), found.begin(), found.end());
   }
 
   // vol_fit of every quote of a fitted expiry, and how far used ones are missed.
@@ -284,17 +308,11 @@ class Marker {
       if (s.forward)
         firm.push_back({s.rows->expiry, s.year_fraction, s.forward->forward,
                         s.forward->discount_factor, s.american, firm_strikes(s)});
-    out_.violations = arbitrage::check_quotes(firm);
-    if (!out_.violations.empty())
-      flag(fmt::format("{} among the quotes", counted(out_.violations.size(), "arbitrage")));
-  }
-
-  void check_the_surface() {
-    auto check = arbitrage::check_surface(*out_.surface);
-    if (check.violations.empty()) return;
-    flag(fmt::format("{} in the surface", counted(check.violations.size(), "arbitrage")));
-    std::move(check.violations.begin(), check.violations.end(),
-              std::back_inserter(out_.violations));
+    auto found = arbitrage::check_quotes(firm);
+    if (!found.empty())
+      flag(fmt::format("{} among the quotes", counted(found.size(), "arbitrage")));
+    out_.violations.insert(out_.violations.begin(), std::make_move_iterator(found.begin()),
+                           std::make_move_iterator(found.end()));
   }
 
   void sample() {
@@ -370,6 +388,7 @@ class Marker {
   std::optional<double> spot_;
   std::vector<OpenSlice> slices_;
   std::vector<const OpenSlice*> fitted_;  // those in the surface, in its order
+  arbitrage::Certificate certificate_{false, {}, 0};
   MarkedUnderlying out_;
 };
 

@@ -110,14 +110,16 @@ void SliceModel::add_quote(const FitQuote& q, double least_half_spread) {
   const double z = q.k / s0_;
   const double scale = s0_ * s0_ / (2 * q.vol * t_ * h);
   const auto from_mid = [&](double vol) { return (vol - q.vol) * (vol + q.vol) / (2 * q.vol * h); };
+  // A spread too narrow to be credited is as wide as the least one.
+  const double widening = h - q.half_spread;
   const double from_zero = from_mid(0);
   quotes_.push_back({.basis = basis_at_z(z),
                      .k = q.k,
                      .scale = scale,
                      .from_zero = from_zero,
                      .offset = scale * scaled(backbone_, z).w + from_zero,
-                     .low = from_mid(std::max(0.0, std::min(q.vol_bid, q.vol - h))),
-                     .high = from_mid(std::max(q.vol_ask, q.vol + h)),
+                     .low = from_mid(std::max(0.0, q.vol_bid - widening)),
+                     .high = from_mid(q.vol_ask + widening),
                      .weight = 1,
                      .stray = false});
 }
