@@ -10,14 +10,15 @@
 namespace duskgrid::surface {
 namespace {
 
-using Eigen::MatrixXd;
+using Eigen::Index;
+using Eigen::Matrix3d;
 using Eigen::Vector3d;
 using Eigen::VectorXd;
-using Derivative = Eigen::AutoDiffScalar<VectorXd>;
+using Derivative = Eigen::AutoDiffScalar<Eigen::Matrix<double, 6, 1>>;
 
 // Three free parameters a slice, in this order: rho; a, the growth of theta above the least that
 // the calendar allows; c, where psi lies between its least and largest value.
-constexpr Eigen::Index kPerSlice = 3;
+constexpr Index kPerSlice = 3;
 constexpr double kLargestRho = 0.999;
 // theta may not stand still: a calendar margin far below any price. In units of total variance.
 constexpr double kLeastGrowth = 1e-12;
@@ -38,46 +39,42 @@ struct Slice {
   T theta, rho, psi;
 };
 
-// Mingone 2022: p_i, theta_i, A_i, C_i in that notation.
 template <class T>
-std::vector<Slice<T>> map_parameters(const std::vector<T>& q) {
-  using std::min, std::max, std::sqrt, std::abs;
-  const std::size_t n = q.size() / kPerSlice;
-  std::vector<Slice<T>> out(n);
-  std::vector<T> p(n), reach(n);
-  for (std::size_t i = 0; i < n; ++i) {
-    out[i].rho = q[kPerSlice * i];
-    if (i == 0) {
-      p[i] = T(1.0) + 0.0 * q[0];
-      out[i].theta = q[1];
-      continue;
-    }
-    const T up = (1.0 + out[i - 1].rho) / (1.0 + out[i].rho);
-    const T down = (1.0 - out[i - 1].rho) / (1.0 - out[i].rho);
-    p[i] = (1 + kWingMargin) * (up > down ? up : down);
-    out[i].theta = (1 + kGrowthMargin) * out[i - 1].theta * p[i] + q[kPerSlice * i + 1];
+T lesser(const T& a, const T& b) {
+  return a < b ? a : b;
+}
+
+// Largest psi of a slice by B1 and B2 (docs/methods.md, 5.1).
+template <class T>
+T reach_of(const T& theta, const T& rho) {
+  using std::sqrt;
+  const T slope = 1.0 + (rho < 0 ? T(-rho) : rho);
+  const T by_wing = 4.0 / slope, by_curvature = sqrt(T(4.0 * theta / slope));
+  return (1 - kWingMargin) * lesser(by_wing, by_curvature);
+}
+
+// By how much theta and psi grow at least from a slice of correlation `before` to one of `after`.
+template <class T>
+T growth_of(const T& before, const T& after) {
+  const T up = (1.0 + before) / (1.0 + after), down = (1.0 - before) / (1.0 - after);
+  return (1 + kWingMargin) * (up > down ? up : down);
+}
+
+// One slice of the parametrisation, Mingone 2022: p_i, theta_i, A_i, C_i in that notation. `later`
+// is the largest psi that leaves room for the slices after it. No slice before the first.
+template <class T>
+Slice<T> next_slice(const Slice<T>* before, const T& rho, const T& a, const T& c, double later) {
+  Slice<T> out{a, rho, T(0.0 * a)};
+  T low = T(0.0 * a);
+  T high = lesser(reach_of(out.theta, rho), T(later + 0.0 * a));
+  if (before) {
+    const T p = growth_of(before->rho, rho);
+    out.theta = (1 + kGrowthMargin) * before->theta * p + a;
+    low = before->psi * p;
+    high = lesser(lesser(reach_of(out.theta, rho), T(later + 0.0 * a)),
+                  T(before->psi * out.theta / before->theta));
   }
-  // Largest psi_i that leaves room for itself and every later slice.
-  for (std::size_t i = n; i-- > 0;) {
-    const T slope = 1.0 + (out[i].rho < 0 ? T(-out[i].rho) : out[i].rho);
-    const T by_wing = 4.0 / slope;
-    const T by_curvature = sqrt(T(4.0 * out[i].theta / slope));
-    reach[i] = (1 - kWingMargin) * (by_wing < by_curvature ? by_wing : by_curvature);
-    if (i + 1 < n) {
-      const T later = reach[i + 1] / p[i + 1];
-      if (later < reach[i]) reach[i] = later;
-    }
-  }
-  for (std::size_t i = 0; i < n; ++i) {
-    T low = T(0.0 * q[0]);
-    T high = reach[i];
-    if (i > 0) {
-      low = out[i - 1].psi * p[i];
-      const T flat = out[i - 1].psi * out[i].theta / out[i - 1].theta;
-      if (flat < high) high = flat;
-    }
-    out[i].psi = low + q[kPerSlice * i + 2] * T(high - low);
-  }
+  out.psi = low + c * T(high - low);
   return out;
 }
 
@@ -94,6 +91,16 @@ Vector3d sensitivity(const SliceParameters& s, double k) {
           0.5 * k * (s.rho + u / root)};
 }
 
+// The cost to second order about one point, by slices. A slice's parameters x_i follow from those
+// before it and its own free ones q_i: to first order dx_i = from_before dx_{i-1} + from_own dq_i.
+struct Stage {
+  Matrix3d from_before, from_own;
+  Matrix3d misfit_hessian;  // Gauss-Newton, in (theta, rho, psi)
+  Vector3d misfit_gradient;
+  Vector3d pull_hessian, pull_gradient;  // in q
+  Vector3d gradient, curvature;          // of the whole cost in q; diagonal of its Hessian
+};
+
 class Problem {
  public:
   Problem(std::span<const FitSlice> slices, const BackboneOptions& options)
@@ -102,10 +109,15 @@ class Problem {
   std::size_t size() const { return slices_.size(); }
 
   std::vector<SliceParameters> parameters(const VectorXd& q) const {
+    const auto later = rooms(q);
     std::vector<SliceParameters> out;
     out.reserve(size());
-    for (const auto& s : map_parameters(std::vector<double>(q.begin(), q.end())))
-      out.push_back({s.theta, s.rho, s.psi});
+    std::optional<Slice<double>> before;
+    for (std::size_t i = 0; i < size(); ++i) {
+      const Vector3d own = own_of(q, i);
+      before = next_slice(before ? &*before : nullptr, own[0], own[1], own[2], later[i]);
+      out.push_back({before->theta, before->rho, before->psi});
+    }
     return out;
   }
 
@@ -120,43 +132,88 @@ class Problem {
     return total;
   }
 
-  // Gauss-Newton matrix and gradient, robust weights included.
-  void normal_equations(const VectorXd& q, MatrixXd& hessian, VectorXd& gradient) const {
-    const Eigen::Index count = q.size();
-    std::vector<Derivative> free(static_cast<std::size_t>(count));
-    for (Eigen::Index j = 0; j < count; ++j) free[j] = Derivative(q[j], VectorXd::Unit(count, j));
-    const auto mapped = map_parameters(free);
-    hessian.setZero(count, count);
-    gradient.setZero(count);
-    for (std::size_t i = 0; i < size(); ++i) {
-      const auto& m = mapped[i];
-      Eigen::Matrix3d inner = Eigen::Matrix3d::Zero();
-      Vector3d slope = Vector3d::Zero();
-      accumulate({m.theta.value(), m.rho.value(), m.psi.value()}, slices_[i], inner, slope);
-      MatrixXd chain(3, count);
-      chain << m.theta.derivatives().transpose(), m.rho.derivatives().transpose(),
-          m.psi.derivatives().transpose();
-      hessian.noalias() += chain.transpose() * (inner * chain);
-      gradient.noalias() += chain.transpose() * slope;
+  std::vector<Stage> expand(const VectorXd& q) const {
+    std::vector<Stage> stages(size());
+    differentiate(q, stages);
+    for (const Pull& pull : pulls(q)) add(pull, stages);
+    // Adjoints: what a change of x_i costs, its effect on later slices included.
+    Vector3d gradient = Vector3d::Zero();
+    Matrix3d hessian = Matrix3d::Zero();
+    for (std::size_t i = size(); i-- > 0;) {
+      Stage& s = stages[i];
+      gradient += s.misfit_gradient;
+      hessian += s.misfit_hessian;
+      s.gradient = s.from_own.transpose() * gradient + s.pull_gradient;
+      s.curvature = (s.from_own.transpose() * hessian * s.from_own).diagonal() + s.pull_hessian;
+      gradient = s.from_before.transpose() * gradient;
+      hessian = s.from_before.transpose() * hessian * s.from_before;
     }
-    for (const Pull& pull : pulls(q)) {
-      gradient[pull.to] += pull.weight * pull.value;
-      hessian(pull.to, pull.to) += pull.weight * pull.weight;
-      if (pull.from == kNone) continue;
-      gradient[pull.from] -= pull.weight * pull.value;
-      hessian(pull.from, pull.from) += pull.weight * pull.weight;
-      hessian(pull.from, pull.to) -= pull.weight * pull.weight;
-      hessian(pull.to, pull.from) -= pull.weight * pull.weight;
-    }
+    return stages;
   }
 
  private:
   // A residual weight * (q[to] - q[from]), or weight * q[to] when from is kNone.
-  static constexpr Eigen::Index kNone = -1;
+  static constexpr Index kNone = -1;
   struct Pull {
-    Eigen::Index from, to;
+    Index from, to;
     double weight, value;
   };
+
+  static Vector3d own_of(const VectorXd& q, std::size_t i) {
+    return q.segment<3>(kPerSlice * static_cast<Index>(i));
+  }
+
+  // Largest psi of each slice that leaves room for every later one.
+  std::vector<double> rooms(const VectorXd& q) const {
+    std::vector<double> theta(size()), growth(size(), 1), out(size(), HUGE_VAL);
+    for (std::size_t i = 0; i < size(); ++i) {
+      const Vector3d own = own_of(q, i);
+      theta[i] = own[1];
+      if (i == 0) continue;
+      growth[i] = growth_of(own_of(q, i - 1)[0], own[0]);
+      theta[i] += (1 + kGrowthMargin) * theta[i - 1] * growth[i];
+    }
+    for (std::size_t i = size(); i-- > 1;)
+      out[i - 1] = std::min(reach_of(theta[i], own_of(q, i)[0]), out[i]) / growth[i];
+    return out;
+  }
+
+  // Room for later slices is taken as fixed: that changes the way, not the end.
+  void differentiate(const VectorXd& q, std::vector<Stage>& stages) const {
+    const auto later = rooms(q);
+    const auto fitted = parameters(q);
+    for (std::size_t i = 0; i < size(); ++i) {
+      const Vector3d own = own_of(q, i);
+      const SliceParameters& p = fitted[i > 0 ? i - 1 : 0];
+      const auto variable = [](double value, int at) { return Derivative(value, 6, at); };
+      const Slice<Derivative> before{variable(p.theta, 0), variable(p.rho, 1), variable(p.psi, 2)};
+      const auto x = next_slice(i > 0 ? &before : nullptr, variable(own[0], 3), variable(own[1], 4),
+                                variable(own[2], 5), later[i]);
+      Eigen::Matrix<double, 3, 6> all;
+      all << x.theta.derivatives().transpose(), x.rho.derivatives().transpose(),
+          x.psi.derivatives().transpose();
+      Stage& s = stages[i];
+      s.from_before = all.leftCols<3>();
+      s.from_own = all.rightCols<3>();
+      s.misfit_hessian.setZero();
+      s.misfit_gradient.setZero();
+      s.pull_hessian.setZero();
+      s.pull_gradient.setZero();
+      accumulate(fitted[i], slices_[i], s.misfit_hessian, s.misfit_gradient);
+    }
+  }
+
+  // Slices are tied by a pull: half of that is left out of the Hessian, and made up for by counting
+  // what is left twice.
+  static void add(const Pull& pull, std::vector<Stage>& stages) {
+    const auto at = [&](Index to, double sign) {
+      Stage& s = stages[static_cast<std::size_t>(to / kPerSlice)];
+      s.pull_gradient[to % kPerSlice] += sign * pull.weight * pull.value;
+      s.pull_hessian[to % kPerSlice] += (pull.from == kNone ? 1 : 2) * pull.weight * pull.weight;
+    };
+    at(pull.to, 1);
+    if (pull.from != kNone) at(pull.from, -1);
+  }
 
   double half_spread(const FitQuote& quote) const {
     return std::max(quote.half_spread, options_.least_half_spread);
@@ -166,7 +223,7 @@ class Problem {
     return (std::sqrt(smile_at(s, quote.k).w / t) - quote.vol) / half_spread(quote);
   }
 
-  void accumulate(const SliceParameters& s, const FitSlice& slice, Eigen::Matrix3d& inner,
+  void accumulate(const SliceParameters& s, const FitSlice& slice, Matrix3d& inner,
                   Vector3d& slope) const {
     for (const FitQuote& quote : slice.quotes) {
       const double vol = std::sqrt(smile_at(s, quote.k).w / slice.year_fraction);
@@ -181,15 +238,15 @@ class Problem {
 
   std::vector<Pull> pulls(const VectorXd& q) const {
     std::vector<Pull> out;
-    const auto n = static_cast<Eigen::Index>(size());
-    for (Eigen::Index i = 0; i < n; ++i) {
+    const auto n = static_cast<Index>(size());
+    for (Index i = 0; i < n; ++i) {
       if (slices_[i].quotes.size() >= kTellsAlone) continue;
-      const Eigen::Index neighbour = i > 0 ? i - 1 : 1;
-      for (const Eigen::Index part : {0, 2}) {
-        const Eigen::Index to = kPerSlice * i + part;
+      const Index neighbour = i > 0 ? i - 1 : 1;
+      for (const Index part : {0, 2}) {
+        const Index to = kPerSlice * i + part;
         out.push_back({kNone, to, kFlatPull, kFlatPull * q[to]});
         if (n == 1) continue;
-        const Eigen::Index from = kPerSlice * neighbour + part;
+        const Index from = kPerSlice * neighbour + part;
         out.push_back({from, to, kThinPull, kThinPull * (q[to] - q[from])});
       }
     }
@@ -222,23 +279,63 @@ struct Descent {
   FitEnd end;
 };
 
-// One damped step with the parameters that press against their bounds held there.
-VectorXd damped_step(const VectorXd& q, const MatrixXd& hessian, const VectorXd& gradient,
-                     double damping, const Box& box) {
-  std::vector<Eigen::Index> free;
-  for (Eigen::Index j = 0; j < q.size(); ++j) {
-    const bool held = (q[j] <= box.low[j] && gradient[j] > 0) ||
-                      (q[j] >= box.high[j] && gradient[j] < 0) || hessian(j, j) == 0;
-    if (!held) free.push_back(j);
+// One damped step with the parameters that press against their bounds held there: the quadratic
+// programme of the stages, by dynamic programming from the last slice to the first. In units of
+// each parameter's own curvature, so that the damping means the same to all.
+VectorXd damped_step(const VectorXd& q, const std::vector<Stage>& stages, double damping,
+                     const Box& box) {
+  struct Reply {  // dq_i = -(by_before dx_{i-1} + constant)
+    Matrix3d by_before;
+    Vector3d constant;
+  };
+  std::vector<Reply> replies(stages.size());
+  // Cost of dx_i from slice i on: dx'hessian dx / 2 + gradient'dx.
+  Matrix3d hessian = Matrix3d::Zero();
+  Vector3d gradient = Vector3d::Zero();
+  for (std::size_t i = stages.size(); i-- > 0;) {
+    const Stage& s = stages[i];
+    hessian += s.misfit_hessian;
+    gradient += s.misfit_gradient;
+    Matrix3d own = s.from_own;
+    Vector3d pull = s.pull_gradient, diagonal = s.pull_hessian + damping * s.curvature;
+    for (Index j = 0; j < 3; ++j) {
+      const Index at = kPerSlice * static_cast<Index>(i) + j;
+      const bool held = (q[at] <= box.low[at] && s.gradient[j] > 0) ||
+                        (q[at] >= box.high[at] && s.gradient[j] < 0) || s.curvature[j] == 0;
+      if (!held) continue;
+      own.col(j).setZero();
+      pull[j] = 0;
+      diagonal[j] = 1;
+    }
+    const Matrix3d across = own.transpose() * hessian;
+    Matrix3d inner = across * own;
+    inner.diagonal() += diagonal;
+    const Vector3d scale = inner.diagonal().cwiseSqrt().cwiseInverse();
+    const Eigen::LDLT<Matrix3d> factor(scale.asDiagonal() * inner * scale.asDiagonal());
+    const auto solve = [&](const auto& right) {
+      return (scale.asDiagonal() * factor.solve(scale.asDiagonal() * right)).eval();
+    };
+    const Matrix3d towards = across * s.from_before;
+    const Vector3d constant = own.transpose() * gradient + pull;
+    replies[i] = {solve(towards), solve(constant)};
+    gradient =
+        (s.from_before.transpose() * gradient - towards.transpose() * replies[i].constant).eval();
+    hessian = (s.from_before.transpose() * hessian * s.from_before -
+               towards.transpose() * replies[i].by_before)
+                  .eval();
   }
   VectorXd step = VectorXd::Zero(q.size());
-  if (free.empty()) return step;
-  // In units of each parameter's own curvature, so that the damping means the same to all.
-  const VectorXd scale = VectorXd(hessian.diagonal()(free)).cwiseSqrt().cwiseInverse();
-  MatrixXd a = scale.asDiagonal() * MatrixXd(hessian(free, free)) * scale.asDiagonal();
-  a.diagonal().array() += damping;
-  const VectorXd b = -(scale.asDiagonal() * VectorXd(gradient(free)));
-  step(free) = scale.asDiagonal() * VectorXd(a.ldlt().solve(b));
+  Vector3d x = Vector3d::Zero();
+  for (std::size_t i = 0; i < stages.size(); ++i) {
+    Vector3d own = -(replies[i].by_before * x + replies[i].constant);
+    for (Index j = 0; j < 3; ++j) {
+      const Index at = kPerSlice * static_cast<Index>(i) + j;
+      const auto& g = stages[i].gradient;
+      if ((q[at] <= box.low[at] && g[j] > 0) || (q[at] >= box.high[at] && g[j] < 0)) own[j] = 0;
+      step[at] = own[j];
+    }
+    x = (stages[i].from_before * x + stages[i].from_own * own).eval();
+  }
   return step;
 }
 
@@ -251,14 +348,12 @@ Descent descend(const Problem& problem, VectorXd q, const Box& box, int most_ite
   q = box.clamp(q);
   double cost = problem.cost(q);
   double damping = kFirstDamping;
-  MatrixXd hessian;
-  VectorXd gradient;
   int settled = 0;
   for (int i = 0; i < most_iterations; ++i) {
-    problem.normal_equations(q, hessian, gradient);
+    const auto stages = problem.expand(q);
     bool moved = false;
     while (!moved && damping < kLargestDamping) {
-      const VectorXd trial = box.clamp(q + damped_step(q, hessian, gradient, damping, box));
+      const VectorXd trial = box.clamp(q + damped_step(q, stages, damping, box));
       const double trial_cost = problem.cost(trial);
       moved = trial_cost < cost;
       if (!moved) {
