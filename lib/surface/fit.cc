@@ -105,6 +105,7 @@ class OverlayFit {
       const auto more = models_[j + 1].places();
       ks.insert(ks.end(), more.begin(), more.end());
       std::sort(ks.begin(), ks.end());
+      add_far_places(ks);
       crossings_.emplace_back();
       for (const double k : ks) crossings_.back().push_back(crossing_at(j, k));
     }
@@ -165,6 +166,17 @@ class OverlayFit {
   }
 
  private:
+  // Wings of all but equal slopes cross far out, if at all.
+  static void add_far_places(std::vector<double>& ks) {
+    constexpr int kFurther = 14;
+    constexpr double kRatio = 4;
+    double left = ks.front(), right = ks.back();
+    for (int i = 0; i < kFurther; ++i) {
+      ks.insert(ks.begin(), left *= kRatio);
+      ks.push_back(right *= kRatio);
+    }
+  }
+
   Crossing crossing_at(std::size_t j, double k) const {
     const SliceModel &a = models_[j], &b = models_[j + 1];
     Crossing c{a.probe_at(k), b.probe_at(k), 0};
