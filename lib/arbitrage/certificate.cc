@@ -433,8 +433,19 @@ class Certifier {
       return;
     }
     const bool by_theorem =
-        meets_c(a, b) && smiles_[i + 1].ends_at_least(smiles_[i].left, smiles_[i].right);
+        flat_step(i) ||
+        (meets_c(a, b) && smiles_[i + 1].ends_at_least(smiles_[i].left, smiles_[i].right));
     note(Proof::calendar, i, calendar(smiles_[i], smiles_[i + 1], by_theorem, budget_));
+  }
+
+  // Whether both smiles are constants off their overlays, in the right order.
+  bool flat_step(std::size_t i) const {
+    const auto &a = surface_.slices[i].backbone, &b = surface_.slices[i + 1].backbone;
+    const auto ordered = [&](double before, double after) {
+      return ExactSum().add(b.theta).add(after).add(-a.theta).add(-before).not_negative();
+    };
+    return a.psi == 0 && b.psi == 0 && ordered(smiles_[i].left, smiles_[i + 1].left) &&
+           ordered(smiles_[i].right, smiles_[i + 1].right);
   }
 
   void after_last() {

@@ -25,7 +25,7 @@ constexpr double kLeastGrowth = 1e-12;
 // Kept within the conditions, relative, so that the numbers as rounded satisfy them and slices do
 // not all but touch, which is slow to prove.
 constexpr double kWingMargin = 1e-9;
-constexpr double kGrowthMargin = 1e-7;
+constexpr double kGrowthMargin = 2e-5;
 // Short of 1 so that the strict inequalities of the parametrisation stay strict after rounding.
 constexpr double kLargestC = 0.9999;
 // Pulls, in half-spreads per unit, on what a slice with under five quotes cannot tell: towards its

@@ -52,7 +52,7 @@ std::vector<SliceParameters> wings_of(const std::vector<SliceParameters>& shapes
   constexpr double kReach = 2;
   constexpr double kSteepest = 3.8;  // of psi (1 +- rho), below 4
   constexpr double kShallowest = 1e-3;
-  constexpr double kStrictly = 1 + 1e-6;
+  constexpr double kStrictly = 1 + 1e-6, kApart = 1 + 2e-5;
   constexpr double kDeepest = 0.8, kLargest = 4;
   constexpr double kShrink = 0.9, kLeastPart = 0.2;
   std::vector<SliceParameters> out;
@@ -75,7 +75,7 @@ std::vector<SliceParameters> wings_of(const std::vector<SliceParameters>& shapes
       const double d = std::max(least_down, part * down), u = std::max(least_up, part * up);
       const double psi = 0.5 * (d + u);
       const double by_curvature = 0.25 * psi * std::max(d, u) * kStrictly;
-      const double by_before = j > 0 ? out[j - 1].theta * psi / out[j - 1].psi * kStrictly : 0;
+      const double by_before = j > 0 ? out[j - 1].theta * psi / out[j - 1].psi * kApart : 0;
       return std::max(by_curvature, by_before);
     };
     double part = 1;

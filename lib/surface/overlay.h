@@ -11,10 +11,11 @@
 namespace duskgrid::surface {
 
 // u(k) = sum over i of c_i B_i(k), B_i the cubic B-splines of the knots (C. de Boor, A Practical
-// Guide to Splines, 1978; knots past the ends are mirrored), where the first coefficient serves
-// for the first three functions and the last one for the last three. So u has two continuous
+// Guide to Splines, 1978) and of three more past either end, where the first coefficient serves for
+// the first three functions and the last one for the last three. So u has two continuous
 // derivatives everywhere and is constant before the first and after the last knot: there a smile
-// is a hyperbola with the slopes of its backbone.
+// is a hyperbola with the slopes of its backbone. Where the knots past the ends lie cancels, since
+// all functions sum to 1 and those of the other coefficients end at the knots proper.
 struct Overlay {
   std::vector<double> knots;         // log-moneyness, increasing; 6 or more, or none
   std::vector<double> coefficients;  // total variance; knots.size() - 2 of them

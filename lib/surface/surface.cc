@@ -121,6 +121,7 @@ TimedSmile::TimedSmile(const Surface& surface, double t) : t_(t) {
   const auto next = first_not_before(surface, t);
   if (next == surface.slices.end()) {
     late_ = &surface.slices.back();
+    past_ = true;
     growth_ = smile_of(*late_, 0).w / late_->year_fraction;
     shift_ = growth_ * (t - late_->year_fraction);
     return;
@@ -146,7 +147,7 @@ TimedSmile::TimedSmile(const Surface& surface, double t) : t_(t) {
 
 SurfacePoint TimedSmile::at(double k) const {
   const SmilePoint b = smile_of(*late_, k);
-  if (growth_ > 0) return {b.w + shift_, b.dw_dk, b.d2w_dk2, growth_};
+  if (past_) return {b.w + shift_, b.dw_dk, b.d2w_dk2, growth_};
   if (!early_) {
     const double part = t_ / late_->year_fraction;
     return {part * b.w, part * b.dw_dk, part * b.d2w_dk2, b.w / late_->year_fraction};
@@ -172,6 +173,8 @@ std::vector<double> TimedSmile::breaks() const {
 // and every price and derivative is kept over n(d1) of the mixed smile, so that far wings keep
 // their digits.
 SurfacePoint TimedSmile::mixed(const SmilePoint& a, const SmilePoint& b, double k) const {
+  // Where the earlier smile has no volatility there is no price to mix, and none either.
+  if (weight_ < 1 && !(a.w > 0)) return {a.w, a.dw_dk, a.d2w_dk2, weight_slope_ * (b.w - a.w)};
   const Side first(a, k), last(b, k);
   const Mixture mix = mixture(-std::abs(k), first.s, last.s, weight_);
   const double s = mix.s;

@@ -57,6 +57,7 @@ struct SurfacePoint {
 class TimedSmile {
  public:
   TimedSmile(const Surface& surface, double year_fraction);
+  // w is not above 0 where an overlay takes it there, which no fit does: no volatility.
   SurfacePoint at(double k) const;
   double year_fraction() const { return t_; }
   // Log-moneyness, increasing, where the third derivative in k may jump: the knots in use.
@@ -68,7 +69,8 @@ class TimedSmile {
   double t_;
   const Slice* early_ = nullptr;   // none before the first slice and after the last
   const Slice* late_;              // the last slice after it
-  double growth_ = 0, shift_ = 0;  // after the last: of total variance a year, and so far
+  bool past_ = false;              // after the last slice
+  double growth_ = 0, shift_ = 0;  // then: of total variance a year, and so far
   Between rule_ = Between::variance;
   double weight_ = 1, weight_slope_ = 0;  // of the late slice; a year
 };

@@ -32,11 +32,15 @@ class ValueCommand : public testing::Test {
                 100,
                 {slice(24h * 98, 101, 0.99, {0.01, -0.5, 0.15}),
                  slice(24h * 280, 103, 0.97, {0.03, -0.4, 0.25})}};
-    surface_.slices[0].overlay = {{-0.3, -0.2, -0.1, 0, 0.1, 0.2}, {0.001, -0.001}};
+    surface_.slices[0].overlay = {{-0.3, -0.2, -0.1, 0, 0.1, 0.2},
+                                  {0.0002, 0.0004, -0.0002, 0.0003}};
     surface_.slices[0].to_next = surface::Between::price;
-    surface_.horizon = 1.5;
-    const quotes::AsOf night{as_of, {"", -300min}};
-    const publish::StoredSurface stored{night, surface_};
+    as_of_ = {as_of, {"", -300min}};
+    store(surface_);
+  }
+
+  void store(const surface::Surface& surface) const {
+    const publish::StoredSurface stored{as_of_, surface};
     spill(json(), publish::surface_to_json(stored));
   }
 
@@ -66,6 +70,7 @@ class ValueCommand : public testing::Test {
   }
 
   Scratch scratch_;
+  quotes::AsOf as_of_;
   surface::Surface surface_;
 };
 
@@ -180,6 +185,34 @@ TEST_F(ValueCommand, NumbersThatDoNotExistAreEmptyCells) {
     EXPECT_EQ(row.size(), 15u);
     EXPECT_EQ(row.at("vol"), "");
     EXPECT_EQ(row.at("local_vol"), "");
+  }
+}
+
+// An overlay that no fit gives takes the variance below zero at the money of the first expiry.
+TEST_F(ValueCommand, PointsWithoutAVolatilityAreEmptyCells) {
+  auto sunk = surface_;
+  sunk.slices[0].overlay = {{-0.3, -0.2, -0.1, 0, 0.1, 0.2}, {0, 0, -0.2, 0}};
+  for (const auto rule : {surface::Between::variance, surface::Between::price}) {
+    sunk.slices[0].to_next = rule;
+    store(sunk);
+    for (const std::string time : {"--expiry=2031-06-20", "--tenor=1M", "--tenor=14W"}) {
+      const auto ran = value({"--log-moneyness=-0.4,0", time});
+      EXPECT_EQ(ran.status, 0) << ran.err;
+      EXPECT_EQ(ran.out.find("nan"), std::string::npos) << ran.out;
+      spill(scratch_ / "out.csv", ran.out);
+      const auto rows = read_table(scratch_ / "out.csv");
+      ASSERT_EQ(rows.size(), 2u);
+      EXPECT_NE(rows[0].at("vol"), "");
+      for (const char* column : {"vol", "put_call", "price", "delta", "density", "local_vol"})
+        EXPECT_EQ(rows[1].at(column), "") << column << ' ' << time;
+      const auto swaps = value({"--variance-swaps", time});
+      EXPECT_EQ(swaps.status, 0) << swaps.err;
+      spill(scratch_ / "out.csv", swaps.out);
+      const auto lines = read_table(scratch_ / "out.csv");
+      ASSERT_EQ(lines.size(), 1u);
+      for (const char* column : {"vol_at_forward", "swap_vol", "swap_variance"})
+        EXPECT_EQ(lines[0].at(column), "") << column << ' ' << time;
+    }
   }
 }
 

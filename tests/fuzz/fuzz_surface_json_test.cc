@@ -23,10 +23,9 @@ const std::vector<std::string>& seed_texts() {
                          100.25,
                          {{as_of + 2400h, 0.3, 101, 0.99, {0.01, -0.5, 0.15}, -0.3, 0.2},
                           {as_of + 9000h, 1.03, 104, 0.97, {0.04, 0.25, 0.2}, -0.5, 0.5}}};
-    two.slices[0].overlay = {{-0.3, -0.2, -0.1, 0, 0.1, 0.2}, {0.001, -0.002}};
+    two.slices[0].overlay = {{-0.3, -0.2, -0.1, 0, 0.1, 0.2}, {0.0002, 0.0005, -0.0005, 0.0003}};
     two.slices[0].to_next = surface::Between::price;
-    two.slices[1].overlay = {{-0.5, -0.2, 0, 0.2, 0.5}, {0.003}};
-    two.horizon = 2;
+    two.slices[1].overlay = {{-0.5, -0.2, 0, 0.1, 0.3, 0.5, 0.6}, {0, 0.001, -0.001, 0.002, 0.001}};
     const surface::Surface one{
         "=K\"\xC3\xA9", {}, {{as_of + 24h, 1 / 365.0, 7, 1, {1e-5, 0, 0}, 0, 0}}};
     const quotes::AsOf night{as_of, clock};
@@ -77,7 +76,8 @@ const std::vector<std::string>& morsels() {
                                                  "\"slices\": [],",
                                                  "[0.1, 0.2]",
                                                  "\"price\"",
-                                                 "\"horizon\": 1.5,"};
+                                                 "\"knots\": [],",
+                                                 "\"coefficients\": [0, -1, 2, 0],"};
   return kMorsels;
 }
 
@@ -97,7 +97,6 @@ void check_surface(const surface::Surface& surface) {
     EXPECT_TRUE(std::isfinite(s.k_low) && std::isfinite(s.k_high) && s.k_low <= s.k_high);
     EXPECT_EQ(s.overlay.problem(), std::nullopt);
   }
-  EXPECT_TRUE(surface.horizon == 0 || (surface.horizon >= last && surface.horizon <= 1e6));
 }
 
 void check_values(const surface::Surface& surface) {

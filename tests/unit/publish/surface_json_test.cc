@@ -27,10 +27,10 @@ surface::Surface made() {
 // With everything that a fit may add.
 surface::Surface fitted() {
   auto surface = made();
-  surface.slices[0].overlay = {{-0.3, -0.2, -0.1, 1.0 / 30, 0.1, 0.2}, {0.001, -1.0 / 300}};
+  surface.slices[0].overlay = {{-0.3, -0.2, -0.1, 1.0 / 30, 0.1, 0.2},
+                               {0.001, -1.0 / 3000, 0, 0.0005}};
   surface.slices[0].to_next = surface::Between::price;
   surface.slices[1].to_next = surface::Between::price;
-  surface.horizon = 2.0 / 1.5;
   return surface;
 }
 
@@ -59,8 +59,6 @@ void expect_reloads(const surface::Surface& surface) {
   ASSERT_EQ(stored->surface.spot.has_value(), surface.spot.has_value());
   EXPECT_EQ(std::bit_cast<std::uint64_t>(stored->surface.spot.value_or(0)),
             std::bit_cast<std::uint64_t>(surface.spot.value_or(0)));
-  EXPECT_EQ(std::bit_cast<std::uint64_t>(stored->surface.horizon),
-            std::bit_cast<std::uint64_t>(surface.horizon));
   ASSERT_EQ(stored->surface.slices.size(), surface.slices.size());
   for (std::size_t i = 0; i < surface.slices.size(); ++i)
     EXPECT_EQ(bits_of(stored->surface.slices[i]), bits_of(surface.slices[i])) << "slice " << i;
@@ -68,12 +66,11 @@ void expect_reloads(const surface::Surface& surface) {
 
 TEST(SurfaceJson, SurfaceReloadsBitForBit) { expect_reloads(made()); }
 
-TEST(SurfaceJson, OverlaysRulesAndHorizonReloadBitForBit) {
+TEST(SurfaceJson, OverlaysAndRulesReloadBitForBit) {
   expect_reloads(fitted());
   auto surface = fitted();
   std::swap(surface.slices[0].overlay, surface.slices[1].overlay);
   surface.slices[0].to_next = surface::Between::variance;
-  surface.horizon = surface.slices[1].year_fraction;  // the earliest there may be
   expect_reloads(surface);
 }
 
@@ -136,10 +133,18 @@ TEST(SurfaceJson, RandomDoublesReload) {
     std::vector<double> knots(8);
     for (double& knot : knots) knot = (unit(random) < 0 ? -1 : 1) * any_positive();
     std::sort(knots.begin(), knots.end());
-    s.overlay = {knots, {any_positive(), -any_positive(), unit(random), 0}};
+    s.overlay = {knots, {any_positive(), -any_positive(), unit(random), 0, -0.0, 1}};
     expect_reloads(surface);
     if (HasFailure()) FAIL() << "seed " << kSeed << ", case " << i;
   }
+}
+
+// Arbitrage is not for the reader to judge, nor that the variance ends at some strikes.
+TEST(SurfaceJson, OverlaysThatNoFitGivesReload) {
+  auto surface = fitted();
+  for (auto& slice : surface.slices)
+    slice.overlay = {{-0.3, -0.2, -0.1, 0, 0.1, 0.2}, {-1, 1, -1e300, Limits::max()}};
+  expect_reloads(surface);
 }
 
 TEST(SurfaceJson, NamesNoFormatMindsReload) {
@@ -187,7 +192,7 @@ TEST(SurfaceJson, OtherFormIsRefused) { expect_refused(broken("surface/2", "surf
 TEST(SurfaceJson, MissingFieldIsRefused) {
   for (const char* key : {"form", "underlying", "as_of", "spot", "slices", "expiry",
                           "year_fraction", "forward", "discount_factor", "theta", "rho", "psi",
-                          "k_low", "k_high", "knots", "coefficients", "to_next", "horizon"})
+                          "k_low", "k_high", "knots", "coefficients", "to_next"})
     expect_refused(broken("\"" + std::string(key) + "\"", "\"other\""));
 }
 
@@ -208,8 +213,6 @@ TEST(SurfaceJson, ListsAndRulesOfAnotherKindAreRefused) {
     }
   for (const char* other : {"null", "\"\"", "\"Price\"", "0", "[]"})
     expect_refused(broken("\"variance\"", other));
-  for (const char* other : {"null", "\"0\"", "true", "[]"})
-    expect_refused(broken("\"horizon\": 0.0", "\"horizon\": " + std::string(other)));
 }
 
 TEST(SurfaceJson, DatesThatAreNoneAreRefused) {
@@ -245,34 +248,35 @@ TEST(SurfaceJson, ParametersNoSurfaceHasAreRefused) {
       with([](S& s) { s.slices[0].k_low = 0.3; }),
       with([](S& s) { s.slices[0].forward = Limits::quiet_NaN(); }),
       with([](S& s) { s.slices[0].k_high = Limits::infinity(); }),
-      with([](S& s) { s.horizon = -1; }),
-      with([](S& s) { s.horizon = 1.02; }),  // before the last slice
-      with([](S& s) { s.horizon = 2e6; }),
-      with([](S& s) { s.horizon = Limits::quiet_NaN(); }),
-      with([](S& s) { s.horizon = Limits::infinity(); }),
       with([](S& s) {
         s.slices[0].overlay = {{}, {0.1}};
       }),
       with([](S& s) {
-        s.slices[0].overlay = {{-0.3, -0.1, 0.1, 0.3}, {}};
-      }),  // too few
-      with([](S& s) {
-        s.slices[0].overlay = {{-0.3, -0.1, 0, 0.1, 0.3}, {}};
+        s.slices[0].overlay = {{-0.3, -0.1, 0, 0.1, 0.3}, {0, 0.001, 0}};  // too few
       }),
       with([](S& s) {
-        s.slices[0].overlay = {{-0.3, -0.1, 0, 0.1, 0.3}, {0.1, 0.1}};
+        s.slices[0].overlay = {{-0.3, -0.1, 0, 0.1, 0.2, 0.3}, {}};
       }),
       with([](S& s) {
-        s.slices[0].overlay = {{-0.3, -0.1, 0, 0, 0.3}, {0.1}};
+        s.slices[0].overlay = {{}, {0, 0.001, 0.001, 0}};
       }),
       with([](S& s) {
-        s.slices[0].overlay = {{-0.3, 0, -0.1, 0.1, 0.3}, {0.1}};
+        s.slices[0].overlay = {{-0.3, -0.1, 0, 0.1, 0.2, 0.3}, {0, 0.001, 0}};
       }),
       with([](S& s) {
-        s.slices[0].overlay = {{-0.3, -0.1, 0, 0.1, Limits::infinity()}, {0.1}};
+        s.slices[0].overlay = {{-0.3, -0.1, 0, 0.1, 0.2, 0.3}, {0, 0, 0.001, 0, 0}};
       }),
       with([](S& s) {
-        s.slices[0].overlay = {{-0.3, -0.1, 0, 0.1, 0.3}, {Limits::quiet_NaN()}};
+        s.slices[0].overlay = {{-0.3, -0.1, 0, 0, 0.2, 0.3}, {0, 0.001, 0.001, 0}};
+      }),
+      with([](S& s) {
+        s.slices[0].overlay = {{-0.3, 0, -0.1, 0.1, 0.2, 0.3}, {0, 0.001, 0.001, 0}};
+      }),
+      with([](S& s) {
+        s.slices[0].overlay = {{-0.3, -0.1, 0, 0.1, 0.2, Limits::infinity()}, {0, 0.001, 0.001, 0}};
+      }),
+      with([](S& s) {
+        s.slices[0].overlay = {{-0.3, -0.1, 0, 0.1, 0.2, 0.3}, {0, Limits::quiet_NaN(), 0, 0}};
       }),
   };
   for (std::size_t i = 0; i < kBroken.size(); ++i) {

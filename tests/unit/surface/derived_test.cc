@@ -5,6 +5,7 @@
 #include <cmath>
 #include <limits>
 #include <numbers>
+#include <vector>
 
 namespace duskgrid::surface {
 namespace {
@@ -25,7 +26,7 @@ Surface curved() {
             100,
             {{quotes::Instant{}, 0.25, 101, 0.99, {0.01, -0.5, 0.15}, -0.3, 0.2},
              {quotes::Instant{}, 0.75, 103, 0.97, {0.03, -0.4, 0.25}, -0.5, 0.3}}};
-  s.slices[1].overlay = {{-0.5, -0.3, -0.1, 0, 0.1, 0.3}, {0.003, 0.002}};
+  s.slices[1].overlay = {{-0.5, -0.3, -0.1, 0, 0.1, 0.3}, {0.001, 0.0005, 0.0008, 0.0006}};
   return s;
 }
 
@@ -144,6 +145,41 @@ TEST(DerivedAt, IsNothingWhereNumbersEnd) {
   EXPECT_FALSE(derived_at(smile, {100, 0}, 0).has_value());
 }
 
+// What no fit gives but a stored file may hold: w is below 0 about one strike.
+Surface sunk(std::size_t slice) {
+  Surface s = curved();
+  s.slices[slice].overlay = {{-0.3, -0.2, -0.1, 0, 0.1, 0.2}, {0, 0, -0.2, 0}};
+  return s;
+}
+
+TEST(DerivedAt, IsNothingWhereAnOverlayTakesTheVarianceBelowZero) {
+  const double kHole = 0, kElsewhere = -0.4;
+  for (const Between rule : {Between::variance, Between::price})
+    for (const std::size_t slice : {0, 1}) {
+      Surface s = sunk(slice);
+      s.slices[0].to_next = rule;
+      const auto at = [&](double t, double k) {
+        return derived_at(TimedSmile(s, t), carried_at(s, t), k).has_value();
+      };
+      ASSERT_LT(smile_of(s.slices[slice], kHole).w, 0);
+      const std::vector<double> about_it =
+          slice == 0 ? std::vector<double>{0.1, 0.25, 0.26} : std::vector<double>{0.7, 0.75, 0.76};
+      for (const double t : about_it) {
+        EXPECT_FALSE(at(t, kHole)) << slice << ' ' << t;
+        EXPECT_TRUE(at(t, kElsewhere)) << slice << ' ' << t;
+        EXPECT_FALSE(variance_swap(TimedSmile(s, t)).has_value()) << slice << ' ' << t;
+      }
+      for (const double t : {1e-6, 0.1, 0.25, 0.26, 0.5, 0.74, 0.75, 0.76, 5.0})
+        for (double k = -0.6; k <= 0.6; k += 0.01)
+          if (const auto d = derived_at(TimedSmile(s, t), carried_at(s, t), k)) {
+            for (const double v :
+                 {d->vol, d->price, d->greeks.delta, d->greeks.gamma, d->greeks.vega,
+                  d->density.value_or(0), d->local_vol.value_or(0)})
+              ASSERT_TRUE(std::isfinite(v)) << slice << ' ' << t << ' ' << k;
+          }
+    }
+}
+
 TEST(DerivedAt, FarOutEveryNumberIsThereOrSaidNotToBe) {
   const Surface s = curved();
   for (const double t : {1e-6, 0.25, 0.5, 3.0})
@@ -193,19 +229,17 @@ TEST(VarianceSwap, WingsBelowTheBoundHaveAStrikeAndThosePastItNone) {
 
 TEST(VarianceSwap, IsNothingOnASurfaceWithoutVolatility) {
   Surface s = curved();
-  s.slices[0].overlay = {{-0.4, -0.2, 0, 0.2, 0.4}, {Limits::max()}};
+  s.slices[0].overlay = {{-0.4, -0.2, 0, 0.2, 0.4, 0.6}, {0, Limits::max(), Limits::max(), 0}};
   EXPECT_FALSE(variance_swap(TimedSmile(s, 0.25)).has_value());
 }
 
 TEST(Breaks, AreTheKnotsInUse) {
   Surface s = curved();
-  s.slices[0].overlay = {{-0.4, -0.2, 0, 0.2, 0.4}, {0.001}};
+  s.slices[0].overlay = {{-0.4, -0.2, 0, 0.2, 0.4, 0.5}, {0, 0.001, 0.001, 0}};
   EXPECT_EQ(TimedSmile(s, 0.1).breaks(), s.slices[0].overlay.knots);
   EXPECT_EQ(TimedSmile(s, 0.5).breaks(),
-            (std::vector<double>{-0.5, -0.4, -0.3, -0.2, -0.1, 0, 0.1, 0.2, 0.3, 0.4}));
-  EXPECT_EQ(TimedSmile(s, 0.75).breaks().size(), 10u);
-  EXPECT_TRUE(TimedSmile(s, 0.8).breaks().empty());
-  s.horizon = 1;
+            (std::vector<double>{-0.5, -0.4, -0.3, -0.2, -0.1, 0, 0.1, 0.2, 0.3, 0.4, 0.5}));
+  EXPECT_EQ(TimedSmile(s, 0.75).breaks().size(), 11u);
   EXPECT_EQ(TimedSmile(s, 0.8).breaks(), s.slices[1].overlay.knots);
 }
 

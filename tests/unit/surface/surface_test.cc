@@ -100,6 +100,101 @@ TEST(SmileAtTime, PricesMixAlsoWhereTheSlicesCross) {
   }
 }
 
+// Each slice with an overlay that is not 0 in the wings.
+Surface overlaid() {
+  Surface s = made();
+  const std::vector<double> knots{-0.5, -0.3, -0.15, 0, 0.1, 0.25, 0.4};
+  s.slices[0].overlay = {knots, {0.0002, 0.0004, -0.0003, 0.0005, 0.0001}};
+  s.slices[1].overlay = {knots, {0.0006, -0.0002, 0.0009, 0.0004, 0.0008}};
+  s.slices[2].overlay = {knots, {0.001, 0.002, -0.001, 0.001, 0.0015}};
+  return s;
+}
+
+// The worked number of section 6 of docs/methods.md, to its digits.
+TEST(SmileAtTime, WorkedNumberOfTheManual) {
+  Surface s{"HALYRD",
+            {},
+            {{quotes::Instant{}, 1, 100, 1, {0.04, -0.4, 0.2}, -0.3, 0.2},
+             {quotes::Instant{}, 2, 100, 1, {0.08, -0.3, 0.28}, -0.3, 0.2}}};
+  constexpr double kDigits = 5e-7;
+  EXPECT_NEAR(point_at(s, -0.2, 0.5).w, 0.030733, kDigits);
+  EXPECT_NEAR(point_at(s, -0.2, 1).w, 0.061466, kDigits);
+  EXPECT_NEAR(point_at(s, -0.2, 1.5).w, 0.082574, kDigits);
+  EXPECT_NEAR(point_at(s, -0.2, 2).w, 0.103681, kDigits);
+  EXPECT_NEAR(point_at(s, -0.2, 2.5).w, 0.123681, kDigits);
+  s.slices[0].to_next = Between::price;
+  EXPECT_NEAR(point_at(s, -0.2, 1.5).w, 0.083685, kDigits);
+  EXPECT_NEAR(point_at(s, 0, 1.5).w, 0.06, kDigits);
+}
+
+TEST(SmileOf, IsTheBackboneAndTheOverlayAdded) {
+  for (const Slice& slice : overlaid().slices)
+    for (const double k : {-0.7, -0.2, 0.0, 0.33, 0.9}) {
+      const SmilePoint b = smile_at(slice.backbone, k), w = smile_of(slice, k);
+      const OverlayPoint u = overlay_at(slice.overlay, k);
+      EXPECT_EQ(w.w, b.w + u.u);
+      EXPECT_EQ(w.dw_dk, b.dw_dk + u.du_dk);
+      EXPECT_EQ(w.d2w_dk2, b.d2w_dk2 + u.d2u_dk2);
+    }
+}
+
+TEST(SmileAtTime, AtAnExpiryItsOwnBitsUnderEitherRule) {
+  for (const Between rule : {Between::variance, Between::price}) {
+    Surface s = overlaid();
+    for (Slice& slice : s.slices) slice.to_next = rule;
+    for (const Slice& slice : s.slices)
+      for (const double k : {-0.7, -0.2, 0.0, 0.33, 0.9})
+        EXPECT_EQ(point_at(s, k, slice.year_fraction).w, smile_of(slice, k).w);
+  }
+}
+
+TEST(SmileAtTime, VarianceAtTheMoneyIsLinearInTimeUnderEitherRule) {
+  for (const Between rule : {Between::variance, Between::price}) {
+    Surface s = overlaid();
+    s.slices[0].to_next = rule;
+    const double a = smile_of(s.slices[0], 0).w, b = smile_of(s.slices[1], 0).w;
+    EXPECT_NEAR(point_at(s, 0, 0.375).w, 0.75 * a + 0.25 * b, kRounding * b);
+    EXPECT_NEAR(point_at(s, 0, 0.375).dw_dt, (b - a) / 0.5, kRounding);
+  }
+}
+
+TEST(SmileAtTime, AfterTheLastSliceItsOverlayStaysAndEveryStrikeGains) {
+  const Surface s = overlaid();
+  const double money = smile_of(s.slices[2], 0).w;
+  for (const double k : {-1.0, -0.2, 0.0, 0.7}) {
+    const SmilePoint last = smile_of(s.slices[2], k);
+    const SurfacePoint later = point_at(s, k, 3.0);
+    EXPECT_NEAR(later.w, last.w + 0.5 * money, kRounding) << k;
+    EXPECT_EQ(later.dw_dk, last.dw_dk) << k;
+    EXPECT_EQ(later.d2w_dk2, last.d2w_dk2) << k;
+    EXPECT_EQ(later.dw_dt, money / 2) << k;
+  }
+}
+
+// Without a price at one end the other end's smile was given.
+TEST(SmileAtTime, PricesDoNotMixWhereTheEarlierSmileHasNoVolatility) {
+  Surface s = overlaid();
+  s.slices[0].to_next = Between::price;
+  for (double& c : s.slices[0].overlay.coefficients) c = -0.02;
+  for (const double t : {0.25, 0.2501, 0.5, 0.7499})
+    for (const double k : {-0.02, 0.0, 0.05}) {
+      EXPECT_LT(point_at(s, k, t).w, 0) << t << ' ' << k;
+      EXPECT_GT(point_at(s, k, 0.75).w, 0) << k;
+    }
+}
+
+// Where the last slice has none at the money, the rule of the times before the first held.
+TEST(SmileAtTime, AfterALastSliceBelowZeroAtTheMoneyItsVarianceFalls) {
+  Surface s = overlaid();
+  for (double& c : s.slices[2].overlay.coefficients) c = -0.1;
+  const double money = smile_of(s.slices[2], 0).w;
+  ASSERT_LT(money, 0);
+  for (const double k : {-2.0, 0.0, 0.1}) {
+    EXPECT_NEAR(point_at(s, k, 3.0).w, smile_of(s.slices[2], k).w + 0.5 * money, kRounding) << k;
+    EXPECT_LT(point_at(s, k, 3.0).dw_dt, 0) << k;
+  }
+}
+
 TEST(CarriedAt, AtASliceIsTheSlices) {
   const Carried c = carried_at(made(), 0.75);
   EXPECT_EQ(c.forward, 103);
