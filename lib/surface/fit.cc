@@ -168,7 +168,7 @@ class OverlayFit {
  private:
   // Wings of all but equal slopes cross far out, if at all.
   static void add_far_places(std::vector<double>& ks) {
-    constexpr int kFurther = 14;
+    constexpr int kFurther = 10;
     constexpr double kRatio = 4;
     double left = ks.front(), right = ks.back();
     for (int i = 0; i < kFurther; ++i) {
@@ -313,22 +313,27 @@ class OverlayFit {
   template <class At>
   bool look_closer(std::size_t j, std::vector<At>& at) {
     constexpr double kNear = 0.1;  // a low point above this is not looked at
-    constexpr int kParts = 8;
+    constexpr int kParts = 12, kNarrowings = 4;
     std::vector<double> rooms;
     for (const At& a : at) rooms.push_back(room(j, a));
     std::vector<At> found;
     for (std::size_t i = 1; i + 1 < at.size(); ++i) {
       if (rooms[i] > kNear || rooms[i] > rooms[i - 1] || rooms[i] > rooms[i + 1]) continue;
       std::optional<At> worst;
-      double least = 0;
-      for (const std::size_t from : {i - 1, i})
+      double least = 0, low = k_of(at[i - 1]), high = k_of(at[i + 1]);
+      for (int narrowing = 0; narrowing < kNarrowings; ++narrowing) {
+        double lowest = HUGE_VAL, there = low;
         for (int p = 1; p < kParts; ++p) {
-          const double k =
-              std::lerp(k_of(at[from]), k_of(at[from + 1]), static_cast<double>(p) / kParts);
+          const double k = std::lerp(low, high, static_cast<double>(p) / kParts);
           At here = make(j, k, at[i]);
           const double r = room(j, here);
+          if (r < lowest) lowest = r, there = k;
           if (r < least) least = r, worst = std::move(here);
         }
+        const double part = (high - low) / kParts;
+        low = there - part;
+        high = there + part;
+      }
       if (worst) found.push_back(std::move(*worst));
     }
     for (At& a : found) {

@@ -247,8 +247,8 @@ void SliceModel::rebase(const SliceParameters& wings) {
 void SliceModel::roughen(double factor) { assemble(factor * lambda_); }
 
 std::vector<double> SliceModel::places() const {
-  constexpr int kTail = 14;
-  constexpr double kNearest = 0.02, kRatio = 1.6;  // of the knots' span; the last at 9 spans
+  constexpr int kTail = 24;
+  constexpr double kNearest = 0.02, kRatio = 1.6;  // of the knots' span; the last at 1,000 spans
   const double span = knots_.back() - knots_.front();
   std::vector<double> out;
   for (int i = kTail; i-- > 0;)
