@@ -245,22 +245,37 @@ Look step_of(const Affine& step, double size) {
   return {step.lower(), step.upper_at_centre(), step.c / size};
 }
 
-Affine variance(const Smile& smile, const Part& part, const Affine& k) {
-  const Affine w = smile.backbone.variance_at(k);
-  return part.piece ? w + overlay_over(*part.piece, k).w : w + part.constant;
+Affine added(const Part& part, const Affine& k) {
+  return part.piece ? overlay_over(*part.piece, k).w : Affine(part.constant);
 }
 
-Search calendar(const Smile& first, const Smile& second, bool by_theorem, std::int64_t budget) {
+// What a sum is, up to the rounding of adding up its parts.
+Affine enclosed(const ExactSum& sum) {
+  Affine out = sum.known() ? 0.0 : kInfinity;
+  for (const double part : sum.parts()) out = out + part;
+  return out;
+}
+
+// In the tails the step is that of the wings' slopes, known from the parameters to their last digit
+// (of `wings`, left and right, half), and y times what is left. Wings as steep as one another touch
+// at y = 0, where what is left has to tell.
+Search calendar(const Smile& first, const Smile& second, const std::array<ExactSum, 2>& wings,
+                bool by_theorem, std::int64_t budget) {
   Search search(budget);
   run(
       search, ranges_of(first, &second, !by_theorem), !by_theorem,
       [&](const Stretch& s, const Box& box) {
         const Affine k = Affine::range(box.low, box.high);
-        return step_of(variance(second, s.second, k) - variance(first, s.first, k), 1);
+        const Affine step = step_at(first.backbone, second.backbone, k);
+        return step_of(step + (added(s.second, k) - added(s.first, k)), 1);
       },
       [&](bool left, const Box& box) {
         const Affine y = Affine::range(box.low, box.high);
-        return step_of(second.tail(left).tail(y).w - first.tail(left).tail(y).w, box.centre());
+        const Affine rest = second.tail(left).past_slope(y) - first.tail(left).past_slope(y);
+        const ExactSum& wing = wings[left ? 0 : 1];
+        Look look = step_of(scaled(enclosed(wing), 0.5) + y * rest, box.centre());
+        if (wing.not_negative() && rest.lower() >= 0) look.least = 0;
+        return look;
       });
   return search;
 }
@@ -424,10 +439,11 @@ class Certifier {
   void step(std::size_t i) {
     const auto& a = surface_.slices[i].backbone;
     const auto& b = surface_.slices[i + 1].backbone;
+    const std::array<ExactSum, 2> wings{wing_step(a, b, -1), wing_step(a, b, 1)};
     // The wing with the smaller slope ends below the other.
     Finding worst{Proof::calendar, i, 0, kInfinity, true};
     for (const double sign : {-1.0, 1.0}) {
-      if (!wing_step(a, b, sign).negative()) continue;
+      if (!wings[sign < 0 ? 0 : 1].negative()) continue;
       const double fall = 0.5 * (b.psi * (1 + sign * b.rho) - a.psi * (1 + sign * a.rho));
       if (fall < worst.value) worst = {Proof::calendar, i, sign * kInfinity, fall, true};
     }
@@ -438,7 +454,7 @@ class Certifier {
     const bool by_theorem =
         flat_step(i) ||
         (meets_c(a, b) && smiles_[i + 1].ends_at_least(smiles_[i].left, smiles_[i].right));
-    note(Proof::calendar, i, calendar(smiles_[i], smiles_[i + 1], by_theorem, budget_));
+    note(Proof::calendar, i, calendar(smiles_[i], smiles_[i + 1], wings, by_theorem, budget_));
   }
 
   // Whether both smiles are constants off their overlays, in the right order.
