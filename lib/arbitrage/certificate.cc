@@ -74,36 +74,40 @@ struct Smile {
   Hyperbola tail(bool from_left) const {
     return from_left ? backbone.mirrored().raised(left) : backbone.raised(right);
   }
-  // What is added at a place outside the pieces.
-  double beyond(double k) const {
-    if (pieces.empty()) return 0;
-    return k < pieces.front().start ? left : right;
-  }
   bool ends_at_least(double least_left, double least_right) const {
     return left >= least_left && right >= least_right;
   }
 };
 
-struct Stretch {
-  double low, high;
-  const Cubic* first;  // null: no overlay here
-  const Cubic* second;
+// What an overlay is over a stretch: one of its pieces, or none and a constant.
+struct Part {
+  const Cubic* piece = nullptr;
+  double constant = 0;
 };
 
-// The ranges between the knots of both smiles; with `outside`, widened to where the tails begin.
+struct Stretch {
+  double low, high;
+  Part first, second;
+};
+
+// The ranges between the knots of both smiles, from the first of all to the last, whether or not
+// any piece lies there; with `outside`, widened to where the tails begin.
 struct Ranges {
   std::vector<Stretch> stretches;
   double left_tail, right_tail;  // |k| > 0 where they begin
 };
 
-const Cubic* piece_over(const Smile* smile, double low, double high) {
-  if (!smile) return nullptr;
-  const auto& pieces = smile->pieces;
+// Neither end of a smile's pieces lies within the stretch. Told by its ends, since the middle of
+// two neighbouring doubles is one of them.
+Part part_over(const Smile& smile, double low, double high) {
+  const auto& pieces = smile.pieces;
+  if (pieces.empty()) return {};
   const auto after = std::upper_bound(pieces.begin(), pieces.end(), low,
                                       [](double k, const Cubic& p) { return k < p.start; });
-  if (after == pieces.begin()) return nullptr;
+  if (after == pieces.begin()) return {nullptr, smile.left};
   const Cubic& piece = *(after - 1);
-  return piece.end >= high ? &piece : nullptr;
+  if (piece.end >= high) return {&piece, 0};
+  return {nullptr, smile.right};
 }
 
 Ranges ranges_of(const Smile& first, const Smile* second, bool outside) {
@@ -128,9 +132,8 @@ Ranges ranges_of(const Smile& first, const Smile* second, bool outside) {
   }
   for (std::size_t i = 0; i + 1 < marks.size(); ++i) {
     if (!(marks[i] < marks[i + 1])) continue;
-    const Cubic* a = piece_over(&first, marks[i], marks[i + 1]);
-    const Cubic* b = piece_over(second, marks[i], marks[i + 1]);
-    if (outside || a || b) out.stretches.push_back({marks[i], marks[i + 1], a, b});
+    out.stretches.push_back({marks[i], marks[i + 1], part_over(first, marks[i], marks[i + 1]),
+                             second ? part_over(*second, marks[i], marks[i + 1]) : Part{}});
   }
   return out;
 }
@@ -171,10 +174,10 @@ Turned turned_tail(const Hyperbola& backbone, const Affine& y) {
   return {form, scaled(form.w, 2) - form.slope, y};
 }
 
-Form form_of(const Smile& smile, const Cubic* piece, const Affine& k) {
+Form form_of(const Smile& smile, const Part& part, const Affine& k) {
   const Form w = smile.backbone.at(k);
-  if (!piece) return {w.w + smile.beyond(k.c), w.slope, w.bend};
-  const Form u = overlay_over(*piece, k);
+  if (!part.piece) return {w.w + part.constant, w.slope, w.bend};
+  const Form u = overlay_over(*part.piece, k);
   return {w.w + u.w, w.slope + u.slope, w.bend + u.bend};
 }
 
@@ -242,22 +245,37 @@ Look step_of(const Affine& step, double size) {
   return {step.lower(), step.upper_at_centre(), step.c / size};
 }
 
-Affine variance(const Smile& smile, const Cubic* piece, const Affine& k) {
-  const Affine w = smile.backbone.variance_at(k);
-  return piece ? w + overlay_over(*piece, k).w : w + smile.beyond(k.c);
+Affine added(const Part& part, const Affine& k) {
+  return part.piece ? overlay_over(*part.piece, k).w : Affine(part.constant);
 }
 
-Search calendar(const Smile& first, const Smile& second, bool by_theorem, std::int64_t budget) {
+// What a sum is, up to the rounding of adding up its parts.
+Affine enclosed(const ExactSum& sum) {
+  Affine out = sum.known() ? 0.0 : kInfinity;
+  for (const double part : sum.parts()) out = out + part;
+  return out;
+}
+
+// In the tails the step is that of the wings' slopes, known from the parameters to their last digit
+// (of `wings`, left and right, half), and y times what is left. Wings as steep as one another touch
+// at y = 0, where what is left has to tell.
+Search calendar(const Smile& first, const Smile& second, const std::array<ExactSum, 2>& wings,
+                bool by_theorem, std::int64_t budget) {
   Search search(budget);
   run(
       search, ranges_of(first, &second, !by_theorem), !by_theorem,
       [&](const Stretch& s, const Box& box) {
         const Affine k = Affine::range(box.low, box.high);
-        return step_of(variance(second, s.second, k) - variance(first, s.first, k), 1);
+        const Affine step = step_at(first.backbone, second.backbone, k);
+        return step_of(step + (added(s.second, k) - added(s.first, k)), 1);
       },
       [&](bool left, const Box& box) {
         const Affine y = Affine::range(box.low, box.high);
-        return step_of(second.tail(left).tail(y).w - first.tail(left).tail(y).w, box.centre());
+        const Affine rest = second.tail(left).past_slope(y) - first.tail(left).past_slope(y);
+        const ExactSum& wing = wings[left ? 0 : 1];
+        Look look = step_of(scaled(enclosed(wing), 0.5) + y * rest, box.centre());
+        if (wing.not_negative() && rest.lower() >= 0) look.least = 0;
+        return look;
       });
   return search;
 }
@@ -421,10 +439,11 @@ class Certifier {
   void step(std::size_t i) {
     const auto& a = surface_.slices[i].backbone;
     const auto& b = surface_.slices[i + 1].backbone;
+    const std::array<ExactSum, 2> wings{wing_step(a, b, -1), wing_step(a, b, 1)};
     // The wing with the smaller slope ends below the other.
     Finding worst{Proof::calendar, i, 0, kInfinity, true};
     for (const double sign : {-1.0, 1.0}) {
-      if (!wing_step(a, b, sign).negative()) continue;
+      if (!wings[sign < 0 ? 0 : 1].negative()) continue;
       const double fall = 0.5 * (b.psi * (1 + sign * b.rho) - a.psi * (1 + sign * a.rho));
       if (fall < worst.value) worst = {Proof::calendar, i, sign * kInfinity, fall, true};
     }
@@ -435,7 +454,7 @@ class Certifier {
     const bool by_theorem =
         flat_step(i) ||
         (meets_c(a, b) && smiles_[i + 1].ends_at_least(smiles_[i].left, smiles_[i].right));
-    note(Proof::calendar, i, calendar(smiles_[i], smiles_[i + 1], by_theorem, budget_));
+    note(Proof::calendar, i, calendar(smiles_[i], smiles_[i + 1], wings, by_theorem, budget_));
   }
 
   // Whether both smiles are constants off their overlays, in the right order.
@@ -501,7 +520,7 @@ surface::Surface with_proved_rules(surface::Surface surface, const CertificateOp
 
 Certificate certify_smile(const Hyperbola& backbone, const surface::Overlay& overlay,
                           const CertificateOptions& options) {
-  if (overlay.problem() || options.problem())
+  if (!(backbone.stretch >= 0) || overlay.problem() || options.problem())
     return {false, {{Proof::parameters, 0, 0, 0, false}}, 0};
   const Search search = butterfly(Smile::of(backbone, overlay), false, options.most_boxes);
   Certificate out{search.proved(), {}, search.used};

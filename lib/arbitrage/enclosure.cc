@@ -74,10 +74,6 @@ Form Hyperbola::at(const Affine& k) const {
   return {level + tilt * k + root, tilt + part * z, square(part) * (breadth * inverse)};
 }
 
-Affine Hyperbola::variance_at(const Affine& k) const {
-  return level + tilt * k + arbitrage::sqrt(square(scaled(k, stretch) + offset) + breadth);
-}
-
 // With z = stretch + offset y and root = sqrt(z^2 + breadth y^2), both y times those above. Without
 // stretch the root is y times a constant.
 Form Hyperbola::tail(const Affine& y) const {
@@ -90,9 +86,30 @@ Form Hyperbola::tail(const Affine& y) const {
   return {tilt + level * y + root, tilt + part * z, square(part) * (breadth * (square(y) * near))};
 }
 
+// (root - stretch) / y with the root of tail(), whose square less that of stretch is y times
+// 2 stretch offset + (offset^2 + breadth) y.
+Affine Hyperbola::past_slope(const Affine& y) const {
+  const Affine size = square(offset) + breadth;
+  if (stretch == 0) return level + arbitrage::sqrt(size);
+  const Affine root = arbitrage::sqrt(square(stretch + offset * y) + breadth * square(y));
+  return level + (scaled(offset, 2 * stretch) + size * y) / (root + stretch);
+}
+
 double Hyperbola::reach() const {
   const double k = (std::abs(offset.c) + std::sqrt(std::max(breadth.c, 0.0))) / stretch;
   return std::isfinite(k) && k > 0 ? k : 1;
+}
+
+// A difference of roots is that of their squares over their sum.
+Affine step_at(const Hyperbola& early, const Hyperbola& late, const Affine& k) {
+  const Affine a = scaled(k, early.stretch) + early.offset;
+  const Affine b = scaled(k, late.stretch) + late.offset;
+  const Affine apart =
+      (Affine(late.stretch) - early.stretch) * k + (late.offset - early.offset);  // b - a
+  const Affine roots =
+      arbitrage::sqrt(square(a) + early.breadth) + arbitrage::sqrt(square(b) + late.breadth);
+  return (late.level - early.level) + (late.tilt - early.tilt) * k +
+         (apart * (a + b) + (late.breadth - early.breadth)) / roots;
 }
 
 std::vector<Cubic> pieces_of(const surface::Overlay& overlay) {

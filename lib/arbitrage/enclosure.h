@@ -31,16 +31,20 @@ struct Hyperbola {
   static Hyperbola of(const RawSlice& slice);
 
   Form at(const Affine& k) const;
-  Affine variance_at(const Affine& k) const;  // w alone
   // The same smile with a constant added.
   Hyperbola raised(const Affine& by) const { return {level + by, tilt, stretch, offset, breadth}; }
   // At k = 1 / y, y >= 0, also at y = 0, where all are limits.
   Form tail(const Affine& y) const;
+  // w less (tilt + stretch) k, the wing's slope, at k = 1 / y, y >= 0; at y = 0 the limit.
+  Affine past_slope(const Affine& y) const;
   // The same smile with k for -k.
   Hyperbola mirrored() const { return {level, -tilt, stretch, -offset, breadth}; }
   // Where the bend gives way to the wings: the k > 0 past which tails are looked at in y.
   double reach() const;
 };
+
+// w of `late` less that of `early`, with the digits it has where they all but agree.
+Affine step_at(const Hyperbola& early, const Hyperbola& late, const Affine& k);
 
 // One piece of an overlay: u = sum of a[i] (k - start)^i.
 struct Cubic {

@@ -5,6 +5,7 @@
 #include <cassert>
 #include <cmath>
 #include <cstddef>
+#include <span>
 
 namespace duskgrid::arbitrage {
 
@@ -38,6 +39,10 @@ class ExactSum {
   bool positive() const { return known_ && leading() > 0; }
   bool negative() const { return known_ && leading() < 0; }
   bool not_negative() const { return known_ && leading() >= 0; }
+
+  // They add up to the sum, exactly if it is known. Least first.
+  std::span<const double> parts() const { return {parts_.data(), count_}; }
+  bool known() const { return known_; }
 
  private:
   double leading() const {

@@ -46,32 +46,80 @@ bool contains(const Affine& a, double xi, const Exact& value) {
   return abs(value - (Exact(a.c) + Exact(a.d) * xi)) <= a.e;
 }
 
+// Knots mirrored past the ends, three a side.
+std::vector<double> with_mirrored(const std::vector<double>& knots) {
+  std::vector<double> out;
+  for (std::size_t i = 3; i > 0; --i) out.push_back(2 * knots.front() - knots[i]);
+  out.insert(out.end(), knots.begin(), knots.end());
+  for (std::size_t i = 1; i <= 3; ++i)
+    out.push_back(2 * knots.back() - knots[knots.size() - 1 - i]);
+  return out;
+}
+
+// Coefficients of all the functions alive between the knots.
+std::vector<double> with_repeated(const std::vector<double>& coefficients) {
+  std::vector<double> out = coefficients;
+  out.insert(out.begin(), 2, coefficients.front());
+  out.insert(out.end(), 2, coefficients.back());
+  return out;
+}
+
 TEST(Enclosure, PiecesOfTheOverlayHoldItsValuesIn50Digits) {
   Random random(18);
   for (int trial = 0; trial < 100; ++trial) {
     Overlay o;
     double k = uniform(random, -1, 1);
-    const int knots = 5 + trial % 12;
+    const int knots = 6 + trial % 12;
     for (int i = 0; i < knots; ++i) o.knots.push_back(k += log_uniform(random, 1e-6, 0.3));
-    for (int i = 0; i < knots - 4; ++i) o.coefficients.push_back(uniform(random, -0.1, 0.1));
+    for (int i = 0; i < knots - 2; ++i) o.coefficients.push_back(uniform(random, -0.1, 0.1));
+    const auto all_knots = with_mirrored(o.knots), all = with_repeated(o.coefficients);
     for (const Cubic& piece : pieces_of(o)) {
       const double low = std::lerp(piece.start, piece.end, uniform(random, 0, 0.9));
       const Affine range = Affine::range(low, std::lerp(low, piece.end, uniform(random, 0, 0.99)));
-      const VolForm u = overlay_over(piece, range);
+      const Form u = overlay_over(piece, range);
       for (const double xi : {-0.99, -0.3, 0.0, 0.6, 0.99}) {
         const Exact at = Exact(range.c) + Exact(range.d) * xi;
         if (at < piece.start || at >= piece.end) continue;
         Exact value = 0, slope = 0, bend = 0;
-        for (std::size_t i = 0; i < o.coefficients.size(); ++i) {
-          value += o.coefficients[i] * b_spline(o.knots, i, 3, at);
-          slope += o.coefficients[i] * b_spline_slope(o.knots, i, 3, at);
-          bend += o.coefficients[i] * b_spline_bend(o.knots, i, at);
+        for (std::size_t i = 0; i < all.size(); ++i) {
+          value += all[i] * b_spline(all_knots, i, 3, at);
+          slope += all[i] * b_spline_slope(all_knots, i, 3, at);
+          bend += all[i] * b_spline_bend(all_knots, i, at);
         }
-        EXPECT_TRUE(contains(u.s, xi, value)) << trial;
+        EXPECT_TRUE(contains(u.w, xi, value)) << trial;
         EXPECT_TRUE(contains(u.slope, xi, slope)) << trial;
         EXPECT_TRUE(contains(u.bend, xi, bend)) << trial;
       }
     }
+  }
+}
+
+// Of what the library evaluates the pieces are the proof: at both ends of each, where its value is
+// a constant beyond the first and last, to the rounding of its recursion.
+TEST(Enclosure, PiecesJoinAndEndWithTheConstantsOfTheOverlay) {
+  Random random(22);
+  constexpr double kRounding = 1e-13;  // some 50 operations on values of 0.1, over gaps of 0.1
+  for (int trial = 0; trial < 50; ++trial) {
+    Overlay o;
+    for (int i = 0; i < 6 + trial % 5; ++i)
+      o.knots.push_back(0.1 * i + uniform(random, -0.02, 0.02));
+    for (std::size_t i = 0; i + 2 < o.knots.size(); ++i)
+      o.coefficients.push_back(uniform(random, -0.1, 0.1));
+    const auto pieces = pieces_of(o);
+    for (std::size_t i = 0; i <= pieces.size(); ++i) {
+      const double k = o.knots[i];
+      const auto at = surface::overlay_at(o, k);
+      const auto check = [&](const Cubic& piece) {
+        const Form u = overlay_over(piece, k);
+        EXPECT_NEAR(u.w.c, at.u, kRounding);
+        EXPECT_NEAR(u.slope.c, at.du_dk, 100 * kRounding);
+        EXPECT_NEAR(u.bend.c, at.d2u_dk2, 1e4 * kRounding);
+      };
+      if (i < pieces.size()) check(pieces[i]);
+      if (i > 0) check(pieces[i - 1]);
+    }
+    EXPECT_EQ(surface::overlay_at(o, o.knots.front() - 1).u, o.coefficients.front());
+    EXPECT_EQ(surface::overlay_at(o, o.knots.back() + 1).u, o.coefficients.back());
   }
 }
 
@@ -107,6 +155,51 @@ TEST(Enclosure, HyperbolasHoldTheirValuesIn50Digits) {
       };
       check(place, near, 1);
       check(1 / place, tail, place);
+    }
+  }
+}
+
+Exact exact_w(const RawSlice& s, const Exact& k) {
+  const Exact d = k - s.m;
+  return s.a + s.b * (s.rho * d + sqrt(d * d + Exact(s.sigma) * s.sigma));
+}
+
+TEST(Enclosure, WhatIsPastTheSlopeOfAWingHoldsIn50Digits) {
+  Random random(23);
+  for (int trial = 0; trial < 1000; ++trial) {
+    const RawSlice s{uniform(random, -0.01, 0.1), trial % 10 == 9 ? 0 : uniform(random, 0.01, 1),
+                     uniform(random, -0.99, 0.99), uniform(random, -1, 1),
+                     log_uniform(random, 1e-3, 1)};
+    const bool left = trial % 2;
+    const Hyperbola h = left ? Hyperbola::of(s).mirrored() : Hyperbola::of(s);
+    const double from = log_uniform(random, 1e-9, 1);
+    const Affine y = Affine::range(from, from + log_uniform(random, 1e-9, 1));
+    const Affine past = h.past_slope(y);
+    if (!std::isfinite(past.e)) continue;
+    for (const double xi : {-1.0, -0.4, 0.0, 0.7, 1.0}) {
+      const Exact k = 1 / (Exact(y.c) + Exact(y.d) * xi);
+      const Exact slope = Exact(s.b) * (1 + (left ? -1 : 1) * Exact(s.rho));
+      EXPECT_TRUE(contains(past, xi, exact_w(s, left ? Exact(-k) : k) - slope * k)) << trial;
+    }
+  }
+}
+
+// Also of slices that agree to their last digits.
+TEST(Enclosure, StepsFromOneHyperbolaToAnotherHoldIn50Digits) {
+  Random random(24);
+  for (int trial = 0; trial < 1000; ++trial) {
+    const double apart = trial % 2 ? log_uniform(random, 1e-15, 1e-3) : uniform(random, 0, 1);
+    const auto near = [&](double x) { return x * (1 + apart * uniform(random, 0, 0.1)); };
+    const RawSlice a{0.01, uniform(random, 0.01, 1), uniform(random, -0.9, 0.9),
+                     uniform(random, -1, 1), log_uniform(random, 1e-3, 1)};
+    const RawSlice b{near(a.a), near(a.b), near(a.rho), near(a.m), near(a.sigma)};
+    const double from = uniform(random, -2, 2);
+    const Affine k = Affine::range(from, from + log_uniform(random, 1e-6, 1));
+    const Affine step = step_at(Hyperbola::of(a), Hyperbola::of(b), k);
+    if (!std::isfinite(step.e)) continue;
+    for (const double xi : {-1.0, -0.4, 0.0, 0.7, 1.0}) {
+      const Exact at = Exact(k.c) + Exact(k.d) * xi;
+      EXPECT_TRUE(contains(step, xi, exact_w(b, at) - exact_w(a, at))) << trial;
     }
   }
 }

@@ -30,6 +30,9 @@ TEST(ExactSum, SignIsThatOfRationalArithmetic) {
     const Rational exact = Rational(x) * Rational(y) - Rational(p) - Rational(last);
     const auto sum = ExactSum().add(-p).add_product(x, y).add(-last);
     ASSERT_EQ(sign_of(sum), exact.sign()) << trial;
+    Rational total = 0;
+    for (const double part : sum.parts()) total += part;
+    ASSERT_TRUE(sum.known() && total == exact) << trial;
     zeros += exact.sign() == 0;
   }
   EXPECT_GT(zeros, 6'000);
