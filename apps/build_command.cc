@@ -62,13 +62,16 @@ std::vector<const MarkedUnderlying*> by_concern(const std::vector<MarkedUnderlyi
 
 void print_underlyings(const night::NightOutcome& outcome) {
   constexpr std::size_t kMostRows = 40;
-  console::Table table({"underlying", "status", ">expiries", ">used", ">inside", ">violations"});
+  console::Table table(
+      {"underlying", "status", ">expiries", ">used", ">inside", ">violations", "certified"});
   const auto order = by_concern(outcome.underlyings);
   for (std::size_t i = 0; i < std::min(order.size(), kMostRows); ++i) {
     const auto& r = order[i]->record;
     table.add({console::shortened(r.name, 24), std::string(publish::word(r.status)),
-               grouped(r.slices), grouped(r.used), percent(r.inside, r.used),
-               grouped(r.violations)});
+               grouped(r.slices), grouped(r.used), percent(r.inside, r.used), grouped(r.violations),
+               r.slices == 0 ? ""
+               : r.certified ? "yes"
+                             : "no"});
     table.remark(console::wrapped(r.message, 78, 2));
   }
   if (!order.empty()) fmt::print(stderr, "{}", table.text());

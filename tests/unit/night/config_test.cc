@@ -82,6 +82,8 @@ const std::vector<Stated>& stated() {
       {"backbone", "huber_half_spreads", "2", "2.0"},
       {"backbone", "least_half_spread", "0.0002", "0.0002"},
       {"backbone", "most_iterations", "50", "50"},
+      {"overlay", "most_coefficients", "12", "12"},
+      {"overlay", "most_rounds", "5", "5"},
       {"grid", "axis", "'delta'", "\"delta\""},
       {"grid", "points", "[0.25, 0.5]", "[0.25,0.5]"},
       {"grid", "tenors", "['1M', '2y']", R"(["1M","2y"])"},
@@ -180,8 +182,8 @@ TEST(ParseConfig, UnknownTableIsNamedWithTheNearestOne) {
 }
 
 TEST(ParseConfig, PlainValueWhereATableBelongsIsRefused) {
-  for (const char* table :
-       {"clean", "parity", "selection", "backbone", "grid", "flags", "source", "underlying"})
+  for (const char* table : {"clean", "parity", "selection", "backbone", "overlay", "grid", "flags",
+                            "source", "underlying"})
     EXPECT_TRUE(holds(refused(std::string(table) + " = 3\n").detail, table));
   EXPECT_TRUE(holds(refused("[source]\nfiles = 'a'\n").detail, "[[source]]"));
   EXPECT_TRUE(holds(refused("[underlying]\nHALYRD = 3\n").detail, "underlying.HALYRD"));

@@ -7,6 +7,7 @@
 #include <cstdio>
 #include <map>
 
+#include "arbitrage/certificate.h"
 #include "market/day_count.h"
 #include "pricing/black.h"
 
@@ -155,9 +156,9 @@ TEST(MarkUnderlying, CountsOfTheRecordAreThoseOfTheTable) {
 TEST(MarkUnderlying, MissIsTheDistanceOutsideTheSpreadInHalfSpreads) {
   Night night;
   night.add_flat(60);
-  // Two vols apart that no slice of this form meets within so tight a spread.
+  // Every second price up and the others down: butterflies that no surface meets.
   for (Quote& q : night.table.quotes) {
-    const double up = static_cast<int>(q.strike) % 10 == 0 ? 1.002 : 0.998;
+    const double up = static_cast<int>(q.strike) % 10 == 0 ? 1.05 : 0.95;
     q.bid *= up;
     q.ask *= up;
   }
@@ -177,6 +178,19 @@ TEST(MarkUnderlying, MissIsTheDistanceOutsideTheSpreadInHalfSpreads) {
     outside += expected != 0 ? 1 : 0;
   }
   EXPECT_GT(outside, 0);
+}
+
+TEST(MarkUnderlying, SurfaceOfQuotesThatNoSurfaceMeetsIsProvedAllTheSame) {
+  Night night;
+  night.add_flat(60);
+  for (Quote& q : night.table.quotes) {
+    const double up = static_cast<int>(q.strike) % 10 == 0 ? 1.05 : 0.95;
+    q.bid *= up;
+    q.ask *= up;
+  }
+  const auto marked = night.mark();
+  EXPECT_TRUE(marked.record.certified);
+  EXPECT_TRUE(arbitrage::certify(*marked.surface).certified);
 }
 
 TEST(MarkUnderlying, MoreMissesThanAllowedFlagTheUnderlying) {
