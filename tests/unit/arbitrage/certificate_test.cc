@@ -594,6 +594,16 @@ TEST(Certify, EndsInTheWrongOrderAreFoundFarOutAndEndsInOrderAreNot) {
   }
 }
 
+// Of flat slices the constants alone are compared.
+TEST(Certify, EndsOfFlatSlicesInTheWrongOrderAreRefused) {
+  for (const double end : {0.062, std::nextafter(0.0625, 1), 0.063}) {
+    Surface s{"FLAT", {}, {slice_at(0.5, {0.125, 0, 0}), slice_at(1, {0.1875, 0, 0})}};
+    s.slices[0].overlay = ramp(-0.3, 0, end);
+    const auto c = certify(s);
+    EXPECT_EQ(found(c, Proof::calendar, 0) == nullptr, end < 0.0625) << end << ' ' << list(c);
+  }
+}
+
 // Both ends are in order, and between the knots of one slice, from -1 to -0.4, and those of the
 // next, from 0.4, one has its right end and the other its left. The backbones are 0.0182 apart near
 // 0.25, and 0.0187 or more where the knots are.
