@@ -227,6 +227,12 @@ class Marker {
       surface.slices[i].overlay = fit->slices[i].overlay;
     }
     if (fit->backbone_end == surface::FitEnd::stopped_early) flag("fit stopped early");
+    constexpr int kMostHumps = 2;  // one, or two around an event
+    const auto humped = std::count_if(fit->slices.begin(), fit->slices.end(),
+                                      [](const auto& s) { return s.humps > kMostHumps; });
+    if (humped > 0)
+      flag(fmt::format("density with over {} humps: {} of {} expiries", kMostHumps, humped,
+                       fit->slices.size()));
     out_.surface = arbitrage::with_proved_rules(std::move(surface));
     certificate_ = arbitrage::certify(*out_.surface);
     out_.record.certified = certificate_.certified;

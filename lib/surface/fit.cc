@@ -14,11 +14,11 @@ namespace {
 using Blocks = std::vector<Eigen::VectorXd>;
 
 // Least values asked for where a condition is watched; half of them is enough to pass, and leaves
-// the certificate room. Of g; of total variance over the money's; of its step between expiries,
-// relative.
+// the certificate room. Of g; of total variance over the money's; of its step between expiries over
+// that of the backbones, which keeps local volatility from vanishing.
 constexpr double kLeastButterfly = 0.03;
 constexpr double kLeastVariance = 0.05;
-constexpr double kLeastStep = 1e-4;
+constexpr double kLeastStep = 0.05;
 constexpr double kPasses = 0.5;
 // Price of leaving a spread, by half-spreads: dearer than any pull to a mid inside one. Breaking a
 // condition costs so many times what all spreads of the slice together could gain by it.
@@ -26,7 +26,7 @@ constexpr double kSpreadPenalty = 20;
 constexpr double kConditionPenalty = 100;
 // Quotes are asked to be inside by this share of the spread, so that rounding leaves them so.
 constexpr double kInside = 0.98;
-constexpr int kMostModes = 2;
+constexpr int kMostHumps = 2;
 
 // One place on a slice, and which conditions are watched there.
 struct Place {
@@ -115,7 +115,7 @@ class OverlayFit {
   // they were looked for.
   bool from_smooth() {
     if (!settle()) return false;
-    constexpr int kSmoothings = 3;
+    constexpr int kSmoothings = 5;
     for (int i = 0; i < kSmoothings && smoother(); ++i) {
     }
     return true;
@@ -147,6 +147,20 @@ class OverlayFit {
   }
 
   Overlay overlay(std::size_t slice) const { return models_[slice].overlay(x_[slice]); }
+
+  // Local maxima of the density.
+  int humps(std::size_t j) const {
+    int count = 0;
+    double before = 0;
+    bool rising = true;
+    for (const Place& p : places_[j]) {
+      const double density = models_[j].density(p.probe, x_[j]);
+      if (rising && density < before) ++count;
+      rising = density > before || (rising && density == before);
+      before = density;
+    }
+    return count;
+  }
 
   // Quotes outside their spreads, and by how many half-spreads together; strays aside.
   std::size_t outside() const {
@@ -180,8 +194,9 @@ class OverlayFit {
   Crossing crossing_at(std::size_t j, double k) const {
     const SliceModel &a = models_[j], &b = models_[j + 1];
     Crossing c{a.probe_at(k), b.probe_at(k), 0};
-    const double wa = a.total_variance(c.first.backbone);
-    c.floor = std::min(kLeastStep * wa, 0.5 * (b.total_variance(c.second.backbone) - wa));
+    c.floor = kLeastStep *
+              std::min(b.total_variance(c.second.backbone) - a.total_variance(c.first.backbone),
+                       b.shape_variance(k) - a.shape_variance(k));
     return c;
   }
 
@@ -199,13 +214,13 @@ class OverlayFit {
     return false;
   }
 
-  // Makes slices with a density of many modes smoother, as long as no further quote leaves its
+  // Makes slices with a density of many humps smoother, as long as no further quote leaves its
   // spread. Returns whether that went well and something is left to do.
   bool smoother() {
     constexpr double kFactor = 4;
     std::vector<std::size_t> many;
     for (std::size_t j = 0; j < models_.size(); ++j)
-      if (modes(j) > kMostModes) many.push_back(j);
+      if (humps(j) > kMostHumps) many.push_back(j);
     if (many.empty()) return false;
     const Blocks before = x_;
     const std::size_t out = outside();
@@ -214,20 +229,6 @@ class OverlayFit {
     if (settle() && outside() <= out) return true;
     x_ = before;
     return false;
-  }
-
-  // Local maxima of the density.
-  int modes(std::size_t j) const {
-    int count = 0;
-    double before = 0;
-    bool rising = true;
-    for (const Place& p : places_[j]) {
-      const double density = models_[j].density(p.probe, x_[j]);
-      if (rising && density < before) ++count;
-      rising = density > before || (rising && density == before);
-      before = density;
-    }
-    return count;
   }
 
   // The largest change of a quote's misfit, half-spreads.
@@ -455,20 +456,21 @@ Result<SurfaceFit> fit_surface(std::span<const FitSlice> slices, const FitOption
   for (std::size_t j = 0; j < slices.size(); ++j)
     models.emplace_back(slices[j], shapes->slices[j], options);
   const auto met = [](const SliceModel& m) { return m.met_by_backbone(); };
-  if (std::all_of(models.begin(), models.end(), met)) return fit;
   for (auto& m : models) m.choose_roughness(false);
+  if (std::all_of(models.begin(), models.end(), met)) return fit;
   const auto wings = wings_of(shapes->slices, models);
   OverlayFit first(on(wings, models), options.overlay.most_rounds);
   const bool settled = first.from_smooth();
   fit.overlay_end = OverlayEnd::settled;
-  for (std::size_t j = 0; j < slices.size(); ++j) fit.slices[j] = {wings[j], first.overlay(j)};
+  for (std::size_t j = 0; j < slices.size(); ++j)
+    fit.slices[j] = {wings[j], first.overlay(j), first.humps(j)};
   if (settled && first.outside() == 0) return fit;
   // The backbones of the shapes are free of arbitrage by themselves: a safe place to start from.
   OverlayFit second(on(shapes->slices, models), options.overlay.most_rounds);
   second.from_backbone();
   if (settled && first.missed() <= second.missed()) return fit;
   for (std::size_t j = 0; j < slices.size(); ++j)
-    fit.slices[j] = {shapes->slices[j], second.overlay(j)};
+    fit.slices[j] = {shapes->slices[j], second.overlay(j), second.humps(j)};
   return fit;
 }
 

@@ -30,6 +30,7 @@ struct FitOptions {
 struct FittedSlice {
   SliceParameters backbone;
   Overlay overlay;
+  int humps = 1;  // local maxima of the density of ln(S/F); one without an overlay
 };
 
 enum class OverlayEnd : std::uint8_t {

@@ -13,6 +13,9 @@ using Eigen::VectorXd;
 
 // A quote counts as well inside its spread up to this share of the way from mid to bid or ask.
 constexpr double kWellInside = 0.8;
+// What a mid is credited with as its own error, root mean square, in half-spreads: the spread is
+// three of these either way.
+constexpr double kMidError = 1.0 / 3;
 // Past this many half-spreads a quote pulls with constant force, and past kStray of them it does
 // not count, unless quotes like it are common.
 constexpr double kRobust = 1.5;
@@ -128,14 +131,16 @@ double SliceModel::misfit(const QuoteRow& q, const VectorXd& x) const {
   return q.offset + q.scale * dot(q.basis, q.basis.value, x);
 }
 
-double SliceModel::discrepancy(const VectorXd& x) const {
-  double sum = 0;
+SliceModel::Discrepancy SliceModel::discrepancy(const VectorXd& x) const {
+  Discrepancy out{0, 0};
   for (const QuoteRow& q : quotes_) {
+    if (q.stray) continue;
     const double r = misfit(q, x);
     const double over = std::max(r - kWellInside * q.high, kWellInside * q.low - r);
-    sum += std::clamp(over, 0.0, kStray);
+    out.over += std::clamp(over, 0.0, kStray);
+    out.square += std::min(r * r, kStray * kStray) / static_cast<double>(quotes_.size());
   }
-  return sum;
+  return out;
 }
 
 std::size_t SliceModel::outside(const VectorXd& x) const {
@@ -146,7 +151,10 @@ std::size_t SliceModel::outside(const VectorXd& x) const {
       }));
 }
 
-bool SliceModel::met_by_backbone() const { return discrepancy(VectorXd::Zero(size())) == 0; }
+bool SliceModel::met_by_backbone() const {
+  const Discrepancy d = discrepancy(VectorXd::Zero(size()));
+  return d.over <= most_.over && d.square <= most_.square;
+}
 
 // The integral of the squared third derivative of W less that of the shape (of the wings' backbone
 // where there are no quotes); third derivatives of splines are constant between knots.
@@ -218,10 +226,13 @@ void SliceModel::choose_roughness(bool finely) {
   }
   find_strays(x);
   constexpr double kSlack = 0.02;
-  const double most = (1 + kSlack) * discrepancy(x) + kSlack;
+  const Discrepancy least = discrepancy(x);
+  most_ = {(1 + kSlack) * least.over + kSlack,
+           std::max(kMidError * kMidError, (1 + kSlack) * least.square)};
   const auto meets = [&](double lambda) {
     assemble(lambda);
-    return discrepancy(smooth()) <= most;
+    const Discrepancy d = discrepancy(smooth());
+    return d.over <= most_.over && d.square <= most_.square;
   };
   double light = kLightest, heavy = kHeaviest;
   while (heavy > light * kStep && !meets(heavy / kStep)) heavy /= kStep;

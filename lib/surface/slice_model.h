@@ -57,11 +57,12 @@ class SliceModel {
  public:
   SliceModel(const FitSlice& data, const SliceParameters& shape, const FitOptions& options);
 
-  // Whether the backbone meets every quote well inside its spread.
-  bool met_by_backbone() const;
-  // The largest roughness weight at which the quotes are as well inside their spreads as any
-  // weight allows (V. A. Morozov's discrepancy principle, the discrepancy being the spread).
+  // The largest roughness weight at which the quotes are as well inside their spreads, and as near
+  // their mids for mids that err by a third of a half-spread, as any weight allows (V. A. Morozov's
+  // discrepancy principle, the discrepancy being the spread).
   void choose_roughness(bool finely);
+  // Then: whether the backbone does as well without an overlay.
+  bool met_by_backbone() const;
   // Slopes dw/dk, left and right, with which the quotes end.
   std::array<double, 2> end_slopes() const;
   // Puts the overlay on another backbone; its roughness weight has to be chosen again, since a
@@ -83,6 +84,8 @@ class SliceModel {
   Probe probe_at(double k) const;
   ScaledSmile smile(const Probe& probe, const Eigen::VectorXd& x) const;
   double total_variance(const ScaledSmile& smile) const { return s0_ * s0_ * smile.w; }
+  // Of the backbone that the slice was made with.
+  double shape_variance(double k) const { return smile_at(shape_, k).w; }
   double misfit(const QuoteRow& quote, const Eigen::VectorXd& x) const;
   // Quotes outside their spreads, strays aside.
   std::size_t outside(const Eigen::VectorXd& x) const;
@@ -97,8 +100,12 @@ class SliceModel {
   void weigh_quotes();
   void find_strays(const Eigen::VectorXd& x);
   void assemble(double lambda);
-  // By how much quotes are not well inside their spreads, half-spreads, a stray no more than one.
-  double discrepancy(const Eigen::VectorXd& x) const;
+  // By how much quotes are not well inside their spreads, together, half-spreads; and the mean
+  // square of their misfits. Strays aside.
+  struct Discrepancy {
+    double over, square;
+  };
+  Discrepancy discrepancy(const Eigen::VectorXd& x) const;
   ScaledBasis basis_at_z(double z) const;
   ScaledSmile scaled(const SliceParameters& parameters, double z) const;
 
@@ -111,6 +118,7 @@ class SliceModel {
   Eigen::MatrixXd roughness_, misfit_, hessian_;
   Eigen::VectorXd roughness_pull_, misfit_pull_, gradient_;
   double lambda_ = 0;
+  Discrepancy most_{0, 0};  // that the roughness weight may leave
 };
 
 }  // namespace duskgrid::surface
