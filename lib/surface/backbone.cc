@@ -424,7 +424,7 @@ Result<BackboneFit> fit_backbone(std::span<const FitSlice> slices, const Backbon
     return !(s.year_fraction > 0) ||
            std::any_of(s.quotes.begin(), s.quotes.end(), [](const FitQuote& q) {
              return !std::isfinite(q.k) || !std::isfinite(q.half_spread) || !(q.vol > 0) ||
-                    !std::isfinite(q.vol);
+                    !std::isfinite(q.vol) || !std::isfinite(q.vol_bid) || !std::isfinite(q.vol_ask);
            });
   };
   if (slices.empty() || std::any_of(slices.begin(), slices.end(), empty))

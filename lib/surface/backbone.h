@@ -39,7 +39,8 @@ struct FitQuote {
   double k;
   double vol;
   double half_spread;
-  double vol_bid = vol - half_spread;  // where the spread ends; 0 for a bid at intrinsic
+  // Where the spread ends: finite, vol between them; 0 for a bid at intrinsic.
+  double vol_bid = vol - half_spread;
   double vol_ask = vol + half_spread;
 };
 
@@ -74,8 +75,8 @@ struct BackboneFit {
 // A. Mingone, arXiv 2204.00312 (2022), in which every parameter in its box is free of
 // arbitrage. Each slice needs one quote or more; what 1 to 4 quotes leave open is
 // taken from the neighbouring slices by a weak pull (one quote alone gives a level).
-// Failure: not_enough_data without slices or with an empty one. Cost a step: linear in quotes,
-// cubic in slices. Deterministic.
+// Failure: not_enough_data without slices or with an empty one. Cost a step: linear in quotes
+// and in slices. Deterministic.
 Result<BackboneFit> fit_backbone(std::span<const FitSlice> slices, const BackboneOptions& options);
 
 }  // namespace duskgrid::surface

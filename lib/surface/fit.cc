@@ -4,6 +4,7 @@
 
 #include <algorithm>
 #include <cmath>
+#include <optional>
 
 #include "surface/quadratic_program.h"
 #include "surface/slice_model.h"
@@ -184,10 +185,12 @@ class OverlayFit {
   static void add_far_places(std::vector<double>& ks) {
     constexpr int kFurther = 10;
     constexpr double kRatio = 4;
-    double left = ks.front(), right = ks.back();
+    const double left = ks.front(), right = ks.back();
+    double span = right - left;
     for (int i = 0; i < kFurther; ++i) {
-      ks.insert(ks.begin(), left *= kRatio);
-      ks.push_back(right *= kRatio);
+      span *= kRatio;
+      ks.insert(ks.begin(), left - span);
+      ks.push_back(right + span);
     }
   }
 
@@ -225,9 +228,13 @@ class OverlayFit {
     const Blocks before = x_;
     const std::size_t out = outside();
     for (const std::size_t j : many) models_[j].roughen(kFactor);
-    x_ = solve_quadratic(program(), x_).x;
-    if (settle() && outside() <= out) return true;
+    QuadraticSolution found = solve_quadratic(program(), x_);
+    if (found.solved) {
+      x_ = std::move(found.x);
+      if (settle() && outside() <= out) return true;
+    }
     x_ = before;
+    for (const std::size_t j : many) models_[j].roughen(1 / kFactor);
     return false;
   }
 
@@ -469,6 +476,7 @@ Result<SurfaceFit> fit_surface(std::span<const FitSlice> slices, const FitOption
   OverlayFit second(on(shapes->slices, models), options.overlay.most_rounds);
   second.from_backbone();
   if (settled && first.missed() <= second.missed()) return fit;
+  fit.overlay_end = OverlayEnd::sheltered;
   for (std::size_t j = 0; j < slices.size(); ++j)
     fit.slices[j] = {shapes->slices[j], second.overlay(j), second.humps(j)};
   return fit;

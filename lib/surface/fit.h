@@ -17,7 +17,8 @@ struct OverlayOptions {
   // Most coefficients of a slice. Range: 0 (no overlay) or 6 to 64. Fewer cannot follow
   // every smile; more cost time and change little, since roughness is penalised.
   int most_coefficients = 20;
-  // Most rounds of linearised conditions before the overlay is given up. Range: >= 1.
+  // Most rounds of linearised conditions from the smooth overlays; three times as many from the
+  // backbones. Range: >= 1.
   int most_rounds = 12;
   std::optional<std::string> problem() const;
 };
@@ -34,9 +35,10 @@ struct FittedSlice {
 };
 
 enum class OverlayEnd : std::uint8_t {
-  none,      // every quote is well inside its spread without one, or none was asked for
-  settled,   // every slice has one
-  given_up,  // none found that is free of arbitrage: the backbone alone
+  none,       // every quote is well inside its spread without one, or none was asked for
+  settled,    // every slice has one, found from the smooth overlays
+  sheltered,  // every slice has one, found from the backbones by steps free of arbitrage; quotes
+              // may be missed that a longer way round would meet
 };
 
 struct SurfaceFit {

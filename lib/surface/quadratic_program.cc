@@ -11,9 +11,12 @@ using Eigen::MatrixXd;
 using Eigen::VectorXd;
 using Blocks = std::vector<VectorXd>;
 
-constexpr int kMostIterations = 60;
-constexpr double kAccuracy = 1e-9;  // of complementarity, per row, in units of the objective
-constexpr double kSmallPull = 1;    // pulls are not measured against less
+constexpr int kMostIterations = 100;
+// Of complementarity, per row, in units of the objective, and of the residuals relative to what
+// they are made of: what is aimed at, and what is accepted where it goes no further.
+constexpr double kAccuracy = 1e-9, kAcceptable = 1e-6;
+constexpr double kDear = 1e3;     // penalties from here on are beyond any pull
+constexpr double kSmallPull = 1;  // pulls are not measured against less
 constexpr double kKeepInside = 0.995;
 
 double product(const QuadraticRow& row, const Blocks& x) {
@@ -32,6 +35,16 @@ void add(const QuadraticRow& row, double scale, Blocks& x) {
   if (!row.ties) return;
   for (Index i = 0; i < 4; ++i)
     x[row.block + 1][row.next_first + i] += scale * row.next_value[static_cast<std::size_t>(i)];
+}
+
+// Adds |scale a|.
+void add_sizes(const QuadraticRow& row, double scale, Blocks& x) {
+  for (Index i = 0; i < 4; ++i)
+    x[row.block][row.first + i] += std::abs(scale * row.value[static_cast<std::size_t>(i)]);
+  if (!row.ties) return;
+  for (Index i = 0; i < 4; ++i)
+    x[row.block + 1][row.next_first + i] +=
+        std::abs(scale * row.next_value[static_cast<std::size_t>(i)]);
 }
 
 using Four = Eigen::Map<const Eigen::Vector4d>;
@@ -100,19 +113,22 @@ struct State {
 class Solver {
  public:
   Solver(const QuadraticProgram& program, const Blocks& start)
-      : p_(program), x_(start), states_(program.rows.size()), step_(program.rows.size()) {
-    for (std::size_t i = 0; i < p_.rows.size(); ++i) states_[i] = first_state(p_.rows[i]);
-    for (const auto& row : p_.rows) complementary_ += std::isfinite(row.penalty) ? 2 : 1;
+      : p_(program),
+        x_(start),
+        states_(program.rows.size()),
+        step_(program.rows.size()),
+        wanted_(program.rows.size()) {
+    first_states();
+    for (const auto& row : p_.rows) complementary_ += soft(row) ? 2 : 1;
   }
 
   QuadraticSolution run() {
     if (p_.rows.empty()) return without_rows();
     for (int i = 0; i < kMostIterations; ++i) {
       const double mu = residuals();
-      if (mu < kAccuracy && dual_residual_ < kAccuracy && primal_residual_ < kAccuracy)
-        return {std::move(x_), true, i};
-      if (!std::isfinite(mu)) break;
-      if (!factor()) break;
+      if (accurate(mu, kAccuracy)) return {std::move(x_), true, i};
+      // Rounding may stop it short of that.
+      if (!std::isfinite(mu) || !factor()) return {std::move(x_), accurate(mu, kAcceptable), i};
       direction([](std::size_t) { return 0.0; }, [](std::size_t) { return 0.0; });
       const double predicted = mu_after(std::min(longest(1.0), 1.0));
       const double center = std::pow(predicted / mu, 3) * mu;
@@ -121,10 +137,15 @@ class Solver {
                 [&](std::size_t k) { return center - affine_[k].t * affine_[k].y; });
       advance(longest(kKeepInside));
     }
-    return {std::move(x_), false, kMostIterations};
+    const bool solved = accurate(residuals(), kAcceptable);
+    return {std::move(x_), solved, kMostIterations};
   }
 
  private:
+  bool accurate(double mu, double accuracy) const {
+    return mu < accuracy && dual_residual_ < accuracy && primal_residual_ < accuracy;
+  }
+
   QuadraticSolution without_rows() {
     chain_.reset(p_.hessian);
     Blocks x = p_.gradient;
@@ -134,24 +155,37 @@ class Solver {
     return {factored ? std::move(x) : std::move(x_), factored, 1};
   }
 
+  static bool soft(const QuadraticRow& row) { return std::isfinite(row.penalty); }
+
   // Rows whose penalty is beyond any pull begin like hard ones: their shortfall is next to nothing
-  // and a'x - bound + t may differ from v at first.
+  // and a'x - bound + t may differ from v at first. The further the start is from meeting them, the
+  // larger the products it begins with: close to the boundary steps would be short.
+  void first_states() {
+    constexpr double kLeastProduct = 0.1, kByShortfall = 1e3;
+    double shortfall = 0;
+    for (const QuadraticRow& row : p_.rows)
+      if (row.penalty >= kDear) shortfall = std::max(shortfall, row.bound - product(row, x_));
+    first_product_ = kLeastProduct + kByShortfall * shortfall;
+    for (std::size_t i = 0; i < states_.size(); ++i) states_[i] = first_state(p_.rows[i]);
+  }
+
   State first_state(const QuadraticRow& row) const {
-    constexpr double kLeast = 1e-2, kFirstProduct = 0.1, kDear = 1e3;
+    constexpr double kLeast = 1e-2;
     const double gap = product(row, x_) - row.bound;
     State s{};
     if (row.penalty < kDear) {
       s.v = std::max(gap, 0.0) + kLeast;
       s.t = std::max(-gap, 0.0) + kLeast;
-      s.z = row.penalty * s.t / (s.v + s.t);
-      s.y = row.penalty - s.z;
+      s.z = row.penalty * (s.t / (s.v + s.t));
+      s.y = row.penalty * (s.v / (s.v + s.t));
       return s;
     }
-    s.v = std::max(gap, kLeast);
-    s.z = std::min(1.0, kFirstProduct / s.v);
-    if (!std::isfinite(row.penalty)) return s;
+    s.v = std::max(std::abs(gap), kLeast);
+    s.z = first_product_ / s.v;
+    if (!soft(row)) return s;
+    s.z = std::min(s.z, 0.5 * row.penalty);
     s.y = row.penalty - s.z;
-    s.t = kFirstProduct / s.y;
+    s.t = first_product_ / s.y;
     return s;
   }
 
@@ -163,27 +197,34 @@ class Solver {
     Blocks size(x_.size());  // of the terms of each component
     for (std::size_t j = 0; j < x_.size(); ++j) {
       size[j] = dual_[j].cwiseAbs() + p_.hessian[j].cwiseAbs() * x_[j].cwiseAbs();
+      size[j].array() += kSmallPull;
       dual_[j].noalias() += p_.hessian[j] * x_[j];
     }
     for (std::size_t i = 0; i < states_.size(); ++i) {
       const State& s = states_[i];
+      const QuadraticRow& row = p_.rows[i];
       mu += s.v * s.z + s.t * s.y;
-      add(p_.rows[i], -s.z, dual_);
-      primal_residual_ = std::max(primal_residual_,
-                                  std::abs(product(p_.rows[i], x_) - p_.rows[i].bound + s.t - s.v));
+      add(row, -s.z, dual_);
+      add_sizes(row, s.z, size);
+      const double gap = product(row, x_) - row.bound;
+      const double scale = 1 + std::abs(row.bound) + s.v + s.t;
+      primal_residual_ = std::max(primal_residual_, std::abs(gap + s.t - s.v) / scale);
     }
     dual_residual_ = 0;
     for (std::size_t j = 0; j < x_.size(); ++j)
-      dual_residual_ = std::max(
-          dual_residual_, (dual_[j].array().abs() / (size[j].array() + kSmallPull)).maxCoeff());
+      dual_residual_ =
+          std::max(dual_residual_, (dual_[j].array().abs() / size[j].array()).maxCoeff());
     return mu / complementary_;
   }
 
-  static double weight(const State& s) { return 1 / (s.v / s.z + (s.y > 0 ? s.t / s.y : 0)); }
+  double weight(std::size_t i) const {
+    const State& s = states_[i];
+    return 1 / (s.v / s.z + (soft(p_.rows[i]) ? s.t / s.y : 0));
+  }
 
   bool factor() {
     chain_.reset(p_.hessian);
-    for (std::size_t i = 0; i < states_.size(); ++i) chain_.add(p_.rows[i], weight(states_[i]));
+    for (std::size_t i = 0; i < states_.size(); ++i) chain_.add(p_.rows[i], weight(i));
     return chain_.factor();
   }
 
@@ -195,20 +236,17 @@ class Solver {
     for (std::size_t i = 0; i < states_.size(); ++i) {
       const State& s = states_[i];
       const QuadraticRow& row = p_.rows[i];
-      const bool soft = s.y > 0;
-      // In step_: v holds the row's own residual, t the soft part, until the step is known.
-      step_[i].v = target_v(i) / s.z - s.v + s.v - (product(row, x_) - row.bound + s.t);
-      step_[i].t = soft ? target_t(i) / s.y - s.t : 0;
-      add(row, weight(s) * (step_[i].v - step_[i].t), right_);
+      const double shortfall = soft(row) ? target_t(i) / s.y - s.t : 0;
+      wanted_[i] = target_v(i) / s.z - (product(row, x_) - row.bound + s.t) - shortfall;
+      add(row, weight(i) * wanted_[i], right_);
     }
     chain_.solve(right_);
     for (std::size_t i = 0; i < states_.size(); ++i) {
       const State& s = states_[i];
-      const double dz = weight(s) * (step_[i].v - step_[i].t - product(p_.rows[i], right_));
-      const bool soft = s.y > 0;
-      const double dv = (target_v(i) - s.v * dz) / s.z - s.v;
-      const double dt = soft ? (target_t(i) + s.t * dz) / s.y - s.t : 0;
-      step_[i] = {dv, dz, dt, soft ? -dz : 0};
+      const bool is_soft = soft(p_.rows[i]);
+      const double dz = weight(i) * (wanted_[i] - product(p_.rows[i], right_));
+      step_[i] = {(target_v(i) - s.v * dz) / s.z - s.v, dz,
+                  is_soft ? (target_t(i) + s.t * dz) / s.y - s.t : 0, is_soft ? -dz : 0};
     }
   }
 
@@ -220,7 +258,7 @@ class Solver {
     for (std::size_t i = 0; i < states_.size(); ++i) {
       limit(states_[i].v, step_[i].v);
       limit(states_[i].z, step_[i].z);
-      if (!(states_[i].y > 0)) continue;
+      if (!soft(p_.rows[i])) continue;
       limit(states_[i].t, step_[i].t);
       limit(states_[i].y, step_[i].y);
     }
@@ -251,6 +289,8 @@ class Solver {
   const QuadraticProgram& p_;
   Blocks x_, dual_, right_;
   std::vector<State> states_, step_, affine_;
+  std::vector<double> wanted_;  // change of a'x that would bring each row to its targets
+  double first_product_ = 0;
   Chain chain_;
   double complementary_ = 0;
   double primal_residual_ = 0, dual_residual_ = 0;

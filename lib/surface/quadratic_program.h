@@ -37,8 +37,9 @@ struct QuadraticSolution {
   int iterations;
 };
 
-// `start` need not satisfy the rows. Accuracy: complementarity and residuals relative to the size
-// of the program. A program whose hard rows contradict one another ends unsolved.
+// `start` need not satisfy the rows, but should not miss those of penalties above 1e3 by more than
+// some thousands. Accuracy: complementarity and residuals relative to the size of the program. A
+// program whose hard rows contradict one another ends unsolved.
 QuadraticSolution solve_quadratic(const QuadraticProgram& program,
                                   const std::vector<Eigen::VectorXd>& start);
 

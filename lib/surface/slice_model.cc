@@ -80,7 +80,9 @@ void SliceModel::place_knots(const FitSlice& data, int most) {
   const int coefficients = std::clamp(quotes / 2 + kLeast, kLeast, std::max(most, kLeast));
   const int between = coefficients + 1 - 2 * kLanding;
   constexpr double kNarrowest = 0.2;
-  const double low = bend(quoted_low_), high = std::max(bend(quoted_high_), low + kNarrowest);
+  const double middle = 0.5 * (bend(quoted_low_) + bend(quoted_high_));
+  const double half = 0.5 * std::max(bend(quoted_high_) - bend(quoted_low_), kNarrowest);
+  const double low = middle - half, high = middle + half;
   const double width = (high - low) / between;
   const double landing = kLandingWidth * std::max(width, 1.5 * kNarrowest);
   for (int i = -kLanding; i < 0; ++i) knots_.push_back(unbend(low + landing * i));
@@ -129,6 +131,13 @@ void SliceModel::add_quote(const FitQuote& q, double least_half_spread) {
 
 double SliceModel::misfit(const QuoteRow& q, const VectorXd& x) const {
   return q.offset + q.scale * dot(q.basis, q.basis.value, x);
+}
+
+// Zero where rounding leaves the system without a factor.
+VectorXd SliceModel::smooth() const {
+  const Eigen::LLT<Eigen::MatrixXd> factor(hessian_);
+  if (factor.info() != Eigen::Success) return VectorXd::Zero(size());
+  return factor.solve(-gradient_);
 }
 
 SliceModel::Discrepancy SliceModel::discrepancy(const VectorXd& x) const {
@@ -209,6 +218,10 @@ void SliceModel::choose_roughness(bool finely) {
   constexpr double kLightest = 1e-3, kHeaviest = 1e6, kStep = 8, kFinest = 1.1;
   constexpr int kReweightings = 10;
   measure_roughness();
+  for (QuoteRow& q : quotes_) {
+    q.weight = 1;
+    q.stray = false;
+  }
   weigh_quotes();
   assemble(kLightest);
   VectorXd x = smooth();
@@ -219,9 +232,9 @@ void SliceModel::choose_roughness(bool finely) {
       q.weight = r > kRobust ? kRobust / r : 1;
       robust = robust || r > kRobust;
     }
-    if (!robust) break;
     weigh_quotes();
     assemble(kLightest);
+    if (!robust) break;
     x = smooth();
   }
   find_strays(x);

@@ -7,6 +7,7 @@
 
 #include <Eigen/Dense>
 #include <array>
+#include <cstdint>
 #include <vector>
 
 #include "surface/backbone.h"
@@ -45,7 +46,7 @@ struct QuoteRow {
 };
 
 // Conditions on a smile at one place, each >= 0: the slice's own butterfly and, for the last slice,
-// that of every smile with variance added (docs/methods.md, 6.3).
+// that of every smile with variance added (docs/methods.md, 6.4).
 enum class Condition : std::uint8_t { positive, butterfly, later_bend, later_turn };
 // Value of the condition and its derivatives in W, W', W''.
 struct Conditioned {
@@ -76,7 +77,7 @@ class SliceModel {
   // The overlay without regard to arbitrage minimises x' hessian x / 2 + gradient' x.
   const Eigen::MatrixXd& hessian() const { return hessian_; }
   const Eigen::VectorXd& gradient() const { return gradient_; }
-  Eigen::VectorXd smooth() const { return hessian_.llt().solve(-gradient_); }
+  Eigen::VectorXd smooth() const;
 
   // Where to begin to look: within the knots, and ever wider apart in the tails, where the smile is
   // a hyperbola. Log-moneyness, increasing.

@@ -343,7 +343,8 @@ Promise promise_of(ChainKind kind) {
     case ChainKind::next_day: return {0.99, 1};    // 99.97 %
     case ChainKind::few_quotes: return {0.99, 1};  // 99.89 %
     case ChainKind::zigzag: return {0.99, 1};      // 99.77 %, smooth counts for more
-    case ChainKind::steep: return {0.99, 1};       // 99.88 %
+    case ChainKind::steep:
+      return {0.99, 1};  // 99.88 %
     // 99.3 %: neighbours of a stray at the end of a slice, where it cannot be told from a wing.
     case ChainKind::stray: return {0.98, 0.05};
     // The quotes beside a broken strike take a part of its misfit: 99.3 %, 1.7 % of the misfit.
@@ -354,7 +355,7 @@ Promise promise_of(ChainKind kind) {
 }
 
 struct Tally {
-  std::uint64_t chains = 0, failures = 0, unsettled = 0, uncertified = 0;
+  std::uint64_t chains = 0, failures = 0, sheltered = 0, uncertified = 0;
   std::uint64_t quotes = 0, inside = 0;  // of those that do not offend
   double worst = 0;                      // of them, half-spreads
   double misfit = 0, misfit_else = 0;    // half-spreads
@@ -405,7 +406,7 @@ void fit_and_judge(const AdversarialChain& chain, Tally& tally) {
   }
   const auto surface = fitted::surface_of(chain.slices, *fit);
   const bool certified = fitted::certified(surface);
-  tally.unsettled += fit->overlay_end == surface::OverlayEnd::given_up ? 1 : 0;
+  tally.sheltered += fit->overlay_end == surface::OverlayEnd::sheltered ? 1 : 0;
   tally.uncertified += certified ? 0 : 1;
   EXPECT_TRUE(certified) << name_of(chain);
   measure(chain, surface, tally);
@@ -414,7 +415,7 @@ void fit_and_judge(const AdversarialChain& chain, Tally& tally) {
 void print(std::string_view kind, const Tally& t) {
   std::cout << std::left << std::setw(17) << kind << std::right << std::fixed
             << std::setprecision(2) << std::setw(5) << t.chains << " chains, " << t.failures
-            << " failed, " << t.uncertified << " uncertified, " << t.unsettled << " unsettled; "
+            << " failed, " << t.uncertified << " uncertified, " << t.sheltered << " sheltered; "
             << t.quotes << " quotes, " << 100 * t.inside_share() << " % inside, worst " << t.worst
             << " half-spreads, " << 100 * t.else_share() << " % of the misfit away from offenders\n"
             << std::defaultfloat;
