@@ -122,15 +122,18 @@ Stage worst_between(const surface::Surface& surface, std::size_t slice, double k
   return stage_at(surface, t, a.expiry + (b.expiry - a.expiry) * worst / kParts);
 }
 
+// Of the backbone, which has one even where an overlay leaves no volatility at the money.
+double deviation(const surface::Slice& s) { return std::sqrt(s.backbone.theta); }
+
 // Far out in a wing that is broken as a whole.
-double finite(double k, const Stage& stage) {
-  return std::isfinite(k) ? k : std::copysign(20 * std::sqrt(stage.smile.at(0).w), k);
+double finite(double k, const surface::Slice& s) {
+  return std::isfinite(k) ? k : std::copysign(20 * deviation(s), k);
 }
 
 // Evenly over the quoted range of a slice and 20 at-the-money deviations beyond.
 void add_places(const surface::Slice& s, std::vector<double>& places) {
   constexpr int kParts = 300;
-  const double beyond = 20 * std::sqrt(s.backbone.theta);
+  const double beyond = 20 * deviation(s);
   const double low = std::min(s.k_low, 0.0) - beyond, high = std::max(s.k_high, 0.0) + beyond;
   for (int i = 0; i <= kParts; ++i)
     places.push_back(std::lerp(low, high, static_cast<double>(i) / kParts));
@@ -169,9 +172,9 @@ std::optional<Violation> best_calendar(const Stage& early, const Stage& late,
 }
 
 // Narrow ones fit into small regions, in wide ones less is lost in the rounding of the prices.
-std::optional<Violation> best_butterfly(const Stage& stage, const std::vector<double>& places) {
+std::optional<Violation> best_butterfly(const Stage& stage, double widest,
+                                        const std::vector<double>& places) {
   constexpr int kWidths = 30;
-  const double widest = std::sqrt(stage.smile.at(0).w);
   std::optional<Violation> best;
   for (std::size_t i = 0; i < places.size(); ++i)
     // The place found has every width; of the many others a few will do.
@@ -259,13 +262,15 @@ std::optional<Violation> violation_of(const surface::Surface& surface, const Fin
   const bool tradable =
       f.proof == Proof::butterfly || f.proof == Proof::calendar || f.proof == Proof::between;
   if (!f.broken || !tradable) return std::nullopt;
+  const surface::Slice& slice = surface.slices[f.slice];
   const Stage stage = stage_of(surface, f.slice);
-  const double found = finite(f.k, stage);
+  const double found = finite(f.k, slice);
   const auto places = places_of(surface, f, found);
   if (f.proof == Proof::calendar)
     return best_calendar(stage, stage_of(surface, f.slice + 1), places);
-  auto best = best_butterfly(
-      f.proof == Proof::between ? worst_between(surface, f.slice, found) : stage, places);
+  auto best =
+      best_butterfly(f.proof == Proof::between ? worst_between(surface, f.slice, found) : stage,
+                     deviation(slice), places);
   if (best && !std::isfinite(f.k)) best->kind = Kind::wing;
   return best;
 }
