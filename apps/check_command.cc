@@ -113,8 +113,11 @@ class Told {
   // A wing may be one end of something wider.
   std::string most(const arbitrage::Violation& trade) const {
     const double strike = trade.strikes[trade.kind == arbitrage::Kind::calendar ? 0 : 1];
-    return fmt::format(", the most at strike {:.8g} (k {:.6g})", strike,
-                       std::log(strike / slices_[finding_.slice].forward));
+    const std::string text = fmt::format(", the most at strike {:.8g}", strike);
+    // Between expiries the forward is not that of the slice.
+    if (finding_.proof == arbitrage::Proof::between) return text;
+    const double k = std::log(strike / slices_[finding_.slice].forward);
+    return text + fmt::format(" (k {:.6g})", k);
   }
 
   const quotes::Clock& clock_;
