@@ -156,9 +156,13 @@ void add_build(CLI::App& program, int& status) {
   args->input.add_to(*command);
   command->add_option("--out", args->out, "Folder that gets a folder a night")
       ->capture_default_str();
-  command->add_option("--spot", args->spots,
-                      "Price of the underlying, or NAME=PRICE,\n"
-                      "where no file says it");
+  // One value each time: what follows may be a file.
+  command
+      ->add_option("--spot", args->spots,
+                   "Price of the underlying, or NAME=PRICE,\n"
+                   "where no file says it; again for each name")
+      ->allow_extra_args(false)
+      ->option_text("PRICE");
   command->add_option("--threads", args->threads, "Threads; 0 takes all the machine has")
       ->check(CLI::Range(0, 1024))
       ->capture_default_str();

@@ -24,6 +24,10 @@ int main(int argc, char** argv) {
   commands::add_value(program, status);
   try {
     program.parse(argc, argv);
+  } catch (const CLI::ExtrasError& error) {
+    program.exit(error);
+    fmt::print(stderr, "Several values of one option have commas between: --strike 90,100,110\n");
+    return console::kUsage;
   } catch (const CLI::ParseError& error) {
     return program.exit(error) == 0 ? console::kDone : console::kUsage;
   } catch (const std::exception& error) {

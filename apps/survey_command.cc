@@ -169,8 +169,8 @@ void add_survey(CLI::App& program, int& status) {
       "Examples:\n"
       "  duskgrid survey quotes.csv\n"
       "  duskgrid survey NIGHT.toml\n\n"
-      "Exit status: 0; 4 no rows; 64 usage; 65 not such a CSV; 66 no input;\n"
-      "78 configuration.");
+      "Exit status: 0 done; 4 no rows; 64 usage; 65 not such a CSV; 66 no\n"
+      "input; 70 internal; 78 configuration.");
   command->callback([args, &status] { status = survey(*args); });
 }
 

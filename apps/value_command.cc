@@ -123,8 +123,9 @@ struct Printer {
   void values(const ValueTime& time, const Points& points) {
     const surface::TimedSmile smile(stored.surface, time.year_fraction);
     for (const auto& point : points)
-      fmt::print("{}", publish::values_line(time, publish::value_at(smile, time.carried, point),
-                                            instants));
+      fmt::print(
+          "{}", publish::values_line(
+                    time, publish::value_at(stored.surface, smile, time.carried, point), instants));
   }
   void swap(const ValueTime& time) {
     const surface::TimedSmile smile(stored.surface, time.year_fraction);
@@ -191,7 +192,10 @@ int value(const ValueArguments& args) {
 
 void add_list(CLI::App& command, const char* name, std::vector<std::string>& to,
               const char* meaning) {
-  command.add_option(name, to, meaning)->delimiter(',')->allow_extra_args(false);
+  command.add_option(name, to, meaning)
+      ->delimiter(',')
+      ->allow_extra_args(false)
+      ->option_text("LIST");
 }
 
 }  // namespace
@@ -200,13 +204,14 @@ void add_value(CLI::App& program, int& status) {
   auto* command = program.add_subcommand("value", "Evaluate a stored surface at points");
   auto args = std::make_shared<ValueArguments>();
   command->add_option("surface", args->surface, "surfaces/NAME.json of a run")->required();
-  add_list(*command, "--strike", args->strikes, "Strikes, with commas between");
-  add_list(*command, "--moneyness", args->moneyness, "Points K/F");
-  add_list(*command, "--log-moneyness", args->log_moneyness, "Points ln(K/F)");
+  add_list(*command, "--strike", args->strikes, "Strikes with commas between, no spaces");
+  add_list(*command, "--moneyness", args->moneyness, "Points K/F, likewise");
+  add_list(*command, "--log-moneyness", args->log_moneyness, "Points ln(K/F), likewise");
   add_list(*command, "--expiry", args->expiries,
-           "Dates or instants; a date alone is the\n"
-           "expiries of the surface on it, else 16:00");
-  add_list(*command, "--tenor", args->tenors, "Tenors such as 2W,3M,1Y");
+           "Dates or instants, likewise; a date alone is\n"
+           "the expiries of the surface on it, else\n"
+           "16:00");
+  add_list(*command, "--tenor", args->tenors, "Tenors, likewise: 2W,3M,1Y");
   command->add_option("--points", args->points,
                       "A CSV with a column expiry or tenor, and\n"
                       "strike, moneyness or log_moneyness; put_call\n"
@@ -219,18 +224,19 @@ void add_value(CLI::App& program, int& status) {
                     "expiry");
   command->add_option("--zone", args->zone,
                       "IANA time zone of dates and times; without\n"
-                      "it the offset of the surface's as-of");
+                      "it that of the run, or its offset if it had\n"
+                      "none");
   command->footer(
-      "Prints CSV on standard output: vol, price, Greeks, density and local volatility at\n"
-      "each point. Without expiries those of the surface, without points K/F = 0.8, 0.9,\n"
-      "1, 1.1, 1.2.\n\n"
+      "Prints CSV on standard output: vol, price, Greeks, density and local\n"
+      "volatility at each point. Without expiries those of the surface, without\n"
+      "points K/F = 0.8, 0.9, 1, 1.1, 1.2.\n\n"
       "Examples:\n"
       "  duskgrid value marks/2031-03-14/surfaces/QNOR.json\n"
       "  duskgrid value QNOR.json --strike 2500,2600 --expiry 2031-06-20 --tenor 1M,1Y\n"
       "  duskgrid value QNOR.json --log-moneyness=-0.1,0,0.1 --put-call P\n"
       "  duskgrid value QNOR.json --points positions.csv > values.csv\n"
       "  duskgrid value QNOR.json --variance-swaps --tenor 1M,3M,1Y\n\n"
-      "Exit status: 0 done; 64 usage; 65 not such a file; 66 no input.");
+      "Exit status: 0 done; 64 usage; 65 not such a file; 66 no input; 70 internal.");
   command->callback([args, &status] { status = value(*args); });
 }
 

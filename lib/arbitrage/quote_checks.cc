@@ -30,12 +30,19 @@ std::vector<Rung> ladder(const QuotedSlice& slice, PutCall side) {
 
 LegType leg_type(PutCall side) { return side == PutCall::call ? LegType::call : LegType::put; }
 
-Leg buy(double quantity, const Rung& r, PutCall side, quotes::Instant expiry) {
-  return {quantity, leg_type(side), r.strike, expiry, r.ask, 0.5 * (r.ask - r.bid)};
+Leg buy(double quantity, const Rung& r, PutCall side, const QuotedSlice& s) {
+  return {quantity, leg_type(side),        r.strike,       s.expiry,
+          r.ask,    0.5 * (r.ask - r.bid), s.year_fraction};
 }
 
-Leg sell(double quantity, const Rung& r, PutCall side, quotes::Instant expiry) {
-  return {-quantity, leg_type(side), r.strike, expiry, r.bid, 0.5 * (r.ask - r.bid)};
+Leg sell(double quantity, const Rung& r, PutCall side, const QuotedSlice& s) {
+  return {-quantity, leg_type(side),        r.strike,       s.expiry,
+          r.bid,     0.5 * (r.ask - r.bid), s.year_fraction};
+}
+
+// At the slice's own forward: nothing is paid now.
+Leg agree(double quantity, const QuotedSlice& s) {
+  return {quantity, LegType::forward, s.forward, s.expiry, 0, kNaN, s.year_fraction};
 }
 
 // 0.01 of vol that the amount is worth on the first leg sold.
@@ -125,7 +132,7 @@ class Finder {
     const Rung& sold = buy_lower ? upper : lower;
     return record(slice, Kind::vertical, pair_amount(lower, upper, buy_lower, width_value),
                   {lower.strike, upper.strike},
-                  {buy(1, bought, side, slice.expiry), sell(1, sold, side, slice.expiry)});
+                  {buy(1, bought, side, slice), sell(1, sold, side, slice)});
   }
 
   void check_pairs(const QuotedSlice& slice, PutCall side, const std::vector<Rung>& rungs,
@@ -153,9 +160,9 @@ class Finder {
                         const Rung& c) {
     const double weight = (c.strike - b.strike) / (c.strike - a.strike);
     const double amount = b.bid - weight * a.ask - (1 - weight) * c.ask;
-    return record(slice, Kind::butterfly, amount, {a.strike, b.strike, c.strike},
-                  {buy(weight, a, side, slice.expiry), sell(1, b, side, slice.expiry),
-                   buy(1 - weight, c, side, slice.expiry)});
+    return record(
+        slice, Kind::butterfly, amount, {a.strike, b.strike, c.strike},
+        {buy(weight, a, side, slice), sell(1, b, side, slice), buy(1 - weight, c, side, slice)});
   }
 
   void check_butterflies(const QuotedSlice& slice, PutCall side, const std::vector<Rung>& rungs) {
@@ -193,16 +200,16 @@ class Finder {
     for (const QuotedStrike& q : s.strikes) {
       const double value = s.discount_factor * (s.forward - q.strike);
       const Rung call{q.strike, q.call_bid, q.call_ask}, put{q.strike, q.put_bid, q.put_ask};
-      const Leg long_forward{1, LegType::forward, s.forward, s.expiry, 0};
-      const Leg short_forward{-1, LegType::forward, s.forward, s.expiry, 0};
+      const Leg long_forward = agree(1, s);
+      const Leg short_forward = agree(-1, s);
       record(s, Kind::bounds, value - q.call_ask, {q.strike},
-             {buy(1, call, PutCall::call, s.expiry), short_forward});
+             {buy(1, call, PutCall::call, s), short_forward});
       record(s, Kind::bounds, -value - q.put_ask, {q.strike},
-             {buy(1, put, PutCall::put, s.expiry), long_forward});
+             {buy(1, put, PutCall::put, s), long_forward});
       record(s, Kind::bounds, q.call_bid - s.discount_factor * s.forward, {q.strike},
-             {sell(1, call, PutCall::call, s.expiry), long_forward});
+             {sell(1, call, PutCall::call, s), long_forward});
       record(s, Kind::bounds, q.put_bid - s.discount_factor * q.strike, {q.strike},
-             {sell(1, put, PutCall::put, s.expiry)});
+             {sell(1, put, PutCall::put, s)});
     }
   }
 
@@ -211,13 +218,9 @@ class Finder {
       const double value = s.discount_factor * (s.forward - q.strike);
       const Rung call{q.strike, q.call_bid, q.call_ask}, put{q.strike, q.put_bid, q.put_ask};
       record(s, Kind::parity, value - (q.call_ask - q.put_bid), {q.strike},
-             {buy(1, call, PutCall::call, s.expiry),
-              sell(1, put, PutCall::put, s.expiry),
-              {-1, LegType::forward, s.forward, s.expiry, 0}});
+             {buy(1, call, PutCall::call, s), sell(1, put, PutCall::put, s), agree(-1, s)});
       record(s, Kind::parity, (q.call_bid - q.put_ask) - value, {q.strike},
-             {sell(1, call, PutCall::call, s.expiry),
-              buy(1, put, PutCall::put, s.expiry),
-              {1, LegType::forward, s.forward, s.expiry, 0}});
+             {sell(1, call, PutCall::call, s), buy(1, put, PutCall::put, s), agree(1, s)});
     }
   }
 
@@ -238,13 +241,12 @@ class Finder {
     const Rung cb{b.strike, b.call_bid, b.call_ask}, pb{b.strike, b.put_bid, b.put_ask};
     const double cost = a.call_ask - b.call_bid + b.put_ask - a.put_bid;
     const double proceeds = a.call_bid - b.call_ask + b.put_bid - a.put_ask;
-    const auto e = s.expiry;
     record(s, Kind::box, value - cost, {a.strike, b.strike},
-           {buy(1, ca, PutCall::call, e), sell(1, cb, PutCall::call, e),
-            buy(1, pb, PutCall::put, e), sell(1, pa, PutCall::put, e)});
+           {buy(1, ca, PutCall::call, s), sell(1, cb, PutCall::call, s),
+            buy(1, pb, PutCall::put, s), sell(1, pa, PutCall::put, s)});
     record(s, Kind::box, proceeds - value, {a.strike, b.strike},
-           {sell(1, ca, PutCall::call, e), buy(1, cb, PutCall::call, e),
-            sell(1, pb, PutCall::put, e), buy(1, pa, PutCall::put, e)});
+           {sell(1, ca, PutCall::call, s), buy(1, cb, PutCall::call, s),
+            sell(1, pb, PutCall::put, s), buy(1, pa, PutCall::put, s)});
   }
 
   // One side of a slice, and the narrowest gap in expiries at which each quote was part of a
@@ -287,16 +289,16 @@ class Finder {
 
     const Rung &a = late.rungs[lower], &b = late.rungs[upper];
     std::vector<double> strikes{rung.strike, a.strike};
-    std::vector<Leg> legs{sell(1, rung, side, first.expiry)};
+    std::vector<Leg> legs{sell(1, rung, side, first)};
     double cost = quantity * a.ask;
     if (same) {
-      legs.push_back(buy(quantity, a, side, second.expiry));
+      legs.push_back(buy(quantity, a, side, second));
     } else {
       const double weight = (b.strike - strike) / (b.strike - a.strike);
       cost = quantity * (weight * a.ask + (1 - weight) * b.ask);
       strikes.push_back(b.strike);
-      legs.push_back(buy(quantity * weight, a, side, second.expiry));
-      legs.push_back(buy(quantity * (1 - weight), b, side, second.expiry));
+      legs.push_back(buy(quantity * weight, a, side, second));
+      legs.push_back(buy(quantity * (1 - weight), b, side, second));
     }
     if (!record(first, Kind::calendar, rung.bid - cost, std::move(strikes), std::move(legs),
                 second.expiry))

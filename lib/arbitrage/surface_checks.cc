@@ -107,18 +107,6 @@ Violation calendar_at(const Stage& early, const Stage& late, double k) {
           .legs = {sold, bought}};
 }
 
-// Wide enough that what it locks in is not lost in the rounding of its prices: the best of several.
-Violation best_butterfly_at(const Stage& stage, double k) {
-  constexpr int kWidths = 30;
-  const double widest = 0.1 * std::sqrt(stage.smile.at(0).w);
-  Violation best = butterfly_at(stage, k, widest);
-  for (int i = 1; i < kWidths; ++i) {
-    Violation v = butterfly_at(stage, k, widest * std::exp2(-i));
-    if (v.amount > best.amount || std::isnan(best.amount)) best = std::move(v);
-  }
-  return best;
-}
-
 // The time between two slices at which g is worst at k.
 Stage worst_between(const surface::Surface& surface, std::size_t slice, double k) {
   constexpr int kParts = 64;
@@ -134,19 +122,65 @@ Stage worst_between(const surface::Surface& surface, std::size_t slice, double k
   return stage_at(surface, t, a.expiry + (b.expiry - a.expiry) * worst / kParts);
 }
 
+// Of the backbone, which has one even where an overlay leaves no volatility at the money.
+double deviation(const surface::Slice& s) { return std::sqrt(s.backbone.theta); }
+
 // Far out in a wing that is broken as a whole.
-double finite(double k, const Stage& stage) {
-  return std::isfinite(k) ? k : std::copysign(20 * std::sqrt(stage.smile.at(0).w), k);
+double finite(double k, const surface::Slice& s) {
+  return std::isfinite(k) ? k : std::copysign(20 * deviation(s), k);
 }
 
-Violation violation_of(const surface::Surface& surface, const Finding& f) {
-  const Stage stage = stage_of(surface, f.slice);
-  const double k = finite(f.k, stage);
-  if (f.proof == Proof::calendar) return calendar_at(stage, stage_of(surface, f.slice + 1), k);
-  Violation v = f.proof == Proof::between ? best_butterfly_at(worst_between(surface, f.slice, k), k)
-                                          : best_butterfly_at(stage, k);
-  if (!std::isfinite(f.k)) v.kind = Kind::wing;
-  return v;
+// Evenly over the quoted range of a slice and 20 at-the-money deviations beyond.
+void add_places(const surface::Slice& s, std::vector<double>& places) {
+  constexpr int kParts = 300;
+  const double beyond = 20 * deviation(s);
+  const double low = std::min(s.k_low, 0.0) - beyond, high = std::max(s.k_high, 0.0) + beyond;
+  for (int i = 0; i <= kParts; ++i)
+    places.push_back(std::lerp(low, high, static_cast<double>(i) / kParts));
+}
+
+// Where to look for the trade that locks in most: where the break was found, the forward, and over
+// the smiles it is about.
+std::vector<double> places_of(const surface::Surface& surface, const Finding& f, double found) {
+  std::vector<double> places{found, 0};
+  add_places(surface.slices[f.slice], places);
+  if (f.proof == Proof::calendar || f.proof == Proof::between)
+    add_places(surface.slices[f.slice + 1], places);
+  return places;
+}
+
+// All its numbers exist, and what it locks in is more than the rounding of its prices.
+bool sound(const Violation& v) {
+  double turnover = 0;
+  for (const Leg& leg : v.legs) {
+    if (!(leg.strike > 0) || !std::isfinite(leg.strike)) return false;
+    turnover += std::abs(leg.quantity) * leg.price;
+  }
+  return std::isfinite(turnover) && v.amount > kRounding * turnover;
+}
+
+// The better of what is there and a new one, if sound.
+void take_better(std::optional<Violation>& best, Violation v) {
+  if (sound(v) && (!best || v.amount > best->amount)) best = std::move(v);
+}
+
+std::optional<Violation> best_calendar(const Stage& early, const Stage& late,
+                                       const std::vector<double>& places) {
+  std::optional<Violation> best;
+  for (const double k : places) take_better(best, calendar_at(early, late, k));
+  return best;
+}
+
+// Narrow ones fit into small regions, in wide ones less is lost in the rounding of the prices.
+std::optional<Violation> best_butterfly(const Stage& stage, double widest,
+                                        const std::vector<double>& places) {
+  constexpr int kWidths = 30;
+  std::optional<Violation> best;
+  for (std::size_t i = 0; i < places.size(); ++i)
+    // The place found has every width; of the many others a few will do.
+    for (int width = 0; width < kWidths; width += i == 0 ? 1 : 3)
+      take_better(best, butterfly_at(stage, places[i], widest * std::exp2(-width)));
+  return best;
 }
 
 class Checker {
@@ -224,11 +258,28 @@ class Checker {
 
 }  // namespace
 
+std::optional<Violation> violation_of(const surface::Surface& surface, const Finding& f) {
+  const bool tradable =
+      f.proof == Proof::butterfly || f.proof == Proof::calendar || f.proof == Proof::between;
+  if (!f.broken || !tradable) return std::nullopt;
+  const surface::Slice& slice = surface.slices[f.slice];
+  const Stage stage = stage_of(surface, f.slice);
+  const double found = finite(f.k, slice);
+  const auto places = places_of(surface, f, found);
+  if (f.proof == Proof::calendar)
+    return best_calendar(stage, stage_of(surface, f.slice + 1), places);
+  auto best =
+      best_butterfly(f.proof == Proof::between ? worst_between(surface, f.slice, found) : stage,
+                     deviation(slice), places);
+  if (best && !std::isfinite(f.k)) best->kind = Kind::wing;
+  return best;
+}
+
 std::vector<Violation> violations_of(const surface::Surface& surface,
                                      const Certificate& certificate) {
   std::vector<Violation> out;
   for (const Finding& f : certificate.findings)
-    if (f.broken) out.push_back(violation_of(surface, f));
+    if (auto violation = violation_of(surface, f)) out.push_back(std::move(*violation));
   return out;
 }
 

@@ -2,6 +2,7 @@
 // not a proof.
 #pragma once
 
+#include <optional>
 #include <vector>
 
 #include "arbitrage/certificate.h"
@@ -28,8 +29,14 @@ struct SurfaceCheck {
 SurfaceCheck check_surface(const surface::Surface& surface,
                            const SurfaceCheckOptions& options = {});
 
-// The trades behind what a certificate found broken, in its order: where it was found, with legs as
-// near to one another as prices of doubles can tell apart. Undecided findings have none.
+// The trade behind what a certificate found broken: of those at the place found and at some
+// hundreds of others, over the quoted ranges of the smiles and 20 at-the-money deviations beyond,
+// the one that locks in most, with legs so far apart that prices of doubles can tell. Nothing where
+// nothing was broken or there is no volatility to trade (`positive`), and where what is locked in
+// is lost in the rounding of the prices. Of a break between slices, at the time that is worst at
+// the place found.
+std::optional<Violation> violation_of(const surface::Surface& surface, const Finding& finding);
+// Those of all findings, in their order.
 std::vector<Violation> violations_of(const surface::Surface& surface,
                                      const Certificate& certificate);
 

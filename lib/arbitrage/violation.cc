@@ -14,11 +14,20 @@ std::string_view word(Kind kind) {
   return kWords[static_cast<std::size_t>(kind)];
 }
 
+namespace {
+
+std::string date_of(const Leg& leg, const quotes::Clock& clock) {
+  return leg.expiry == quotes::kNoInstant ? fmt::format("t={:.6g}", leg.year_fraction)
+                                          : quotes::format_date(clock, leg.expiry);
+}
+
+}  // namespace
+
 std::string format_legs(const std::vector<Leg>& legs, const quotes::Clock& clock) {
   std::string out;
   for (const Leg& leg : legs) {
     if (!out.empty()) out += "; ";
-    const auto date = quotes::format_date(clock, leg.expiry);
+    const auto date = date_of(leg, clock);
     if (leg.type == LegType::forward)
       out += fmt::format("{:+.6g} F {} @{:.10g}", leg.quantity, date, leg.strike);
     else

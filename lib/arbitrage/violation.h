@@ -25,7 +25,8 @@ struct Leg {
   double strike;  // of a forward: the agreed price
   quotes::Instant expiry;
   double price;  // paid or received now per unit, quote currency; 0 for a forward
-  double half_spread = std::numeric_limits<double>::quiet_NaN();  // of the price, if two-sided
+  double half_spread = std::numeric_limits<double>::quiet_NaN();    // of the price, if two-sided
+  double year_fraction = std::numeric_limits<double>::quiet_NaN();  // stands in for no expiry
 };
 
 struct Violation {
@@ -41,7 +42,8 @@ struct Violation {
 };
 
 // "+0.4 C 95 2031-06-20 @6.10; -1 C 100 2031-06-20 @3.90": plus buys at the ask, minus sells at
-// the bid; F for a forward, whose @ is the price agreed.
+// the bid; F for a forward, whose @ is the price agreed. A leg without an expiry has its year
+// fraction: "-1 C 100 t=0.25 @11.92".
 std::string format_legs(const std::vector<Leg>& legs, const quotes::Clock& clock);
 
 }  // namespace duskgrid::arbitrage

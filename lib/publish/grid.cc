@@ -147,31 +147,26 @@ bool quoted_within(const std::vector<double>& used_k, std::pair<double, double> 
 }
 
 // The quoted range of strikes at any time: the slice's own, between slices drawn linearly.
-std::pair<double, double> quoted_range(const surface::Surface& surface, const When& when) {
+std::pair<double, double> quoted_range(const surface::Surface& surface, double year_fraction) {
   const auto& slices = surface.slices;
-  if (when.slice >= 0) return {slices[when.slice].k_low, slices[when.slice].k_high};
   const auto next =
-      std::lower_bound(slices.begin(), slices.end(), when.year_fraction,
+      std::lower_bound(slices.begin(), slices.end(), year_fraction,
                        [](const surface::Slice& s, double t) { return s.year_fraction < t; });
   if (next == slices.end()) return {slices.back().k_low, slices.back().k_high};
-  if (next == slices.begin() || next->year_fraction == when.year_fraction)
+  if (next == slices.begin() || next->year_fraction == year_fraction)
     return {next->k_low, next->k_high};
   const auto& a = *(next - 1);
-  const double weight =
-      (when.year_fraction - a.year_fraction) / (next->year_fraction - a.year_fraction);
+  const double weight = (year_fraction - a.year_fraction) / (next->year_fraction - a.year_fraction);
   return {std::lerp(a.k_low, next->k_low, weight), std::lerp(a.k_high, next->k_high, weight)};
 }
 
 Support support_of(const surface::Surface& surface, const GridInputs& inputs, const When& when,
                    const std::vector<Node>& nodes, std::size_t i) {
   if (inputs.carried) return Support::carried;
-  const auto [low, high] = quoted_range(surface, when);
-  const bool outside_time = when.year_fraction < surface.slices.front().year_fraction ||
-                            when.year_fraction > surface.slices.back().year_fraction;
-  if (outside_time || nodes[i].k < low || nodes[i].k > high) return Support::extrapolated;
-  const bool observed =
-      when.slice >= 0 && quoted_within(inputs.used_k[when.slice], cell_of(nodes, i));
-  return observed ? Support::observed : Support::interpolated;
+  const Support alone = support_at(surface, when.year_fraction, nodes[i].k);
+  const bool observed = alone == Support::interpolated && when.slice >= 0 &&
+                        quoted_within(inputs.used_k[when.slice], cell_of(nodes, i));
+  return observed ? Support::observed : alone;
 }
 
 }  // namespace
@@ -188,6 +183,14 @@ std::string_view word(Support support) {
   constexpr std::array<std::string_view, 4> kWords{"carried", "extrapolated", "observed",
                                                    "interpolated"};
   return kWords[static_cast<std::size_t>(support)];
+}
+
+Support support_at(const surface::Surface& surface, double year_fraction, double k) {
+  const auto [low, high] = quoted_range(surface, year_fraction);
+  const bool outside_time = year_fraction < surface.slices.front().year_fraction ||
+                            year_fraction > surface.slices.back().year_fraction;
+  const bool inside = !outside_time && k >= low && k <= high;
+  return inside ? Support::interpolated : Support::extrapolated;
 }
 
 std::vector<double> default_points(Axis axis) {

@@ -20,6 +20,10 @@ std::optional<Axis> parse_axis(std::string_view text);
 enum class Support : std::uint8_t { carried, extrapolated, observed, interpolated };
 std::string_view word(Support support);
 
+// Of a point of a surface by itself, without the quotes: extrapolated outside the quoted range in
+// strike (between two expiries drawn linearly between theirs) or time, else interpolated.
+Support support_at(const surface::Surface& surface, double year_fraction, double k);
+
 struct GridOptions {
   Axis axis = Axis::moneyness;
   // On the axis: strike in quote currency, K/F, ln(K/F), ln(K/F) over at-the-money total vol, or

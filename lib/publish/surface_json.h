@@ -14,11 +14,11 @@ struct StoredSurface {
   surface::Surface surface;
 };
 
-// Reloads to the same surface bit for bit.
+// Reloads to the same surface bit for bit, on the same clock.
 std::string surface_to_json(const StoredSurface& stored);
 // Failure (not_quotes, at `where`): not JSON, not of this form, or parameters that no
-// surface has (times not increasing, theta not > 0, |rho| >= 1, psi < 0, knots not increasing,
-// ...).
+// surface has (times not increasing or more than 1e-9 years from ACT/365F of the dates, theta not
+// > 0, |rho| >= 1, psi < 0, knots not increasing, ...).
 Result<StoredSurface> surface_from_json(std::string_view text, const std::string& where);
 
 }  // namespace duskgrid::publish

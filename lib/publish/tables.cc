@@ -133,7 +133,7 @@ std::string violations_line(const arbitrage::Violation& v, std::string_view unde
 std::string values_line(const ValueTime& time, const ValueRow& row, InstantTexts& instants) {
   Line line = time_cells(time, instants);
   line.number(row.strike).number(row.k);
-  if (!row.derived) return line.empty(8).end();
+  if (!row.derived) return line.empty(8).raw(word(row.support)).end();
   const auto& d = *row.derived;
   return line.number(d.vol)
       .raw(d.put_call == quotes::PutCall::call ? "C" : "P")
@@ -143,6 +143,7 @@ std::string values_line(const ValueTime& time, const ValueRow& row, InstantTexts
       .number(d.greeks.vega)
       .number(d.density.value_or(quotes::kAbsent))
       .number(d.local_vol.value_or(quotes::kAbsent))
+      .raw(word(row.support))
       .end();
 }
 

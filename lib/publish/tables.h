@@ -32,7 +32,7 @@ inline constexpr std::string_view kViolationsHeader =
 
 inline constexpr std::string_view kValuesHeader =
     "expiry,tenor,year_fraction,forward,discount_factor,strike,log_moneyness,vol,put_call,price,"
-    "delta,gamma,vega,density,local_vol\n";
+    "delta,gamma,vega,density,local_vol,support\n";
 inline constexpr std::string_view kSwapsHeader =
     "expiry,tenor,year_fraction,forward,discount_factor,vol_at_forward,swap_vol,swap_variance\n";
 

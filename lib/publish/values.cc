@@ -77,8 +77,8 @@ std::optional<std::string> problem_of(const ValuePoint& point) {
   return std::nullopt;
 }
 
-ValueRow value_at(const surface::TimedSmile& smile, const surface::Carried& carried,
-                  const ValuePoint& point) {
+ValueRow value_at(const surface::Surface& surface, const surface::TimedSmile& smile,
+                  const surface::Carried& carried, const ValuePoint& point) {
   ValueRow row{};
   const double v = point.point;
   if (point.axis == Axis::strike) {
@@ -88,6 +88,7 @@ ValueRow value_at(const surface::TimedSmile& smile, const surface::Carried& carr
     row.k = point.axis == Axis::moneyness ? std::log(v) : v;
     row.strike = carried.forward * (point.axis == Axis::moneyness ? v : std::exp(v));
   }
+  row.support = support_at(surface, smile.year_fraction(), row.k);
   if (std::isfinite(row.k)) row.derived = derived_at(smile, carried, row.k, point.put_call);
   return row;
 }

@@ -42,8 +42,10 @@ struct ValueRow {
   double strike;  // as asked, where a strike was
   double k;       // ln(strike / forward)
   std::optional<surface::Derived> derived;
+  Support support;  // extrapolated or interpolated
 };
-ValueRow value_at(const surface::TimedSmile& smile, const surface::Carried& carried,
-                  const ValuePoint& point);
+// `smile` is one of `surface`.
+ValueRow value_at(const surface::Surface& surface, const surface::TimedSmile& smile,
+                  const surface::Carried& carried, const ValuePoint& point);
 
 }  // namespace duskgrid::publish

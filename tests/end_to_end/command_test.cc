@@ -218,13 +218,51 @@ TEST_F(Command, OutputThatCannotBeMadeIsCannotCreate) {
   expect_one_message(ran, out().string());
 }
 
-TEST_F(Command, HelpOfEveryCommandShowsAnExampleAndEndsWithZero) {
-  for (const char* command : {"build", "survey", "check", "value"}) {
+// The widest line of a text.
+std::size_t width_of(const std::string& text) {
+  std::size_t widest = 0;
+  for (const auto& line : split(text, '\n')) widest = std::max(widest, line.size());
+  return widest;
+}
+
+TEST_F(Command, HelpOfEveryCommandShowsAnExampleAndItsStatuses) {
+  const std::map<std::string, std::vector<std::string>> statuses{
+      {"build", {"0", "3", "4", "64", "65", "66", "70", "73", "78"}},
+      {"survey", {"0", "4", "64", "65", "66", "70", "78"}},
+      {"check", {"0", "3", "64", "65", "66", "70"}},
+      {"value", {"0", "64", "65", "66", "70"}}};
+  for (const auto& [command, listed] : statuses) {
     const auto ran = duskgrid({command, "--help"});
     EXPECT_EQ(ran.status, 0);
     EXPECT_NE(ran.out.find("Example"), std::string::npos) << command;
-    EXPECT_NE(ran.out.find(std::string("duskgrid ") + command), std::string::npos);
+    EXPECT_NE(ran.out.find("duskgrid " + command), std::string::npos);
+    EXPECT_LE(width_of(ran.out), 80u) << ran.out;
+    const auto at = ran.out.find("Exit status");
+    ASSERT_NE(at, std::string::npos) << ran.out;
+    for (const auto& status : listed) {
+      const auto told = ran.out.find(" " + status + " ", at);
+      const auto at_the_start = ran.out.find("\n" + status + " ", at);
+      EXPECT_NE(std::min(told, at_the_start), std::string::npos) << status << ran.out;
+    }
   }
+  EXPECT_LE(width_of(duskgrid({"--help"}).out), 80u);
+}
+
+TEST_F(Command, SpotTakesOneValueAndMayComeAgain) {
+  spill(scratch_ / "quotes.csv", kHeader + sound_chain("SANDPR"));
+  const std::string quotes = (scratch_ / "quotes.csv").string();
+  const auto ran = duskgrid({"build", "--spot", "100", "--spot", "SANDPR=100.5", quotes, "--as-of",
+                             kAsOf, "--out", out().string()});
+  EXPECT_EQ(ran.status, 0) << ran.err;
+  EXPECT_TRUE(fs::exists(folder() / "grid.csv"));
+}
+
+TEST_F(Command, ListWithSpacesIsToldToHaveCommas) {
+  const auto ran = duskgrid({"value", "HALYRD.json", "--strike", "90", "100"});
+  EXPECT_EQ(ran.status, 64);
+  EXPECT_NE(ran.err.find("100"), std::string::npos) << ran.err;
+  EXPECT_NE(ran.err.find("commas"), std::string::npos) << ran.err;
+  EXPECT_TRUE(ran.out.empty()) << ran.out;
 }
 
 TEST_F(Command, SurveyNamesColumnsReadAndChainsFound) {

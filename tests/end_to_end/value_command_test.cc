@@ -119,6 +119,18 @@ TEST_F(ValueCommand, NumbersAreThoseOfTheLibrary) {
   }
 }
 
+TEST_F(ValueCommand, SupportSaysWhatIsOutsideTheQuotes) {
+  const auto supports = [&](const std::vector<std::string>& more) {
+    std::string all;
+    for (const auto& row : table(more)) all += row.at("support") + " ";
+    return all;
+  };
+  EXPECT_EQ(supports({"--log-moneyness=-0.41,0,0.31", "--expiry", "2031-06-20"}),
+            "extrapolated interpolated extrapolated ");
+  EXPECT_EQ(supports({"--moneyness", "1", "--tenor", "1M,6M,2Y"}),
+            "extrapolated interpolated extrapolated ");
+}
+
 TEST_F(ValueCommand, RatiosAndLogarithmsSayTheSamePoints) {
   const auto ratio = table({"--moneyness", "0.9", "--tenor", "3M"});
   const auto log = table({"--log-moneyness", "-0.10536051565782628", "--tenor", "3M"});
@@ -175,6 +187,19 @@ TEST_F(ValueCommand, ZoneReadsAndPrintsLocalTimes) {
   EXPECT_EQ(rows[1].at("expiry"), "2031-07-01T16:00:00-04:00");
 }
 
+// Tenors and dates are those of the run, over the clock change of 2031-11-02 too.
+TEST_F(ValueCommand, ZoneOfTheRunIsUsedUnlessOneIsGiven) {
+  as_of_.clock = {"America/New_York", {}};
+  store(surface_);
+  const auto rows = table({"--strike", "100", "--tenor", "9M", "--expiry", "2031-06-20"});
+  ASSERT_EQ(rows.size(), 2u);
+  EXPECT_EQ(rows[0].at("expiry"), "2031-06-20T17:00:00-04:00");
+  // The as-of is 17:00 of summer time.
+  EXPECT_EQ(rows[1].at("expiry"), "2031-12-14T17:00:00-05:00");
+  const auto paris = table({"--zone", "Europe/Paris", "--strike", "100", "--tenor", "9M"});
+  EXPECT_EQ(paris[0].at("expiry"), "2031-12-14T22:00:00+01:00");
+}
+
 TEST_F(ValueCommand, NumbersThatDoNotExistAreEmptyCells) {
   const auto ran = value({"--log-moneyness=800,-800", "--tenor", "1M"});
   EXPECT_EQ(ran.status, 0) << ran.err;
@@ -182,7 +207,7 @@ TEST_F(ValueCommand, NumbersThatDoNotExistAreEmptyCells) {
   const auto rows = read_table(scratch_ / "out.csv");
   ASSERT_EQ(rows.size(), 2u);
   for (const auto& row : rows) {
-    EXPECT_EQ(row.size(), 15u);
+    EXPECT_EQ(row.size(), 16u);
     EXPECT_EQ(row.at("vol"), "");
     EXPECT_EQ(row.at("local_vol"), "");
   }

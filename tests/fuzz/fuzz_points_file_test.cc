@@ -66,7 +66,7 @@ void check_point(const StoredSurface& stored, const WantedPoint& wanted) {
   if (auto found = time_of_tenor(stored, wanted.tenor)) times.push_back(std::move(*found));
   for (const auto& time : times) {
     const surface::TimedSmile smile(stored.surface, time.year_fraction);
-    const auto row = value_at(smile, time.carried, wanted.point);
+    const auto row = value_at(stored.surface, smile, time.carried, wanted.point);
     const std::string line = values_line(time, row, instants);
     EXPECT_EQ(line.find("nan"), std::string::npos) << line;
     EXPECT_EQ(line.find("inf"), std::string::npos) << line;

@@ -21,19 +21,20 @@ const std::vector<std::string>& seed_texts() {
     const quotes::Clock clock{"", std::chrono::minutes{-300}};
     surface::Surface two{"HALYRD",
                          100.25,
-                         {{as_of + 2400h, 0.3, 101, 0.99, {0.01, -0.5, 0.15}, -0.3, 0.2},
-                          {as_of + 9000h, 1.03, 104, 0.97, {0.04, 0.25, 0.2}, -0.5, 0.5}}};
+                         {{as_of + 2628h, 0.3, 101, 0.99, {0.01, -0.5, 0.15}, -0.3, 0.2},
+                          {as_of + 8760h, 1, 104, 0.97, {0.04, 0.25, 0.2}, -0.5, 0.5}}};
     two.slices[0].overlay = {{-0.3, -0.2, -0.1, 0, 0.1, 0.2}, {0.0002, 0.0005, -0.0005, 0.0003}};
     two.slices[0].to_next = surface::Between::price;
     two.slices[1].overlay = {{-0.5, -0.2, 0, 0.1, 0.3, 0.5, 0.6}, {0, 0.001, -0.001, 0.002, 0.001}};
     const surface::Surface one{
         "=K\"\xC3\xA9", {}, {{as_of + 24h, 1 / 365.0, 7, 1, {1e-5, 0, 0}, 0, 0}}};
-    const quotes::AsOf night{as_of, clock};
+    const quotes::AsOf night{as_of, clock}, zoned{as_of, {"Europe/Paris", {}}};
     std::vector<std::string> texts;
-    for (const auto& surface : {two, one}) {
-      const StoredSurface stored{night, surface};
-      texts.push_back(surface_to_json(stored));
-    }
+    for (const auto& when : {night, zoned})
+      for (const auto& surface : {two, one}) {
+        const StoredSurface stored{when, surface};
+        texts.push_back(surface_to_json(stored));
+      }
     return texts;
   }();
   return kTexts;
@@ -77,7 +78,9 @@ const std::vector<std::string>& morsels() {
                                                  "[0.1, 0.2]",
                                                  "\"price\"",
                                                  "\"knots\": [],",
-                                                 "\"coefficients\": [0, -1, 2, 0],"};
+                                                 "\"coefficients\": [0, -1, 2, 0],",
+                                                 "\"zone\": \"Asia/Tokyo\",",
+                                                 "America/New_York"};
   return kMorsels;
 }
 

@@ -124,6 +124,92 @@ TEST(CheckSurface, WingSteeperThanTwoIsNamedWing) {
   for (const Violation& v : check.violations) EXPECT_GT(v.amount, 0) << word(v.kind);
 }
 
+// The smiles of two expiries, swapped: the later one is worth less at every strike.
+Surface swapped_surface() {
+  auto s = clean_surface();
+  std::swap(s.slices[0].backbone, s.slices[2].backbone);
+  return s;
+}
+
+double cost_of(const Violation& v) {
+  double cost = 0;
+  for (const Leg& leg : v.legs) cost += leg.quantity * leg.price;
+  return cost;
+}
+
+TEST(ViolationsOf, CrossingOverAWholeRegionIsTradedWhereItLocksInMost) {
+  const auto s = swapped_surface();
+  const auto certificate = certify(s);
+  int calendars = 0;
+  for (const Violation& v : violations_of(s, certificate)) {
+    if (v.kind != Kind::calendar) continue;
+    ++calendars;
+    EXPECT_NEAR(-cost_of(v), v.amount, 1e-12);  // rounding of prices near 10
+    // What one locks in at the money and near it is what is there to beat.
+    const std::size_t i = v.expiry == s.slices[0].expiry ? 0 : 1;
+    const auto &early = s.slices[i], &late = s.slices[i + 1];
+    for (const double k : {-0.5, -0.1, 0.0, 0.1, 0.5}) {
+      const auto unit = [&](const Slice& slice) {
+        return pricing::black_price({quotes::PutCall::call, 1, std::exp(k), 1},
+                                    std::sqrt(surface::smile_of(slice, k).w));
+      };
+      const double there = early.discount_factor * early.forward * (unit(early) - unit(late));
+      // The scan is some hundredths of a deviation apart, and what is locked in is flat at its top.
+      EXPECT_GT(v.amount, 0.999 * there) << "slice " << i << ", k " << k;
+    }
+  }
+  EXPECT_EQ(calendars, 2);
+}
+
+TEST(ViolationsOf, EveryTradeHasNumbersAndLocksInMoreThanRounding) {
+  auto hump = clean_surface();
+  hump.slices[1].overlay = {{-0.3, -0.2, -0.1, 0, 0.1, 0.2}, {0, 0.01, -0.01, 0}};
+  hump.slices[1].to_next = surface::Between::variance;
+  const Surface steep{"STEEP", {}, {slice_at(1, {0.8, 0.5, 3.0})}};
+  for (const Surface& s : {swapped_surface(), hump, steep}) {
+    const auto certificate = certify(s);
+    const auto found = violations_of(s, certificate);
+    EXPECT_FALSE(found.empty()) << s.underlying;
+    for (const Violation& v : found) {
+      double turnover = 0;
+      for (const Leg& leg : v.legs) {
+        EXPECT_TRUE(std::isfinite(leg.quantity) && std::isfinite(leg.price) && leg.strike > 0);
+        turnover += std::abs(leg.quantity) * leg.price;
+      }
+      // A price is good to some units in its last place.
+      EXPECT_GT(v.amount, 1e-13 * turnover);
+      EXPECT_NEAR(-cost_of(v), v.amount, 1e-14 * turnover);
+    }
+  }
+}
+
+TEST(ViolationsOf, SteepWingKeepsItsNameAndLocksInMoreThanFarOut) {
+  const Surface s{"STEEP", {}, {slice_at(1, {0.8, 0.5, 3.0})}};
+  const Finding wing{Proof::butterfly, 0, std::numeric_limits<double>::infinity(), -0.1, true};
+  const auto trade = violation_of(s, wing);
+  ASSERT_TRUE(trade.has_value());
+  EXPECT_EQ(trade->kind, Kind::wing);
+  // 20 deviations out a call is worth next to nothing, and so was the trade there.
+  EXPECT_GT(trade->amount, 1e-3);
+}
+
+TEST(ViolationsOf, FindingsWithoutATradeHaveNone) {
+  auto sunk = clean_surface();
+  sunk.slices[0].overlay = {{-0.3, -0.2, -0.1, 0, 0.1, 0.2}, {0, 0, -0.2, 0}};
+  const Finding positive{Proof::positive, 0, 0, -0.1, true};
+  EXPECT_FALSE(violation_of(sunk, positive).has_value());
+  for (const Violation& v : violations_of(sunk, certify(sunk))) {
+    EXPECT_GT(v.amount, 0);
+    EXPECT_TRUE(std::isfinite(cost_of(v)));
+  }
+  const auto clean = clean_surface();
+  for (const Proof proof : {Proof::butterfly, Proof::calendar, Proof::between, Proof::after}) {
+    // Nothing is to be had where there is no arbitrage, whatever a finding says.
+    EXPECT_FALSE(violation_of(clean, {proof, 0, 0.05, -1, true}).has_value()) << word(proof);
+    EXPECT_FALSE(violation_of(swapped_surface(), {proof, 0, 0.05, 0, false}).has_value());
+  }
+}
+
 TEST(CheckSurface, OneSliceHasNoCalendarStep) {
   const auto check = check_surface({"ONE", {}, {slice_at(0.5, {0.02, -0.4, 0.2})}});
   EXPECT_TRUE(check.violations.empty());

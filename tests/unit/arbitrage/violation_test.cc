@@ -29,6 +29,12 @@ TEST(FormatLegs, DateIsTheClocksLocalOne) {
   EXPECT_EQ(format_legs({{1, LegType::put, 50, late, 1}}, {}), "+1 P 50 2031-06-21 @1");
 }
 
+TEST(FormatLegs, YearFractionStandsInForNoExpiry) {
+  const Leg leg{-1, LegType::call, 100, quotes::kNoInstant, 11.92, 0, 0.25};
+  const Leg forward{1, LegType::forward, 101, quotes::kNoInstant, 0, 0, 0.25};
+  EXPECT_EQ(format_legs({leg, forward}, {}), "-1 C 100 t=0.25 @11.92; +1 F t=0.25 @101");
+}
+
 TEST(FormatLegs, NoLegsIsEmpty) { EXPECT_EQ(format_legs({}, {}), ""); }
 
 TEST(ViolationWords, AreThoseOfTheFile) {

@@ -8,6 +8,8 @@
 #include <limits>
 #include <random>
 
+#include "market/day_count.h"
+
 namespace duskgrid::publish {
 namespace {
 
@@ -17,11 +19,18 @@ using namespace std::chrono_literals;
 const quotes::Instant kInstant = std::chrono::sys_days{std::chrono::year{2031} / 3 / 14} + 21h;
 const quotes::AsOf kAsOf{kInstant, {"", std::chrono::minutes{-300}}};
 
+surface::Slice slice(std::chrono::seconds ahead, double forward, double discount,
+                     surface::SliceParameters backbone, double k_low, double k_high) {
+  const auto expiry = kInstant + ahead;
+  return {expiry, market::year_fraction(kInstant, expiry), forward, discount, backbone, k_low,
+          k_high};
+}
+
 surface::Surface made() {
   return {"HALYRD",
           100.25,
-          {{kInstant + 2400h, 0.3, 101, 0.99, {0.01, -0.5, 0.15}, -0.3, 0.2},
-           {kInstant + 9000h + 7s, 1.03, 1.0 / 3, 0.97, {0.03, 0.25, 0}, -0.5, -0.5}}};
+          {slice(2400h, 101, 0.99, {0.01, -0.5, 0.15}, -0.3, 0.2),
+           slice(9000h + 7s, 1.0 / 3, 0.97, {0.03, 0.25, 0}, -0.5, -0.5)}};
 }
 
 // With everything that a fit may add.
@@ -98,13 +107,11 @@ TEST(SurfaceJson, ExtremeDoublesReload) {
   auto surface = made();
   auto& first = surface.slices[0];
   auto& last = surface.slices[1];
-  first.year_fraction = Limits::denorm_min();
   first.forward = Limits::max();
   first.discount_factor = Limits::min();
   first.backbone = {Limits::denorm_min(), std::nextafter(-1.0, 0.0), Limits::max()};
   first.k_low = Limits::lowest();
   first.k_high = -0.0;
-  last.year_fraction = 4 * Limits::min() / 3;
   last.backbone = {Limits::max(), std::nextafter(1.0, 0.0), Limits::denorm_min()};
   last.k_low = last.k_high = Limits::max();
   expect_reloads(surface);
@@ -124,7 +131,10 @@ TEST(SurfaceJson, RandomDoublesReload) {
     surface.slices.pop_back();
     auto& s = surface.slices[0];
     surface.spot = any_positive();
-    s.year_fraction = any_positive();
+    constexpr std::int64_t kMostSeconds = 5'000'000'000;  // 158 years
+    s.expiry =
+        kInstant + std::chrono::seconds{1 + static_cast<std::int64_t>(random() % kMostSeconds)};
+    s.year_fraction = market::year_fraction(kInstant, s.expiry);
     s.forward = any_positive();
     s.discount_factor = any_positive();
     s.backbone = {any_positive(), unit(random), any_positive()};
@@ -153,14 +163,28 @@ TEST(SurfaceJson, NamesNoFormatMindsReload) {
   expect_reloads(surface);
 }
 
-TEST(SurfaceJson, ExpiryBeyondAClockChangeReloads) {
+TEST(SurfaceJson, ZoneIsKeptAcrossAClockChange) {
   const quotes::AsOf as_of{kInstant, {"Europe/Paris", {}}};
   auto surface = made();
-  surface.slices.front().expiry = kInstant + 24h * 90;  // in summer time
-  const auto stored = surface_from_json(surface_to_json({as_of, surface}), "memory");
-  ASSERT_TRUE(stored.ok());
+  surface.slices.resize(1);
+  surface.slices[0] = slice(24h * 90, 101, 0.99, {0.01, -0.5, 0.15}, -0.3, 0.2);  // summer time
+  const auto text = surface_to_json({as_of, surface});
+  EXPECT_NE(text.find("\"zone\": \"Europe/Paris\""), std::string::npos) << text;
+  const auto stored = surface_from_json(text, "memory");
+  ASSERT_TRUE(stored.ok()) << stored.failure().text();
   EXPECT_EQ(stored->surface.slices.front().expiry, surface.slices.front().expiry);
   EXPECT_EQ(stored->as_of.instant, kInstant);
+  EXPECT_EQ(stored->as_of.clock.zone, "Europe/Paris");
+  EXPECT_EQ(surface_to_json(*stored), text);
+}
+
+TEST(SurfaceJson, WithoutAZoneTheOffsetIsKept) {
+  const auto text = text_of(made());
+  EXPECT_NE(text.find("\"zone\": \"\""), std::string::npos) << text;
+  const auto stored = surface_from_json(text, "memory");
+  ASSERT_TRUE(stored.ok());
+  EXPECT_EQ(stored->as_of.clock.zone, "");
+  EXPECT_EQ(stored->as_of.clock.offset, kAsOf.clock.offset);
 }
 
 // The text of made() with one piece replaced.
@@ -171,12 +195,17 @@ std::string broken(const std::string& piece, const std::string& by) {
   return text.replace(at, piece.size(), by);
 }
 
-void expect_refused(const std::string& text) {
+void expect_refused(const std::string& text, const std::string& holds = "") {
   const auto stored = surface_from_json(text, "halyrd.json");
   ASSERT_FALSE(stored.ok()) << text;
   EXPECT_EQ(stored.failure().fault, Fault::not_quotes);
   EXPECT_EQ(stored.failure().where, "halyrd.json");
-  EXPECT_FALSE(stored.failure().detail.empty());
+  const std::string& detail = stored.failure().detail;
+  EXPECT_FALSE(detail.empty());
+  EXPECT_NE(detail.find(holds), std::string::npos) << detail;
+  // In words of our own, not those of a library.
+  for (const char* foreign : {"json.exception", "[json", "type_error", "syntax", "key '"})
+    EXPECT_EQ(detail.find(foreign), std::string::npos) << detail;
 }
 
 TEST(SurfaceJson, TextThatIsNoJsonIsRefused) {
@@ -184,16 +213,22 @@ TEST(SurfaceJson, TextThatIsNoJsonIsRefused) {
     expect_refused(text);
   expect_refused(text_of(made()).substr(0, 200));
   expect_refused(text_of(made()) + "x");
+  expect_refused("", "is not JSON (at byte 1)");
+  expect_refused("{\"form\": x", "is not JSON (at byte 10)");
+  expect_refused("[]", "is not an object");
+  expect_refused(broken("100.25", "1e999"), "too large");
   expect_refused(std::string(100'000, '['));
 }
 
 TEST(SurfaceJson, OtherFormIsRefused) { expect_refused(broken("surface/2", "surface/1")); }
 
 TEST(SurfaceJson, MissingFieldIsRefused) {
-  for (const char* key : {"form", "underlying", "as_of", "spot", "slices", "expiry",
+  for (const char* key : {"form", "underlying", "as_of", "zone", "spot", "slices", "expiry",
                           "year_fraction", "forward", "discount_factor", "theta", "rho", "psi",
                           "k_low", "k_high", "knots", "coefficients", "to_next"})
-    expect_refused(broken("\"" + std::string(key) + "\"", "\"other\""));
+    expect_refused(broken("\"" + std::string(key) + "\"", "\"other\""),
+                   "lacks `" + std::string(key) + "`");
+  expect_refused(broken("\"rho\"", "\"other\""), "slice 1: lacks `rho`");
 }
 
 TEST(SurfaceJson, ValueOfAnotherKindIsRefused) {
@@ -201,7 +236,11 @@ TEST(SurfaceJson, ValueOfAnotherKindIsRefused) {
     expect_refused(broken("0.99", other));
     if (std::string(other) != "null") expect_refused(broken("100.25", other));
   }
-  expect_refused(broken("\"HALYRD\"", "7"));
+  expect_refused(broken("\"HALYRD\"", "7"), "`underlying` is not a text");
+  expect_refused(broken("\"rho\": -0.5", "\"rho\": \"-0.5\""), "slice 1: `rho` is not a number");
+  expect_refused(broken("\"slices\": [", "\"slices\": 0, \"other\": ["), "`slices` is not a list");
+  expect_refused(broken("\"zone\": \"\"", "\"zone\": null"), "`zone` is not a text");
+  expect_refused(broken("\"zone\": \"\"", "\"zone\": \"Atlantis/Harbour\""), "`zone`");
 }
 
 // A number, null or object passed for a list of what it holds.
@@ -218,6 +257,18 @@ TEST(SurfaceJson, ListsAndRulesOfAnotherKindAreRefused) {
 TEST(SurfaceJson, DatesThatAreNoneAreRefused) {
   expect_refused(broken("\"as_of\": \"2031-03-14", "\"as_of\": \"2031-02-30"));
   expect_refused(broken("\"expiry\": \"2031-", "\"expiry\": \"9031-"));
+}
+
+TEST(SurfaceJson, YearFractionThatIsNotThatOfTheDatesIsRefused) {
+  for (const double off : {1e-8, -1e-8, 0.1}) {
+    auto surface = made();
+    surface.slices[0].year_fraction += off;
+    expect_refused(text_of(surface), "years from as_of to expiry");
+  }
+  // Rounded to ten digits, as another program may write it.
+  auto surface = made();
+  surface.slices[0].year_fraction = std::round(surface.slices[0].year_fraction * 1e10) / 1e10;
+  expect_reloads(surface);
 }
 
 surface::Surface with(auto change) {

@@ -212,10 +212,10 @@ const ValueTime kTime{kExpiry, "3M", 0.25, {101.5, 0.99}};
 TEST(ValuesLine, EveryNumberStandsUnderItsHeader) {
   InstantTexts instants(kClock);
   const surface::Derived derived{95, 0.2, quotes::PutCall::put, 1.5, {-0.25, 0.03, 9.5}, 0.02, 0.3};
-  const auto line = values_line(kTime, {95, -0.0625, derived}, instants);
+  const auto line = values_line(kTime, {95, -0.0625, derived, Support::interpolated}, instants);
   EXPECT_EQ(line,
             "2031-06-20T16:00:00-05:00,3M,0.25,101.5,0.99,95,-0.0625,0.2,P,1.5,-0.25,0.03,9.5,"
-            "0.02,0.3\n");
+            "0.02,0.3,interpolated\n");
   EXPECT_EQ(cells_of(line).size(), cells_of(kValuesHeader).size());
   EXPECT_EQ(cell(kValuesHeader, line, "vega"), "9.5");
   EXPECT_EQ(cell(kValuesHeader, line, "local_vol"), "0.3");
@@ -224,11 +224,11 @@ TEST(ValuesLine, EveryNumberStandsUnderItsHeader) {
 TEST(ValuesLine, NumbersThatDoNotExistAreEmptyCells) {
   InstantTexts instants(kClock);
   surface::Derived derived{95, 0.2, quotes::PutCall::call, 1.5, {0.25, 0.03, 9.5}, {}, {}};
-  const auto line = values_line(kTime, {95, -0.0625, derived}, instants);
-  EXPECT_TRUE(line.ends_with(",9.5,,\n")) << line;
-  const auto bare = values_line(kTime, {INFINITY, 800, {}}, instants);
+  const auto line = values_line(kTime, {95, -0.0625, derived, Support::interpolated}, instants);
+  EXPECT_TRUE(line.ends_with(",9.5,,,interpolated\n")) << line;
+  const auto bare = values_line(kTime, {INFINITY, 800, {}, Support::extrapolated}, instants);
   EXPECT_EQ(cells_of(bare).size(), cells_of(kValuesHeader).size());
-  EXPECT_TRUE(bare.ends_with(",0.99,,800,,,,,,,,\n")) << bare;
+  EXPECT_TRUE(bare.ends_with(",0.99,,800,,,,,,,,,extrapolated\n")) << bare;
 }
 
 TEST(SwapsLine, AStrikeThatDoesNotExistIsAnEmptyCell) {

@@ -108,10 +108,11 @@ TEST(ValueAt, EveryAxisLeadsToTheSameOption) {
   const auto s = stored();
   const auto time = listed_times(s)[2];
   const surface::TimedSmile smile(s.surface, time.year_fraction);
-  const auto strike = value_at(smile, time.carried, {Axis::strike, 90});
+  const auto strike = value_at(s.surface, smile, time.carried, {Axis::strike, 90});
   EXPECT_EQ(strike.strike, 90);
-  const auto ratio = value_at(smile, time.carried, {Axis::moneyness, 90.0 / 103});
-  const auto log = value_at(smile, time.carried, {Axis::log_moneyness, std::log(90.0 / 103)});
+  const auto ratio = value_at(s.surface, smile, time.carried, {Axis::moneyness, 90.0 / 103});
+  const auto log =
+      value_at(s.surface, smile, time.carried, {Axis::log_moneyness, std::log(90.0 / 103)});
   // A logarithm and an exponential apart: a few ulp, times the price's slope over its value, 13.
   for (const auto& row : {ratio, log}) {
     EXPECT_NEAR(row.strike, 90, 1e-13);
@@ -119,16 +120,38 @@ TEST(ValueAt, EveryAxisLeadsToTheSameOption) {
     EXPECT_NEAR(row.derived->price / strike.derived->price, 1, 1e-13);
   }
   EXPECT_EQ(strike.derived->put_call, PutCall::put);
-  const auto call = value_at(smile, time.carried, {Axis::strike, 90, PutCall::call});
+  const auto call = value_at(s.surface, smile, time.carried, {Axis::strike, 90, PutCall::call});
   EXPECT_EQ(call.derived->put_call, PutCall::call);
+}
+
+TEST(ValueAt, SupportIsThatOfTheGridWithoutQuotes) {
+  auto s = stored();
+  s.surface.slices[2].k_low = -0.5;
+  s.surface.slices[2].k_high = 0.3;
+  const auto support = [&](double t, double k) {
+    const surface::TimedSmile smile(s.surface, t);
+    return value_at(s.surface, smile, surface::carried_at(s.surface, t), {Axis::log_moneyness, k})
+        .support;
+  };
+  const auto &a = s.surface.slices[1], &b = s.surface.slices[2];
+  const double between = 0.5 * (a.year_fraction + b.year_fraction);
+  for (const double k : {-0.3, 0.0, 0.2})
+    EXPECT_EQ(support(a.year_fraction, k), Support::interpolated) << k;
+  for (const double k : {-0.31, 0.21, -800.0, double(INFINITY)})
+    EXPECT_EQ(support(a.year_fraction, k), Support::extrapolated) << k;
+  // Half way the range is -0.4 to 0.25.
+  for (const double k : {-0.39, 0.24}) EXPECT_EQ(support(between, k), Support::interpolated) << k;
+  for (const double k : {-0.41, 0.26}) EXPECT_EQ(support(between, k), Support::extrapolated) << k;
+  for (const double t : {0.01, 1.1 * b.year_fraction})
+    EXPECT_EQ(support(t, 0), Support::extrapolated) << t;
 }
 
 TEST(ValueAt, PointsBeyondNumbersHaveNoValues) {
   const auto s = stored();
   const auto time = listed_times(s)[2];
   const surface::TimedSmile smile(s.surface, time.year_fraction);
-  EXPECT_FALSE(value_at(smile, time.carried, {Axis::log_moneyness, 800}).derived);
-  EXPECT_FALSE(value_at(smile, {INFINITY, 1}, {Axis::strike, 90}).derived);
+  EXPECT_FALSE(value_at(s.surface, smile, time.carried, {Axis::log_moneyness, 800}).derived);
+  EXPECT_FALSE(value_at(s.surface, smile, {INFINITY, 1}, {Axis::strike, 90}).derived);
 }
 
 }  // namespace
