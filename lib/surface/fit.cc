@@ -106,6 +106,11 @@ class OverlayFit {
       const auto more = models_[j + 1].places();
       ks.insert(ks.end(), more.begin(), more.end());
       std::sort(ks.begin(), ks.end());
+      // Twins would hide a low point from look_closer().
+      const double apart = 1e-4 * models_[j].s0();
+      ks.erase(std::unique(ks.begin(), ks.end(),
+                           [&](double k, double next) { return next - k < apart; }),
+               ks.end());
       add_far_places(ks);
       crossings_.emplace_back();
       for (const double k : ks) crossings_.back().push_back(crossing_at(j, k));
