@@ -274,7 +274,7 @@ PutBoundary AmericanEngine::put_boundary(double rate, double yield, double total
   for (const double depth : {perpetual, std::numeric_limits<double>::infinity()}) {
     out.beta = first_guess(put, collocation_, depth);
     double last = std::numeric_limits<double>::infinity();
-    for (int step = 0; step < accuracy_.newton_steps && std::isfinite(last); ++step) {
+    for (int step = 0; step < accuracy_.newton_steps; ++step) {
       const double moved = newton_step(equations, out.beta, total_vol);
       // Steps that no longer shrink have reached what rounding allows.
       out.converged = moved < kSettled || (moved < kNear && moved > 0.3 * last);
