@@ -9,8 +9,9 @@ add_stage(market
   NEEDS duskgrid::quotes PRIVATE_NEEDS fmt::fmt)
 
 add_stage(pricing
-  SOURCES black.cc invert.cc invert_batch.cc selection.cc
-  NEEDS duskgrid::market PRIVATE_NEEDS fmt::fmt hwy::hwy)
+  SOURCES american.cc american_batch.cc american_dividends.cc american_panel.cc american_rules.cc
+    black.cc invert.cc invert_batch.cc selection.cc
+  NEEDS duskgrid::market PRIVATE_NEEDS Boost::boost fmt::fmt hwy::hwy)
 # Vectors without a size known to the compiler have no operators, which the kernel uses.
 target_compile_definitions(duskgrid_pricing PRIVATE
   "HWY_DISABLED_TARGETS=(HWY_SVE|HWY_SVE2|HWY_SVE_256|HWY_SVE2_128|HWY_RVV)")

@@ -49,6 +49,20 @@ std::vector<AnglePoint> gauss_angles(std::size_t points) {
   return out;
 }
 
+// Gauss-Legendre in t with angle (0.2 t + 0.8 t^2) pi/2: of the maps tried the one with least error
+// next to the boundary at 24 points (5e-9 for a rate of 5 %), twenty times less than none.
+std::vector<AnglePoint> crowded_angles(std::size_t points) {
+  const GaussRule gauss = gauss_legendre(points);
+  std::vector<AnglePoint> out;
+  for (std::size_t k = 0; k < points; ++k) {
+    const double t = 0.5 * (1 + gauss.nodes[k]);
+    const double angle = 0.5 * pi * (0.2 + 0.8 * t) * t;
+    out.push_back({std::sin(angle), std::cos(angle),
+                   0.25 * pi * (0.2 + 1.6 * t) * gauss.weights[k]});
+  }
+  return out;
+}
+
 std::vector<AnglePoint> double_exponential_angles(std::size_t points) {
   constexpr double kReach = 3.1;  // past it the weights are below 1e-14
   const double step = 2 * kReach / static_cast<double>(points - 1);
@@ -118,7 +132,7 @@ CollocationRule collocation_rule(std::size_t nodes, std::size_t points) {
 }
 
 AgeRule premium_rule(std::size_t nodes, std::size_t points) {
-  return full_time(nodes, gauss_angles(points));
+  return full_time(nodes, crowded_angles(points));
 }
 
 AgeRule double_exponential_premium_rule(std::size_t nodes, std::size_t points) {

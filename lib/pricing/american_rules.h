@@ -38,7 +38,7 @@ struct CollocationRule {
 };
 
 CollocationRule collocation_rule(std::size_t nodes, std::size_t points);
-// For the premium at the full time: Gauss-Legendre in the angle.
+// For the premium at the full time: Gauss-Legendre, more points near v = 0 than by the angle.
 AgeRule premium_rule(std::size_t nodes, std::size_t points);
 // The same by the double exponential rule, whose points crowd at both ends: for prices next to the
 // boundary, where the integrand has a layer. H. Takahasi, M. Mori, Publ. RIMS 9 (1974) 721-741.
