@@ -94,7 +94,13 @@ BetaAt beta_at(const std::vector<double>& squares, const double* row, double lef
 class BoundaryEquations {
  public:
   BoundaryEquations(const UnitPut& put, const CollocationRule& rule)
-      : put_(put), rule_(rule), limit_(log_limit(put)) {}
+      : put_(put), rule_(rule), limit_(log_limit(put)) {
+    for (std::size_t k = 0; k < rule.ages.points; ++k) {
+      const double v = rule.ages.root_age[k] * rule.ages.root_age[k];
+      rate_decay_.push_back(rule.ages.weight[k] * std::exp(-put.rate * v));
+      yield_decay_.push_back(rule.ages.weight[k] * std::exp(-put.yield * v));
+    }
+  }
 
   // With A = int e^{-rv} n(d2) (r - q B(u)) / (s sqrt v) dv and M = int e^{-qv} N(d1) dv, d at B(t)
   // over B(u), smooth pasting at t is A = B(t) (e^{-qt} N(d1(t, B/K)) + q M): its logarithm,
@@ -111,7 +117,7 @@ class BoundaryEquations {
   double equation(const std::vector<double>& beta, std::size_t i, double* row) {
     const std::size_t n = rule_.nodes;
     const double s = put_.total_vol, root = rule_.root[i], time = root * root, b = beta[i];
-    const double carry = put_.rate - put_.yield;
+    const double carry = put_.rate - put_.yield, level = std::exp(b + limit_);
     double a = 0, a_slope = 0, m = 0, m_slope = 0;
     by_a_.assign(n, 0);
     by_m_.assign(n, 0);
@@ -121,31 +127,33 @@ class BoundaryEquations {
       const double age = rule_.ages.root_age[k], v = age * age, deviation = s * age;
       const double d2 = (b - other.value + carry * v) / deviation - 0.5 * deviation;
       const double d1 = d2 + deviation;
-      const double earned = put_.yield * std::exp(other.value + limit_);
-      const double density = rule_.ages.weight[k] * std::exp(-put_.rate * v) * normal_pdf(d2) / s;
+      const double level_then = std::exp(other.value + limit_);
+      const double earned = put_.yield * level_then;
+      const double density = rate_decay_[k] * normal_pdf(d2) / s;
       const double term = density * (put_.rate - earned);
-      const double decay = rule_.ages.weight[k] * std::exp(-put_.yield * v);
-      const double m_term = decay * normal_pdf(d1) / s;
+      const double decay = yield_decay_[k];
+      // B(t) e^{-qv} n(d1) = B(u) e^{-rv} n(d2).
+      const double m_term = density * level_then / level;
       a += term;
       a_slope -= term * d2 / deviation;
       m += decay * age * normal_cdf(d1);
       m_slope += m_term;
       if (!other.interpolated) continue;
-      const double of_a = term * d2 / deviation - density * earned;
+      const double of_a = (term * d2 / deviation - density * earned) / other.value;
+      const double of_m = m_term / other.value;
       for (std::size_t j = 0; j < n; ++j) {
-        const double share = weights[j] * beta[j] / other.value;
-        by_a_[j] += of_a * share;
-        by_m_[j] -= m_term * share;
+        by_a_[j] += of_a * weights[j];
+        by_m_[j] -= of_m * weights[j];
       }
     }
-    const double level = std::exp(b + limit_), deviation = s * root;
+    const double deviation = s * root;
     const double d1 = (b + limit_ + carry * time) / deviation + 0.5 * deviation;
     const double decay = std::exp(-put_.yield * time);
     const double gains = std::max(put_.yield, 0.0), costs = std::max(-put_.yield, 0.0);
     const double left = a / level + costs * m;
     const double right = decay * normal_cdf(d1) + gains * m;
     for (std::size_t j = 0; j < n; ++j)
-      row[j] = (by_a_[j] / level + costs * by_m_[j]) / left - gains * by_m_[j] / right;
+      row[j] = beta[j] * ((by_a_[j] / level + costs * by_m_[j]) / left - gains * by_m_[j] / right);
     row[i] += ((a_slope - a) / level + costs * m_slope) / left -
               (decay * normal_pdf(d1) / deviation + gains * m_slope) / right;
     return std::log(left) - std::log(right);
@@ -154,6 +162,7 @@ class BoundaryEquations {
   UnitPut put_;
   const CollocationRule& rule_;
   double limit_;
+  std::vector<double> rate_decay_, yield_decay_;  // weight e^{-rv}, weight e^{-qv}
   std::vector<double> squares_, by_a_, by_m_;
 };
 

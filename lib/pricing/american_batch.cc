@@ -112,9 +112,9 @@ struct Found {
   double slope;  // of the price by total volatility
 };
 
-// What a table's boundary of few nodes and its quadrature cost, a share of the premium: seven
-// times the worst of 20,000 random quotes.
-constexpr double kDiscretisation = 1e-5;
+// What a table's boundary of few nodes and its quadrature cost, a share of the premium.
+constexpr double kMargin = 0.5;  // the estimate of interpolation is not a bound
+constexpr double kDiscretisation = 5e-6;
 
 // Newton's method on the price, which grows with volatility, kept between bounds. `most` has a
 // price at or above the one asked.
@@ -140,10 +140,10 @@ Found search(Side& side, const UnitQuote& q, double most, double guess) {
     const double moved = s - miss / (vega + premium.slope);
     if (std::abs(moved - s) <= kSettled * s) {
       const double sure = kDiscretisation * premium.value * q.per_spot;
-      const bool good = premium.error * q.per_spot + sure <= AmericanInverter::kPromise;
+      const bool good = premium.error * q.per_spot + sure <= kMargin * AmericanInverter::kPromise;
       found = {good ? Reached::good : Reached::rough, moved, european + (moved - s) * vega,
                vega + premium.slope};
-      panel = good || sure > AmericanInverter::kPromise ? nullptr : side.finer(*panel, s);
+      panel = good || sure > kMargin * AmericanInverter::kPromise ? nullptr : side.finer(*panel, s);
       if (!panel) break;
       low = 0, high = most;
       continue;

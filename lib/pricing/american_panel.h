@@ -44,7 +44,7 @@ class PanelMaker {
   PremiumPanel make(double rate, double yield, double low, double high) const;
 
   // Nodes and points (n, l, p of american.h) of the boundary and the premium.
-  static constexpr std::size_t kNodes = 8, kPoints = 12, kPremiumPoints = 24;
+  static constexpr std::size_t kNodes = 10, kPoints = 14, kPremiumPoints = 24;
 
  private:
   CollocationRule collocation_;
