@@ -16,10 +16,8 @@ struct UnitPut {
   double total_vol;
 };
 
-// Below this total volatility nothing moves within rounding; above the other the boundary is 0 and
-// the price its bound within rounding.
-constexpr double kLeastTotalVol = 1e-7;
-constexpr double kMostTotalVol = 40;
+// Below this total volatility nothing moves within rounding; the other is where squares are safe.
+constexpr double kLeastTotalVol = 1e-7, kMostTotalVol = 1e6;
 // Rates whose whole premium is lost in rounding.
 constexpr double kLeastPremium = 1e-15;
 
@@ -39,14 +37,28 @@ double perpetual_power(const UnitPut& put) {
 // ln b, -inf where there is no boundary.
 double log_perpetual(const UnitPut& put) { return -std::log1p(-1 / perpetual_power(put)); }
 
-// Whether the drift carries the spot so far up within the time that what is not exercised by then
-// never will be: the chance that it is, and so what the put lacks to the perpetual one, is below
-// exp(-drift^2 / (2 s^2)) < 1e-17. The boundary then changes too fast to be collocated, and need
-// not be.
+// Whether the put is worth the perpetual one: what is not exercised within the time never will be.
+// Either the drift carries the spot up and away, the chance of coming back being below exp(-drift^2
+// / (2 s^2)) < 1e-17; or all spots end near 0, past any boundary, but for a share of exp(-s^2 / 8)
+// < 1e-14. The boundary changes too fast to be collocated, and need not be.
 bool as_good_as_perpetual(const UnitPut& put) {
-  constexpr double kDeviations = 9;
-  return put.rate > 0 &&
-         put.rate - put.yield - 0.5 * put.total_vol * put.total_vol > kDeviations * put.total_vol;
+  constexpr double kDeviations = 9, kGreatVol = 16;
+  const double drift = put.rate - put.yield - 0.5 * put.total_vol * put.total_vol;
+  return put.total_vol > kGreatVol || (put.rate > 0 && drift > kDeviations * put.total_vol);
+}
+
+// Whether the drift is so much down that the boundary is the perpetual one but for the last 1e-4 of
+// the time, in which it hardly matters (less than s / 2e6).
+bool is_flat(const UnitPut& put) {
+  constexpr double kDeviations = 100;
+  return put.yield - put.rate > kDeviations * put.total_vol;
+}
+
+double perpetual_put(const UnitPut& put, double log_spot) {
+  const double power = perpetual_power(put);
+  if (power >= 0) return 1;  // without a rate there is no boundary, and no hurry
+  const double level = log_perpetual(put);
+  return -std::expm1(level) * std::exp(power * (log_spot - level));
 }
 
 // Falls from 0 with the slope 1.5 s in the root of time, and levels out at -depth.
@@ -181,32 +193,59 @@ double newton_step(BoundaryEquations& equations, std::vector<double>& beta, doub
   return most;
 }
 
+// What exercise earns a unit of time at age v, the boundary being at log_boundary then.
+double earned(const UnitPut& put, double log_spot, double log_boundary, double v) {
+  const double deviation = put.total_vol * std::sqrt(v);
+  const double d2 =
+      (log_spot - log_boundary + (put.rate - put.yield) * v) / deviation - 0.5 * deviation;
+  return put.rate * std::exp(-put.rate * v) * normal_cdf(-d2) -
+         put.yield * std::exp(log_spot - put.yield * v) * normal_cdf(-d2 - deviation);
+}
+
+// The premium by double exponential quadrature on either side of the age at which a spot that
+// drifts down comes to the boundary, where the integrand is a step of the width s / drift.
+double split_premium(const UnitPut& put, const PutBoundary& boundary,
+                     const CollocationRule& collocation, std::size_t points, double log_spot) {
+  const double met = (log_spot - boundary.log_limit) / (put.yield - put.rate);
+  const double split = std::clamp(met, 0.0, 1.0);
+  std::vector<double> squares, row(collocation.nodes);
+  for (const double b : boundary.beta) squares.push_back(b * b);
+  const auto log_boundary_at = [&](double left) {
+    if (boundary.flat) return boundary.log_limit + boundary.beta.front();
+    interpolation_row(collocation.root, left, row.data());
+    return boundary.log_limit + beta_at(squares, row.data(), left, collocation.root.back()).value;
+  };
+  double sum = 0;
+  for (const auto& point : double_exponential_rule(points)) {
+    const double early = split * point.from_low, late = split + (1 - split) * point.from_low;
+    if (split > 0)
+      sum += split * point.weight *
+             earned(put, log_spot, log_boundary_at(std::sqrt(1 - early)), early);
+    if (split < 1)
+      sum += (1 - split) * point.weight *
+             earned(put, log_spot, log_boundary_at(std::sqrt((1 - split) * point.from_high)), late);
+  }
+  return std::max(sum, 0.0);
+}
+
 double premium(const UnitPut& put, const PutBoundary& boundary, const CollocationRule& collocation,
                const AgeRule& rule, double log_spot) {
+  constexpr double kStep = 5;  // deviations of drift from which the integrand is a step
   if (boundary.perpetual) {
-    const double power = perpetual_power(put), level = log_perpetual(put);
-    const double s = put.total_vol;
     const BlackTerms black{PutCall::put, std::exp(log_spot + put.rate - put.yield), 1.0,
                            std::exp(-put.rate)};
-    return std::max(
-        -std::expm1(level) * std::exp(power * (log_spot - level)) - black_price(black, s), 0.0);
+    return std::max(perpetual_put(put, log_spot) - black_price(black, put.total_vol), 0.0);
   }
-  const std::size_t n = rule.nodes;
+  if (put.yield - put.rate > kStep * put.total_vol)
+    return split_premium(put, boundary, collocation, rule.points, log_spot);
   std::vector<double> squares;
   for (const double b : boundary.beta) squares.push_back(b * b);
-  const double s = put.total_vol, spot = std::exp(log_spot);
   double sum = 0;
   for (std::size_t k = 0; k < rule.points; ++k) {
-    const double beta = beta_at(squares, rule.interpolation.data() + k * n, rule.root_left[k],
-                                collocation.root[n - 1])
-                            .value;
-    const double age = rule.root_age[k], v = age * age, deviation = s * age;
-    const double d2 =
-        (log_spot - beta - boundary.log_limit + (put.rate - put.yield) * v) / deviation -
-        0.5 * deviation;
-    sum += rule.weight[k] * age *
-           (put.rate * std::exp(-put.rate * v) * normal_cdf(-d2) -
-            put.yield * spot * std::exp(-put.yield * v) * normal_cdf(-d2 - deviation));
+    const double* row = rule.interpolation.data() + k * rule.nodes;
+    const double beta = beta_at(squares, row, rule.root_left[k], collocation.root.back()).value;
+    const double age = rule.root_age[k];
+    sum += rule.weight[k] * age * earned(put, log_spot, boundary.log_limit + beta, age * age);
   }
   return std::max(sum, 0.0);
 }
@@ -271,10 +310,10 @@ PutBoundary AmericanEngine::put_boundary(double rate, double yield, double total
   constexpr double kSettled = 1e-13, kNear = 1e-7;
   const UnitPut put{rate, yield, total_vol};
   const std::size_t n = collocation_.nodes;
-  PutBoundary out{false, false, log_limit(put), {}};
-  if (as_good_as_perpetual(put)) {
-    out.converged = out.perpetual = true;
-    out.beta.assign(n, log_perpetual(put));
+  PutBoundary out{false, as_good_as_perpetual(put), is_flat(put), log_limit(put), {}};
+  if (out.perpetual || out.flat) {
+    out.converged = true;
+    out.beta.assign(n, log_perpetual(put) - out.log_limit);
     return out;
   }
   BoundaryEquations equations(put, collocation_);
@@ -320,8 +359,6 @@ AmericanPrice AmericanEngine::price(const AmericanTerms& terms, double vol) cons
             is_put ? terms.strike * limit : terms.strike / limit,
             intrinsic > 0 && floor <= intrinsic};
   }
-  if (s >= kMostTotalVol)
-    return {AmericanStatus::ok, american_ceiling(terms), european, never, false};
   const PutBoundary boundary = put_boundary(unit.rate, unit.yield, s);
   if (!boundary.converged) return {AmericanStatus::not_converged, 0, 0, never, false};
   const double log_exercise = boundary.log_limit + boundary.beta.front();

@@ -361,11 +361,11 @@ AmericanVol AmericanInverter::invert_by_reference(const AmericanTerms& terms, do
     converged = converged && at.status == AmericanStatus::ok;
     return at.price - price;
   };
-  // Prices for total volatilities past 40 are the bound within rounding (american.cc).
+  constexpr double kMost = 1e6;
   double low = 0, high = 0.25;
-  while (converged && high < 64 && miss(high) < 0) low = high, high *= 2;
+  while (converged && high < kMost && miss(high) < 0) low = high, high *= 2;
   if (!converged) return {kFailed, 0, 0};
-  if (high >= 64) return {AmericanVolStatus::above_bound, 0, 0};
+  if (high >= kMost) return {AmericanVolStatus::above_bound, 0, 0};
   std::uintmax_t steps = 100;
   const auto [below, above] =
       boost::math::tools::toms748_solve(miss, low, high, american_floor(terms) - price, miss(high),

@@ -18,8 +18,9 @@ std::vector<double> chebyshev_roots(std::size_t nodes) {
   return root;
 }
 
-// Barycentric weights of the Chebyshev points at `at`, the last point (0) left out: its value is 0.
-void interpolate(const std::vector<double>& root, double at, double* row) {
+}  // namespace
+
+void interpolation_row(const std::vector<double>& root, double at, double* row) {
   const std::size_t n = root.size();
   const double end = (n % 2 == 0 ? 0.5 : -0.5) / at;
   double sum = end;
@@ -34,6 +35,8 @@ void interpolate(const std::vector<double>& root, double at, double* row) {
   }
   for (std::size_t j = 0; j < n; ++j) row[j] /= sum;
 }
+
+namespace {
 
 struct AnglePoint {
   double sine, cosine, weight;  // weight of the angle
@@ -57,23 +60,17 @@ std::vector<AnglePoint> crowded_angles(std::size_t points) {
   for (std::size_t k = 0; k < points; ++k) {
     const double t = 0.5 * (1 + gauss.nodes[k]);
     const double angle = 0.5 * pi * (0.2 + 0.8 * t) * t;
-    out.push_back({std::sin(angle), std::cos(angle),
-                   0.25 * pi * (0.2 + 1.6 * t) * gauss.weights[k]});
+    out.push_back(
+        {std::sin(angle), std::cos(angle), 0.25 * pi * (0.2 + 1.6 * t) * gauss.weights[k]});
   }
   return out;
 }
 
 std::vector<AnglePoint> double_exponential_angles(std::size_t points) {
-  constexpr double kReach = 3.1;  // past it the weights are below 1e-14
-  const double step = 2 * kReach / static_cast<double>(points - 1);
   std::vector<AnglePoint> out;
-  for (std::size_t k = 0; k < points; ++k) {
-    const double at = -kReach + step * static_cast<double>(k);
-    const double from_low = 1 / (1 + std::exp(-pi * std::sinh(at)));
-    const double from_high = 1 / (1 + std::exp(pi * std::sinh(at)));
-    out.push_back({std::sin(0.5 * pi * from_low), std::sin(0.5 * pi * from_high),
-                   0.5 * pi * step * pi * std::cosh(at) * from_low * from_high});
-  }
+  for (const auto& p : double_exponential_rule(points))
+    out.push_back(
+        {std::sin(0.5 * pi * p.from_low), std::sin(0.5 * pi * p.from_high), 0.5 * pi * p.weight});
   return out;
 }
 
@@ -86,7 +83,7 @@ void add_points(const std::vector<double>& root, const std::vector<AnglePoint>& 
     rule.root_left.push_back(left);
     rule.weight.push_back(2 * left * angle.weight);  // dv = 2 sqrt(v) sqrt(u) d angle
     rule.interpolation.resize(rule.interpolation.size() + root.size());
-    interpolate(root, left, rule.interpolation.data() + rule.points * root.size());
+    interpolation_row(root, left, rule.interpolation.data() + rule.points * root.size());
     ++rule.points;
   }
 }
@@ -99,6 +96,19 @@ AgeRule full_time(std::size_t nodes, const std::vector<AnglePoint>& angles) {
 }
 
 }  // namespace
+
+std::vector<UnitPoint> double_exponential_rule(std::size_t points) {
+  constexpr double kReach = 3.1;  // past it the weights are below 1e-14
+  const double step = 2 * kReach / static_cast<double>(points - 1);
+  std::vector<UnitPoint> out;
+  for (std::size_t k = 0; k < points; ++k) {
+    const double at = -kReach + step * static_cast<double>(k);
+    const double from_low = 1 / (1 + std::exp(-pi * std::sinh(at)));
+    const double from_high = 1 / (1 + std::exp(pi * std::sinh(at)));
+    out.push_back({from_low, from_high, step * pi * std::cosh(at) * from_low * from_high});
+  }
+  return out;
+}
 
 GaussRule gauss_legendre(std::size_t points) {
   GaussRule rule;

@@ -14,6 +14,13 @@ struct GaussRule {
 };
 GaussRule gauss_legendre(std::size_t points);
 
+// The double exponential rule on [0, 1], whose points crowd at both ends: distances from the ends,
+// and weights. points >= 2. H. Takahasi, M. Mori, Publ. RIMS 9 (1974) 721-741.
+struct UnitPoint {
+  double from_low, from_high, weight;
+};
+std::vector<UnitPoint> double_exponential_rule(std::size_t points);
+
 // Quadrature over the age v in (0, t) of an integrand that also depends on what is left, u = t - v.
 // In the angle, v = t sin^2 and u = t cos^2, both roots are analytic, so that the square-root
 // behaviour of boundaries at u = 0 and of the normal densities at v = 0 costs no accuracy.
@@ -37,11 +44,14 @@ struct CollocationRule {
   AgeRule ages;
 };
 
+// The row of `interpolation` for one root of time left, in (0, 1], at the roots of a rule.
+void interpolation_row(const std::vector<double>& root, double at, double* row);
+
 CollocationRule collocation_rule(std::size_t nodes, std::size_t points);
 // For the premium at the full time: Gauss-Legendre, more points near v = 0 than by the angle.
 AgeRule premium_rule(std::size_t nodes, std::size_t points);
-// The same by the double exponential rule, whose points crowd at both ends: for prices next to the
-// boundary, where the integrand has a layer. H. Takahasi, M. Mori, Publ. RIMS 9 (1974) 721-741.
+// The same by the double exponential rule: for prices next to the boundary, where the integrand
+// has a layer.
 AgeRule double_exponential_premium_rule(std::size_t nodes, std::size_t points);
 
 }  // namespace duskgrid::pricing
