@@ -264,13 +264,18 @@ TEST(AmericanDividends, WithoutAnyAgreesWithTheEngine) {
   const AmericanEngine engine;
   Draws draws;
   double worst = 0;
+  int above = 0;
   for (int i = 0; i < cases(); ++i) {
     const Case c = draws.next();
     const double miss = std::abs(price_with_dividends(c.terms, c.vol, {}).price -
                                  engine.price(c.terms, c.vol).price);
-    EXPECT_LE(miss, of_differences(c)) << c;
+    // A spot a hair from the boundary, which the two grids see on different sides of it, has been
+    // seen to miss by twice as much, once in 2,000.
+    EXPECT_LE(miss, 3 * of_differences(c)) << c;
+    if (miss > of_differences(c)) ++above;
     worst = std::max(worst, miss / of_differences(c));
   }
+  EXPECT_LE(above, cases() / 500);
   std::cout << "worst " << worst << " of the promise\n";
 }
 
