@@ -504,7 +504,9 @@ TEST(Certify, OverlayBelowZeroTotalVarianceIsNotPositive) {
 // ---- Ends of overlays ----
 
 // The same constant everywhere; the knots are near the money.
-Overlay constant(double value) { return {{-0.02, -0.01, 0, 0.01, 0.02, 0.03}, {4, value}}; }
+Overlay constant(double value) {
+  return {{-0.02, -0.01, 0, 0.01, 0.02, 0.03}, std::vector<double>(4, value)};
+}
 
 // From `left` to `right` within the knots, 0.6 wide from `start`.
 Overlay ramp(double start, double left, double right) {
