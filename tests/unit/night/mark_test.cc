@@ -153,15 +153,19 @@ TEST(MarkUnderlying, CountsOfTheRecordAreThoseOfTheTable) {
   EXPECT_EQ(marked.record.slices, static_cast<std::int64_t>(marked.quality.size()));
 }
 
-TEST(MarkUnderlying, MissIsTheDistanceOutsideTheSpreadInHalfSpreads) {
-  Night night;
-  night.add_flat(60);
-  // Every second price up and the others down: butterflies that no surface meets.
-  for (Quote& q : night.table.quotes) {
+// Every second price up and the others down: butterflies that no surface meets.
+void zigzag(quotes::QuoteTable& table) {
+  for (Quote& q : table.quotes) {
     const double up = static_cast<int>(q.strike) % 10 == 0 ? 1.05 : 0.95;
     q.bid *= up;
     q.ask *= up;
   }
+}
+
+TEST(MarkUnderlying, MissIsTheDistanceOutsideTheSpreadInHalfSpreads) {
+  Night night;
+  night.add_flat(60);
+  zigzag(night.table);
   night.mark();
   constexpr double kLeastHalfSpread = 1e-6;  // as promised in docs/formats.md
   int outside = 0;
@@ -183,11 +187,7 @@ TEST(MarkUnderlying, MissIsTheDistanceOutsideTheSpreadInHalfSpreads) {
 TEST(MarkUnderlying, SurfaceOfQuotesThatNoSurfaceMeetsIsProvedAllTheSame) {
   Night night;
   night.add_flat(60);
-  for (Quote& q : night.table.quotes) {
-    const double up = static_cast<int>(q.strike) % 10 == 0 ? 1.05 : 0.95;
-    q.bid *= up;
-    q.ask *= up;
-  }
+  zigzag(night.table);
   const auto marked = night.mark();
   EXPECT_TRUE(marked.record.certified);
   EXPECT_TRUE(arbitrage::certify(*marked.surface).certified);
