@@ -11,7 +11,8 @@ int main(int argc, char** argv) {
   using namespace duskgrid;
   CLI::App program{
       "Turns a night's bid/ask option quote files into arbitrage-free\n"
-      "implied-volatility grids, and accounts for every quote in them."};
+      "implied-volatility grids, and accounts for every quote in them.",
+      "duskgrid"};  // not the path it was called by, which may be of any length
   program.set_version_flag("--version", std::string("duskgrid ") + DUSKGRID_VERSION);
   program.require_subcommand(1);
   program.footer(

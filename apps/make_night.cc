@@ -39,7 +39,8 @@ int write_night(const std::filesystem::path& folder, const World& world) {
 }  // namespace
 
 int main(int argc, char** argv) {
-  CLI::App app{"Invents a night of option quotes of an exchange that does not exist."};
+  CLI::App app{"Invents a night of option quotes of an exchange that does not exist.",
+               "make_night"};
   std::string out;
   std::string as_of = "2031-03-14T16:00:00-05:00";
   World world;

@@ -235,7 +235,8 @@ TEST_F(Command, HelpOfEveryCommandShowsAnExampleAndItsStatuses) {
     const auto ran = duskgrid({command, "--help"});
     EXPECT_EQ(ran.status, 0);
     EXPECT_NE(ran.out.find("Example"), std::string::npos) << command;
-    EXPECT_NE(ran.out.find("duskgrid " + command), std::string::npos);
+    // Not the path it was called by: a line could be of any width then.
+    EXPECT_NE(ran.out.find("Usage: duskgrid " + command), std::string::npos);
     EXPECT_LE(width_of(ran.out), 80u) << ran.out;
     const auto at = ran.out.find("Exit status");
     ASSERT_NE(at, std::string::npos) << ran.out;
