@@ -23,6 +23,12 @@ void InputArguments::add_to(CLI::App& command) {
   command.add_option("--zone", zone,
                      "IANA time zone of dates and times, such as\n"
                      "America/New_York");
+  command
+      .add_option("--exercise", exercise,
+                  "Exercise style where the files do not say:\n"
+                  "european or american; european without it")
+      ->check(CLI::IsMember({"european", "american"}))
+      ->option_text("STYLE");
 }
 
 Result<night::NightConfig> InputArguments::config() const {
@@ -56,6 +62,9 @@ Result<night::NightConfig> InputArguments::config() const {
     if (const auto problem = quotes::Clock{zone, {}}.problem()) return usage("--" + *problem);
     config.zone = zone;
   }
+  if (!exercise.empty())
+    config.exercise =
+        exercise == "american" ? quotes::Exercise::american : quotes::Exercise::european;
   return config;
 }
 

@@ -13,6 +13,7 @@ struct InputArguments {
   std::vector<std::string> inputs;
   std::string as_of;
   std::string zone;
+  std::string exercise;
 
   void add_to(CLI::App& command);
   // The configuration with the files of the command line in it. Files named beside a

@@ -147,7 +147,7 @@ int survey(const InputArguments& args) {
   if (config->as_of_text.empty()) config->as_of_text = "2000-01-01";
   const auto night = night::resolve(*config);
   if (!night) return console::report(night.failure());
-  const auto loaded = quotes::load_quotes(config->sources, night->times);
+  const auto loaded = quotes::load_quotes(night::sources_of(*config), night->times);
   if (!loaded) return console::report(loaded.failure());
   for (const auto& file : loaded->files) print_file(file);
   print_chains(loaded->table, night->as_of.clock);

@@ -5,11 +5,12 @@ add_stage(quotes
   PRIVATE_NEEDS Boost::iostreams date::date-tz fmt::fmt Threads::Threads)
 
 add_stage(market
-  SOURCES curve.cc dates.cc day_count.cc parity.cc
+  SOURCES curve.cc dates.cc day_count.cc dividend_file.cc dividends.cc parity.cc
   NEEDS duskgrid::quotes PRIVATE_NEEDS fmt::fmt)
 
 add_stage(pricing
-  SOURCES american.cc american_batch.cc american_dividends.cc american_panel.cc american_rules.cc
+  SOURCES american.cc american_batch.cc american_dividends.cc american_forwards.cc
+    american_panel.cc american_rules.cc american_slice.cc
     black.cc invert.cc invert_batch.cc selection.cc
   NEEDS duskgrid::market PRIVATE_NEEDS Boost::boost fmt::fmt hwy::hwy)
 # Vectors without a size known to the compiler have no operators, which the kernel uses.
@@ -31,7 +32,7 @@ add_stage(publish
   PRIVATE_NEEDS Boost::boost OpenSSL::Crypto fmt::fmt nlohmann_json::nlohmann_json)
 
 add_stage(night
-  SOURCES config.cc mark.cc run.cc
+  SOURCES config.cc mark.cc run.cc slice_market.cc
   NEEDS duskgrid::publish
   PRIVATE_NEEDS TBB::tbb fmt::fmt nlohmann_json::nlohmann_json tomlplusplus::tomlplusplus)
 target_compile_definitions(duskgrid_night PRIVATE DUSKGRID_VERSION="${PROJECT_VERSION}")

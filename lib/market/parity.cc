@@ -164,27 +164,9 @@ double rough_forward(std::span<const ParityPair> pairs, double discount) {
   return said.back().first;
 }
 
-std::vector<ForwardInterval> near_the_money(const ExpiryPairs& expiry, double discount,
-                                            const ParityOptions& options) {
-  const double rough = rough_forward(expiry.pairs, discount);
-  std::vector<ParityPair> sorted(expiry.pairs.begin(), expiry.pairs.end());
-  std::sort(sorted.begin(), sorted.end(), [&](const auto& a, const auto& b) {
-    return std::pair(std::abs(a.strike - rough), a.strike) <
-           std::pair(std::abs(b.strike - rough), b.strike);
-  });
-  // At the money a straddle is D F s sqrt(2/pi): the middling one of the nearest three.
-  std::vector<double> straddles;
-  for (std::size_t i = 0; i < std::min<std::size_t>(3, sorted.size()); ++i)
-    straddles.push_back(sorted[i].straddle);
-  const double money = std::max(rough, sorted.front().strike);
-  const double total_vol = median_of(straddles) / (0.8 * discount * money);
-  const double reach = std::max(options.near_deviations * total_vol * money,
-                                std::abs(sorted.front().strike - rough));
+std::vector<ForwardInterval> intervals_of(std::span<const ParityPair> near, double discount) {
   std::vector<ForwardInterval> out;
-  for (const ParityPair& p : sorted) {
-    if (!out.empty() && (std::abs(p.strike - rough) > reach ||
-                         out.size() >= static_cast<std::size_t>(options.most_near_pairs)))
-      break;
+  for (const ParityPair& p : near) {
     const double d = deviation(p) / discount;
     out.push_back({p.strike + p.low / discount, p.strike + p.high / discount, 1 / (d * d)});
   }
@@ -233,35 +215,21 @@ std::vector<ForwardInterval> largest_agreement(std::span<const ForwardInterval> 
   return best;
 }
 
-void place_forward(std::span<const ForwardInterval> intervals, ForwardEstimate& estimate) {
-  Meeting common = meet(intervals);
-  estimate.lowest_forward = common.low;
-  estimate.highest_forward = common.high;
-  if (!(common.low <= common.high)) common = meet(largest_agreement(intervals));
-  // A hair inside the ends, so that rounding in D (F - K) cannot put it outside.
-  const double hair = 1e-9 * (common.high - common.low);
-  estimate.forward = std::clamp(common.mean, common.low + hair, common.high - hair);
-  estimate.pairs = static_cast<int>(intervals.size());
-  const double tolerance = 1e-12 * std::abs(estimate.forward);
-  estimate.breaks = static_cast<int>(std::count_if(
-      intervals.begin(), intervals.end(),
-      [&](const ForwardInterval& i) { return distance_outside(i, estimate.forward) > tolerance; }));
-}
-
-// The carry of the nearest expiry that has one, for expiries without pairs.
-double nearest_carry(std::span<const std::optional<ForwardEstimate>> estimates,
-                     std::span<const ExpiryPairs> expiries, double t) {
-  double carry = 0, least = std::numeric_limits<double>::infinity();
+// The yield on top of the dividends of the nearest expiry that has one, for expiries without pairs.
+double nearest_borrow(const ForwardEstimates& estimates, std::span<const ExpiryPairs> expiries,
+                      const KnownMarket& known, double t) {
+  double borrow = 0, least = std::numeric_limits<double>::infinity();
   for (std::size_t i = 0; i < estimates.size(); ++i) {
-    if (!estimates[i] || !estimates[i]->carry) continue;
-    if (estimates[i]->source == ForwardSource::curve) continue;  // a copy of another's
+    if (!estimates[i] || estimates[i]->source == ForwardSource::curve) continue;
     const double distance = std::abs(expiries[i].year_fraction - t);
-    if (distance < least) {
-      least = distance;
-      carry = *estimates[i]->carry;
-    }
+    if (!(distance < least)) continue;
+    const Financing financing{*known.spot, estimates[i]->zero_rate, 0, expiries[i].year_fraction};
+    const auto own = borrow_of(estimates[i]->forward, financing, known.dividends);
+    if (!own) continue;
+    least = distance;
+    borrow = *own;
   }
-  return carry;
+  return borrow;
 }
 
 }  // namespace
@@ -284,10 +252,54 @@ std::optional<std::string> ParityOptions::problem() const {
   return std::nullopt;
 }
 
-std::vector<std::optional<ForwardEstimate>> estimate_forwards(std::span<const ExpiryPairs> expiries,
-                                                              const KnownMarket& known,
-                                                              const ParityOptions& options) {
-  std::vector<std::optional<ForwardEstimate>> estimates(expiries.size());
+std::vector<ParityPair> near_pairs(const ExpiryPairs& expiry, double discount_factor,
+                                   const ParityOptions& options) {
+  const double rough = rough_forward(expiry.pairs, discount_factor);
+  std::vector<ParityPair> sorted(expiry.pairs.begin(), expiry.pairs.end());
+  std::sort(sorted.begin(), sorted.end(), [&](const auto& a, const auto& b) {
+    return std::pair(std::abs(a.strike - rough), a.strike) <
+           std::pair(std::abs(b.strike - rough), b.strike);
+  });
+  // At the money a straddle is D F s sqrt(2/pi): the middling one of the nearest three.
+  std::vector<double> straddles;
+  for (std::size_t i = 0; i < std::min<std::size_t>(3, sorted.size()); ++i)
+    straddles.push_back(sorted[i].straddle);
+  const double money = std::max(rough, sorted.front().strike);
+  const double total_vol = median_of(straddles) / (0.8 * discount_factor * money);
+  const double reach = std::max(options.near_deviations * total_vol * money,
+                                std::abs(sorted.front().strike - rough));
+  const auto most = static_cast<std::size_t>(options.most_near_pairs);
+  std::size_t count = 1;
+  while (count < std::min(most, sorted.size()) && std::abs(sorted[count].strike - rough) <= reach)
+    ++count;
+  sorted.resize(count);
+  return sorted;
+}
+
+void place_forward(std::span<const ParityPair> near, ForwardEstimate& estimate) {
+  const auto intervals = intervals_of(near, estimate.discount_factor);
+  Meeting common = meet(intervals);
+  estimate.lowest_forward = common.low;
+  estimate.highest_forward = common.high;
+  if (!(common.low <= common.high)) common = meet(largest_agreement(intervals));
+  // A hair inside the ends, so that rounding in D (F - K) cannot put it outside.
+  const double hair = 1e-9 * (common.high - common.low);
+  estimate.forward = std::clamp(common.mean, common.low + hair, common.high - hair);
+  estimate.pairs = static_cast<int>(intervals.size());
+  estimate.breaks = count_breaks(near, estimate);
+}
+
+int count_breaks(std::span<const ParityPair> near, const ForwardEstimate& estimate) {
+  const auto intervals = intervals_of(near, estimate.discount_factor);
+  const double tolerance = 1e-12 * std::abs(estimate.forward);
+  return static_cast<int>(std::count_if(
+      intervals.begin(), intervals.end(),
+      [&](const ForwardInterval& i) { return distance_outside(i, estimate.forward) > tolerance; }));
+}
+
+ForwardEstimates parity_forwards(std::span<const ExpiryPairs> expiries, const KnownMarket& known,
+                                 const ParityOptions& options) {
+  ForwardEstimates estimates(expiries.size());
   const auto rates = zero_rates(expiries, known, options);
   for (std::size_t i = 0; i < expiries.size(); ++i) {
     const ExpiryPairs& e = expiries[i];
@@ -298,7 +310,7 @@ std::vector<std::optional<ForwardEstimate>> estimate_forwards(std::span<const Ex
                         .carry = {},
                         .lowest_forward = kNaN,
                         .highest_forward = kNaN};
-    if (!e.pairs.empty()) place_forward(near_the_money(e, out.discount_factor, options), out);
+    if (!e.pairs.empty()) place_forward(near_pairs(e, out.discount_factor, options), out);
     if (e.given_forward) {
       out.forward = *e.given_forward;
       out.source = ForwardSource::given;
@@ -308,19 +320,36 @@ std::vector<std::optional<ForwardEstimate>> estimate_forwards(std::span<const Ex
     if (known.spot) out.carry = rates[i] - std::log(out.forward / *known.spot) / t;
     estimates[i] = out;
   }
-  if (!known.spot) return estimates;
+  return estimates;
+}
+
+void fill_from_carry(std::span<const ExpiryPairs> expiries, const KnownMarket& known,
+                     const ParityOptions& options, ForwardEstimates& estimates) {
+  const bool complete = std::all_of(estimates.begin(), estimates.end(),
+                                    [](const auto& estimate) { return estimate.has_value(); });
+  if (!known.spot || complete) return;
+  const auto rates = zero_rates(expiries, known, options);
+  const ForwardEstimates found = estimates;
   for (std::size_t i = 0; i < expiries.size(); ++i) {
-    if (estimates[i]) continue;
+    if (found[i]) continue;
     const double t = expiries[i].year_fraction;
-    const double carry = known.carry ? *known.carry : nearest_carry(estimates, expiries, t);
-    estimates[i] = ForwardEstimate{.forward = *known.spot * std::exp((rates[i] - carry) * t),
+    const double borrow = known.carry ? *known.carry : nearest_borrow(found, expiries, known, t);
+    const double forward = forward_of({*known.spot, rates[i], borrow, t}, known.dividends);
+    if (!(forward > 0 && std::isfinite(forward))) continue;
+    estimates[i] = ForwardEstimate{.forward = forward,
                                    .discount_factor = std::exp(-rates[i] * t),
                                    .zero_rate = rates[i],
-                                   .carry = carry,
+                                   .carry = rates[i] - std::log(forward / *known.spot) / t,
                                    .source = ForwardSource::curve,
                                    .lowest_forward = kNaN,
                                    .highest_forward = kNaN};
   }
+}
+
+ForwardEstimates estimate_forwards(std::span<const ExpiryPairs> expiries, const KnownMarket& known,
+                                   const ParityOptions& options) {
+  auto estimates = parity_forwards(expiries, known, options);
+  fill_from_carry(expiries, known, options, estimates);
   return estimates;
 }
 

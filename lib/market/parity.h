@@ -1,5 +1,5 @@
 // Forwards and discount factors of one underlying from put-call parity on bid/ask
-// intervals. For European prices; of American ones only pairs near the money are used.
+// intervals. For European prices; pricing/american_forwards.h carries on for American ones.
 #pragma once
 
 #include <cstdint>
@@ -10,6 +10,7 @@
 #include <vector>
 
 #include "market/curve.h"
+#include "market/dividends.h"
 
 namespace duskgrid::market {
 
@@ -61,18 +62,38 @@ struct ParityOptions {
 
 struct KnownMarket {
   std::optional<double> spot;
-  std::optional<double> carry;  // continuous yield, decimals a year
+  std::optional<double> carry;  // continuous yield on top of the dividends, decimals a year
   std::optional<ZeroCurve> curve;
+  std::vector<Dividend> dividends = {};
 };
 
-// One estimate an expiry (increasing in time), or nothing where there is no forward: none given, no
-// pair, no spot. The discount of an expiry is a robust weighted regression of call minus put on
+using ForwardEstimates = std::vector<std::optional<ForwardEstimate>>;
+
+// One estimate an expiry (increasing in time), or nothing where there is no forward: none given and
+// no pair. The discount of an expiry is a robust weighted regression of call minus put on
 // strike, drawn to the curve, or to the rate that all expiries share, in proportion to their
 // errors, so that a short expiry cannot invent a rate. The forward is the spread-weighted mean of
 // the near-the-money pairs held inside the intersection of their intervals; when they have none in
 // common, inside that of the most pairs that agree, and the others are breaks.
-std::vector<std::optional<ForwardEstimate>> estimate_forwards(std::span<const ExpiryPairs> expiries,
-                                                              const KnownMarket& known,
-                                                              const ParityOptions& options);
+ForwardEstimates parity_forwards(std::span<const ExpiryPairs> expiries, const KnownMarket& known,
+                                 const ParityOptions& options);
+
+// Fills the expiries without an estimate from the spot, where it is known: by its dividends, and
+// the carry known or else the yield on top of them of the nearest expiry that has one.
+void fill_from_carry(std::span<const ExpiryPairs> expiries, const KnownMarket& known,
+                     const ParityOptions& options, ForwardEstimates& estimates);
+
+// Both.
+ForwardEstimates estimate_forwards(std::span<const ExpiryPairs> expiries, const KnownMarket& known,
+                                   const ParityOptions& options);
+
+// The pairs near the money by which the forward is placed, nearest first.
+std::vector<ParityPair> near_pairs(const ExpiryPairs& expiry, double discount_factor,
+                                   const ParityOptions& options);
+// Places the forward, and what goes with it, by near pairs (at least one) and the estimate's
+// discount factor.
+void place_forward(std::span<const ParityPair> near, ForwardEstimate& estimate);
+// How many of the near pairs have an interval that excludes the estimate's forward.
+int count_breaks(std::span<const ParityPair> near, const ForwardEstimate& estimate);
 
 }  // namespace duskgrid::market

@@ -17,6 +17,7 @@
 namespace duskgrid::night {
 namespace {
 
+using market::DividendKind;
 using quotes::Exercise;
 using quotes::Layout;
 using quotes::SourceOptions;
@@ -34,6 +35,18 @@ std::optional<Exercise> to_exercise(const toml::node& node) {
   if (text == "european") return Exercise::european;
   if (text == "american") return Exercise::american;
   return std::nullopt;
+}
+
+template <class Target>
+Field<Target> exercise_field(std::string_view meaning) {
+  return {"exercise", "european or american", meaning,
+          [](Target& target, const toml::node& node) {
+            target.exercise = to_exercise(node);
+            return target.exercise.has_value();
+          },
+          [](const Target& target) {
+            return target.exercise ? ordered_json(word(*target.exercise)) : ordered_json(nullptr);
+          }};
 }
 
 std::optional<Layout> to_layout(const toml::node& node) {
@@ -60,12 +73,18 @@ const std::vector<Field<NightConfig>>& night_fields() {
       field<NightConfig>("spot", "> 0, quote currency",
                          "price of every underlying that neither its table nor its file gives",
                          DUSKGRID_AT(spot), to_number),
+      exercise_field<NightConfig>(
+          "exercise style of sources that state none, where no column says; european without it"),
       field<NightConfig>("rates", "table of tenor or date = number",
                          "continuous zero rates, decimals a year", DUSKGRID_AT(rates),
                          to_number_map),
       field<NightConfig>("discount_factors", "table of tenor or date = number > 0",
                          "discount factors, in place of or beside rates",
                          DUSKGRID_AT(discount_factors), to_number_map),
+      field<NightConfig>("dividend_files", "list of paths",
+                         "CSV with columns underlying, ex_date, amount and perhaps kind (cash, or "
+                         "proportional: a share of the spot), beside the configuration",
+                         DUSKGRID_AT(dividend_files), to_texts),
   };
   return fields;
 }
@@ -109,13 +128,7 @@ const std::vector<Field<SourceOptions>>& source_fields() {
                DUSKGRID_AT(half_spread_absolute), to_number),
       field<S>("half_spread_relative", ">= 0, fraction of the price", "added to half_spread",
                DUSKGRID_AT(half_spread_relative), to_number),
-      {"exercise", "european or american", "exercise style where no column says",
-       [](S& s, const toml::node& node) {
-         const auto exercise = to_exercise(node);
-         if (exercise) s.exercise = *exercise;
-         return exercise.has_value();
-       },
-       [](const S& s) { return ordered_json(word(s.exercise)); }},
+      exercise_field<S>("exercise style where no column says; without it that of the night"),
       field<S>("columns", "table of field = \"header\"",
                "which header carries a field, where the ordinary words do not show it",
                DUSKGRID_AT(columns), to_text_map),
@@ -133,16 +146,19 @@ const std::vector<Field<UnderlyingFacts>>& underlying_fields() {
       field<U>("carry", "decimals a year",
                "continuous yield q of F = S exp((r - q) t), where parity is silent",
                DUSKGRID_AT(carry), to_number),
+      field<U>("borrow", "decimals a year",
+               "continuous yield on top of the dividends; of american expiries it decides the "
+               "forward, which is inferred without it, of others where parity is silent",
+               DUSKGRID_AT(borrow), to_number),
+      field<U>("dividends", "table of ex date = number >= 0",
+               "cash dividends, quote currency a share, beside those of dividend_files",
+               DUSKGRID_AT(dividends), to_number_map),
+      field<U>("proportional_dividends", "table of ex date = number in [0, 1)",
+               "dividends as shares of the spot", DUSKGRID_AT(proportional_dividends),
+               to_number_map),
       field<U>("forwards", "table of date or instant = number > 0",
                "forwards given outright, by expiry", DUSKGRID_AT(forwards), to_number_map),
-      {"exercise", "european or american", "exercise style, over what files say",
-       [](U& u, const toml::node& node) {
-         u.exercise = to_exercise(node);
-         return u.exercise.has_value();
-       },
-       [](const U& u) {
-         return u.exercise ? ordered_json(word(*u.exercise)) : ordered_json(nullptr);
-       }},
+      exercise_field<U>("exercise style, over what files say"),
   };
   return fields;
 }
@@ -335,6 +351,12 @@ std::optional<Failure> read_plain(const toml::node& node, const std::vector<Fiel
   return read_table(*node.as_table(), fields, target, place, [](auto) { return false; });
 }
 
+// A path of the configuration, which is relative to its folder.
+std::string beside(const std::string& folder, const std::string& file) {
+  if (folder.empty() || std::filesystem::path(file).is_absolute()) return file;
+  return (std::filesystem::path(folder) / file).string();
+}
+
 std::optional<Failure> read_sources(const toml::node& node, NightConfig& config,
                                     const std::string& where, const std::string& folder) {
   Place place{where, "source"};
@@ -343,10 +365,19 @@ std::optional<Failure> read_sources(const toml::node& node, NightConfig& config,
     SourceOptions source;
     if (auto failure = read_plain(item, source_fields(), source, place)) return failure;
     if (const auto problem = source.problem()) return place.failure(item, "source: " + *problem);
-    for (auto& file : source.files)
-      if (!folder.empty() && !std::filesystem::path(file).is_absolute())
-        file = (std::filesystem::path(folder) / file).string();
+    for (auto& file : source.files) file = beside(folder, file);
     config.sources.push_back(std::move(source));
+  }
+  return std::nullopt;
+}
+
+std::optional<std::string> dividends_problem(const std::map<std::string, double>& dividends,
+                                             DividendKind kind) {
+  for (const auto& [date, amount] : dividends) {
+    if (!quotes::parse_date_cell(date))
+      return fmt::format("dividends has '{}', must be a date such as 2031-05-02", date);
+    if (const auto problem = market::amount_problem(kind, amount))
+      return fmt::format("dividend of {}: {}", date, *problem);
   }
   return std::nullopt;
 }
@@ -355,6 +386,16 @@ std::optional<std::string> facts_problem(const UnderlyingFacts& facts) {
   if (facts.spot && !(*facts.spot > 0)) return fmt::format("spot = {}, must be > 0", *facts.spot);
   if (facts.carry && !(std::abs(*facts.carry) <= 1))
     return fmt::format("carry = {}, must be between -1 and 1 a year", *facts.carry);
+  if (facts.borrow && !(std::abs(*facts.borrow) <= 1))
+    return fmt::format("borrow = {}, must be between -1 and 1 a year", *facts.borrow);
+  if (facts.carry && facts.borrow)
+    return "carry and borrow are two ways to say one thing: carry is the whole yield, borrow what "
+           "comes on top of the dividends";
+  if (facts.carry && !(facts.dividends.empty() && facts.proportional_dividends.empty()))
+    return "carry is the whole yield, dividends included: state borrow beside dividends";
+  if (auto problem = dividends_problem(facts.dividends, DividendKind::cash)) return problem;
+  if (auto problem = dividends_problem(facts.proportional_dividends, DividendKind::proportional))
+    return problem;
   for (const auto& [expiry, forward] : facts.forwards) {
     if (!quotes::parse_date_cell(expiry))
       return fmt::format("forwards has '{}', must be a date or instant", expiry);
@@ -387,6 +428,7 @@ std::optional<Failure> read_night(const toml::table& table, NightConfig& config,
   };
   if (auto failure = read_table(table, night_fields(), config, Place{where, ""}, is_table, tables))
     return failure;
+  for (auto& file : config.dividend_files) file = beside(folder, file);
   if (const auto* node = table.get("source"))
     if (auto failure = read_sources(*node, config, where, folder)) return failure;
   if (const auto* node = table.get("underlying"))
@@ -432,6 +474,29 @@ std::optional<double> time_of_key(const std::string& key, const quotes::AsOf& as
   if (!cell) return std::nullopt;
   return market::year_fraction(as_of.instant,
                                quotes::resolve(*cell, as_of.clock, std::chrono::hours{16}));
+}
+
+// Of the files, then of the configuration.
+std::optional<Failure> gather_dividends(const NightConfig& config, ResolvedNight& night) {
+  for (const auto& path : config.dividend_files) {
+    auto file = market::read_dividends(path, night.as_of.clock);
+    if (!file) return file.failure();
+    night.dividend_rows.emplace_back(path, file->rows);
+    for (auto& [name, dated] : file->table) {
+      auto& all = night.dividends[name];
+      all.insert(all.end(), dated.begin(), dated.end());
+    }
+  }
+  for (const auto& [name, facts] : config.underlyings)
+    for (const auto kind : {DividendKind::cash, DividendKind::proportional}) {
+      const auto& stated =
+          kind == DividendKind::cash ? facts.dividends : facts.proportional_dividends;
+      for (const auto& [date, amount] : stated)
+        if (const auto cell = quotes::parse_date_cell(date))
+          night.dividends[name].push_back(
+              {market::ex_instant(*cell, night.as_of.clock), kind, amount});
+    }
+  return std::nullopt;
 }
 
 Result<std::optional<market::ZeroCurve>> curve_of(const NightConfig& config,
@@ -533,7 +598,10 @@ Result<ResolvedNight> resolve(const NightConfig& config) {
         "no as-of: say --as-of 2031-03-14T16:00:00-05:00, or as_of in the configuration"};
   auto as_of = quotes::parse_as_of(config.as_of_text, config.zone);
   if (!as_of) return as_of.failure();
-  ResolvedNight night{*as_of, {as_of->clock, std::chrono::hours{16}, {}}, {}};
+  ResolvedNight night;
+  night.as_of = *as_of;
+  night.times.clock = as_of->clock;
+  night.times.default_time = std::chrono::hours{16};
   // Common practice of morning and afternoon settlement, where nothing is stated.
   if (config.settlement_times.empty())
     night.times.settlement_times = {{"am", std::chrono::minutes{9 * 60 + 30}},
@@ -551,7 +619,15 @@ Result<ResolvedNight> resolve(const NightConfig& config) {
   auto curve = curve_of(config, *as_of);
   if (!curve) return curve.failure();
   night.curve = std::move(*curve);
+  if (auto failure = gather_dividends(config, night)) return *failure;
   return night;
+}
+
+std::vector<quotes::SourceOptions> sources_of(const NightConfig& config) {
+  auto sources = config.sources;
+  for (auto& source : sources)
+    if (!source.exercise) source.exercise = config.exercise;
+  return sources;
 }
 
 std::string config_to_json(const NightConfig& config) {

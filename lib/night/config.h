@@ -9,7 +9,9 @@
 #include <vector>
 
 #include "market/curve.h"
+#include "market/dividend_file.h"
 #include "market/parity.h"
+#include "pricing/american_batch.h"
 #include "pricing/selection.h"
 #include "publish/grid.h"
 #include "quotes/clean.h"
@@ -20,8 +22,11 @@ namespace duskgrid::night {
 
 // What a user states about one underlying.
 struct UnderlyingFacts {
-  std::optional<double> spot;                // quote currency
-  std::optional<double> carry;               // continuous yield, decimals a year
+  std::optional<double> spot;               // quote currency
+  std::optional<double> carry;              // continuous yield, decimals a year
+  std::optional<double> borrow;             // the same on top of the dividends
+  std::map<std::string, double> dividends;  // ex date as written, to quote currency a share
+  std::map<std::string, double> proportional_dividends;  // the same, to a share of the spot
   std::map<std::string, double> forwards;    // date or instant as written, to quote currency
   std::optional<quotes::Exercise> exercise;  // over what its file says by default
 };
@@ -40,7 +45,9 @@ struct NightConfig {
   std::map<std::string, double> rates;  // tenor or date, to continuous zero rate
   std::map<std::string, double> discount_factors;
   std::map<std::string, UnderlyingFacts> underlyings;
-  std::optional<double> spot;  // of underlyings that have none of their own
+  std::optional<double> spot;                // of underlyings that have none of their own
+  std::optional<quotes::Exercise> exercise;  // of sources that state none
+  std::vector<std::string> dividend_files;
   quotes::CleanOptions clean;
   market::ParityOptions parity;
   pricing::SelectionOptions selection;
@@ -55,6 +62,10 @@ struct ResolvedNight {
   quotes::AsOf as_of;
   quotes::TimeRules times;
   std::optional<market::ZeroCurve> curve;
+  // Of files and configuration together.
+  market::DividendTable dividends;
+  std::vector<std::pair<std::string, std::int64_t>> dividend_rows;  // by file
+  pricing::AmericanInverter american;                               // its tables, made once
 };
 
 // One line of the manual.
@@ -75,8 +86,12 @@ Result<NightConfig> parse_config(std::string_view toml_text, const std::string& 
 // The same from a file. Failure no_input when it cannot be read.
 Result<NightConfig> read_config(const std::string& path);
 
-// Failure: usage for a bad or missing as-of, configuration for a bad zone, time or rate.
+// Reads the dividend files. Failure: usage for a bad or missing as-of, configuration for a bad
+// zone, time or rate, and those of read_dividends().
 Result<ResolvedNight> resolve(const NightConfig& config);
+
+// The sources as they are read: what the night says stands where they are silent.
+std::vector<quotes::SourceOptions> sources_of(const NightConfig& config);
 
 // Every option with the value it has, as JSON text.
 std::string config_to_json(const NightConfig& config);

@@ -8,7 +8,7 @@
 #include "arbitrage/certificate.h"
 #include "arbitrage/quote_checks.h"
 #include "arbitrage/surface_checks.h"
-#include "market/day_count.h"
+#include "night/slice_market.h"
 #include "pricing/black.h"
 
 namespace duskgrid::night {
@@ -18,14 +18,6 @@ using quotes::PutCall;
 using quotes::Quote;
 using quotes::QuotedIn;
 using quotes::Reason;
-
-// An expiry that lies ahead, with what is known of it so far.
-struct OpenSlice {
-  const quotes::ChainSlice* rows;
-  double year_fraction;
-  bool american;
-  std::optional<market::ForwardEstimate> forward;
-};
 
 // Firm sides count toward arbitrage in the quotes whatever else is wrong with a quote, but for
 // crossed, stale, odd or misread ones. An outlier is where arbitrage shows first.
@@ -60,7 +52,7 @@ class Marker {
 
   MarkedUnderlying run() {
     flag_later_quotes();
-    open_slices();
+    state_exercise();
     find_forwards();
     select();
     fit();
@@ -86,92 +78,42 @@ class Marker {
     if (later > 0) flag(fmt::format("{} timed after the as-of", counted(later, "quote")));
   }
 
-  void open_slices() {
-    for (const auto& slice : chain_.slices) {
-      const Reason first = quote(slice.rows.front()).reason;
-      if (first == Reason::expired || first == Reason::too_short) continue;
-      bool american = false;
-      for (const auto row : slice.rows) {
-        if (facts_.exercise) quote(row).exercise = *facts_.exercise;
-        american = american || quote(row).exercise == quotes::Exercise::american;
-      }
-      slices_.push_back(
-          {&slice, market::year_fraction(night_.as_of.instant, slice.expiry), american, {}});
-    }
-  }
-
-  // Sound two-sided call and put of one strike, rows being by strike and call before put.
-  std::vector<market::ParityPair> pairs_of(const quotes::ChainSlice& slice) {
-    const auto sound = [](const Quote& q) {
-      return q.reason == Reason::none && q.quoted_in == QuotedIn::price;
-    };
-    // Rows that are not sound may stand between: pairs are made of those that are.
-    std::vector<const Quote*> rows;
-    for (const auto row : slice.rows)
-      if (sound(quote(row))) rows.push_back(&quote(row));
-    std::vector<market::ParityPair> pairs;
-    for (std::size_t i = 0; i + 1 < rows.size(); ++i) {
-      const Quote &call = *rows[i], &put = *rows[i + 1];
-      if (call.strike != put.strike || call.put_call == put.put_call) continue;
-      pairs.push_back({call.strike, call.bid - put.ask, call.ask - put.bid,
-                       quotes::mid(call) + quotes::mid(put)});
-    }
-    return pairs;
-  }
-
-  // A forward given for the very instant, or else for the local date of the expiry.
-  std::optional<double> given_forward(quotes::Instant expiry) const {
-    const auto date = quotes::format_date(night_.as_of.clock, expiry);
-    std::optional<double> of_date;
-    for (const auto& [key, forward] : facts_.forwards) {
-      const auto cell = quotes::parse_date_cell(key);
-      if (!cell) continue;
-      const auto instant = quotes::resolve(*cell, night_.as_of.clock, night_.times.default_time);
-      if (instant == expiry) return forward;
-      const bool dated = cell->date && !cell->time_of_day;
-      if (dated && quotes::format_date(night_.as_of.clock, instant) == date) of_date = forward;
-    }
-    return of_date;
-  }
-
-  // As stated, else the middle of what the rows say, else the night's.
-  std::optional<double> spot() {
-    if (facts_.spot) return facts_.spot;
-    std::vector<double> prices;
+  // What the configuration says of the underlying goes over what its file says.
+  void state_exercise() {
+    if (!facts_.exercise) return;
     for (const auto& slice : chain_.slices)
-      for (const auto row : slice.rows)
-        if (quote(row).underlying_price > 0) prices.push_back(quote(row).underlying_price);
-    if (prices.empty()) return config_.spot;
-    const auto middle = prices.begin() + static_cast<std::ptrdiff_t>(prices.size() / 2);
-    std::nth_element(prices.begin(), middle, prices.end());
-    return *middle;
+      for (const auto row : slice.rows) quote(row).exercise = *facts_.exercise;
   }
 
   void find_forwards() {
-    spot_ = spot();
-    std::vector<market::ExpiryPairs> pairs;
-    for (const auto& s : slices_)
-      pairs.push_back(
-          {s.year_fraction, pairs_of(*s.rows), given_forward(s.rows->expiry), s.american});
-    const auto found =
-        market::estimate_forwards(pairs, {spot_, facts_.carry, night_.curve}, config_.parity);
-    for (std::size_t i = 0; i < slices_.size(); ++i) {
-      slices_[i].forward = found[i];
-      if (found[i])
-        out_.forwards.push_back({slices_[i].rows->expiry, slices_[i].year_fraction, *found[i]});
+    auto market = find_market(table_, chain_, config_, night_);
+    spot_ = market.spot;
+    if (market.spot_origin == publish::Origin::inferred)
+      flag("american without a spot, taken from the first forward");
+    slices_ = std::move(market.slices);
+    for (const auto& s : slices_) {
+      if (s.forward) out_.forwards.push_back({s.rows->expiry, s.year_fraction, *s.forward});
+      out_.financing.push_back(s.financing);
     }
   }
 
   void select() {
     for (const auto& s : slices_) {
-      if (s.forward) {
-        pricing::select_quotes(table_, *s.rows,
-                               {s.year_fraction, s.forward->forward, s.forward->discount_factor},
-                               config_.selection);
+      if (!s.forward) {
+        for (const auto row : s.rows->rows)
+          if (quote(row).reason == Reason::none) quote(row).reason = Reason::no_forward;
         continue;
       }
-      for (const auto row : s.rows->rows)
-        if (quote(row).reason == Reason::none) quote(row).reason = Reason::no_forward;
+      std::vector<pricing::EquivalentQuote> equivalents;
+      if (s.exercise)
+        equivalents = pricing::european_equivalents(night_.american, *s.exercise, table_, *s.rows);
+      if (std::any_of(equivalents.begin(), equivalents.end(), [](const auto& e) {
+            return e.ask.status == pricing::AmericanVolStatus::two_boundaries;
+          }))
+        ++two_boundaries_;
+      pricing::select_quotes(table_, *s.rows,
+                             {s.year_fraction, s.forward->forward, s.forward->discount_factor},
+                             config_.selection, equivalents);
     }
   }
 
@@ -378,7 +320,14 @@ class Marker {
     });
     flag_expiries("call-put parity broken near the money",
                   [](const OpenSlice& s) { return s.forward && s.forward->breaks > 0; });
-    flag_expiries("american fitted as european", [](const OpenSlice& s) { return s.american; });
+    flag_expiries("american fitted as european", [](const OpenSlice& s) {
+      return s.forward && s.financing.exercise == publish::ExerciseTaken::american_as_european;
+    });
+    flag_expiries("forward not settled with early exercise",
+                  [](const OpenSlice& s) { return !s.settled; });
+    if (two_boundaries_ > 0)
+      flag(fmt::format("some taken as european, exercise between two boundaries: {} of {} expiries",
+                       two_boundaries_, slices_.size()));
     // Early exercise hides the rate in the quotes, so it has to be given.
     if (!night_.curve)
       flag_expiries("american without rates, discounted at the rate of the european expiries or 0",
@@ -394,6 +343,7 @@ class Marker {
   std::optional<double> spot_;
   std::vector<OpenSlice> slices_;
   std::vector<const OpenSlice*> fitted_;  // those in the surface, in its order
+  int two_boundaries_ = 0;                // expiries with quotes whose exercise is of that kind
   arbitrage::Certificate certificate_{false, {}, 0};
   MarkedUnderlying out_;
 };

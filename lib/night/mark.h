@@ -23,6 +23,7 @@ struct SliceQuality {
 struct MarkedUnderlying {
   publish::UnderlyingRecord record;
   std::vector<publish::ForwardRow> forwards;
+  std::vector<publish::FinancingRow> financing;  // of every expiry that lies ahead
   std::vector<SliceQuality> quality;
   std::vector<arbitrage::Violation> violations;
   std::optional<surface::Surface> surface;

@@ -68,12 +68,15 @@ class Stages {
 };
 
 Result<std::vector<publish::InputRecord>> record_inputs(
-    const std::vector<quotes::FileSummary>& files) {
+    const std::vector<quotes::FileSummary>& files, const ResolvedNight& night) {
+  std::vector<std::pair<std::string, std::int64_t>> read;
+  for (const auto& file : files) read.emplace_back(file.file, file.rows);
+  read.insert(read.end(), night.dividend_rows.begin(), night.dividend_rows.end());
   std::vector<publish::InputRecord> inputs;
-  for (const auto& file : files) {
-    auto digest = publish::digest_file(file.file);
+  for (const auto& [file, rows] : read) {
+    auto digest = publish::digest_file(file);
     if (!digest) return digest.failure();
-    inputs.push_back({file.file, digest->sha256, digest->bytes, file.rows});
+    inputs.push_back({file, digest->sha256, digest->bytes, rows});
   }
   return inputs;
 }
@@ -126,6 +129,13 @@ Result<bool> write_tables(RunFolder& folder, const quotes::QuoteTable& table,
       for (const auto& m : marked)
         for (const auto& row : m.forwards)
           file.write(publish::forwards_line(row, m.record.name, clock));
+    });
+  if (written)
+    written = folder.add("financing.csv", [&](RunFile& file) {
+      file.write(publish::kFinancingHeader);
+      for (const auto& m : marked)
+        for (const auto& row : m.financing)
+          file.write(publish::financing_line(row, m.record.name, clock));
     });
   if (written)
     written = folder.add("violations.csv", [&](RunFile& file) {
@@ -186,10 +196,10 @@ Result<NightOutcome> run_night(const NightConfig& config, const RunOptions& opti
   Stages stages(options.progress);
 
   stages.begin("read");
-  auto loaded = quotes::load_quotes(config.sources, night->times);
+  auto loaded = quotes::load_quotes(sources_of(config), night->times);
   if (!loaded) return loaded.failure();
   auto& table = loaded->table;
-  auto inputs = record_inputs(loaded->files);
+  auto inputs = record_inputs(loaded->files, *night);
   if (!inputs) return inputs.failure();
   stages.begin("clean");
   quotes::clean_quotes(table, night->as_of.instant, config.clean);

@@ -19,17 +19,13 @@
 
 #include <span>
 
+#include "market/dividends.h"
 #include "pricing/american.h"
 
 namespace duskgrid::pricing {
 
-enum class DividendKind { cash, proportional };
-
-struct Dividend {
-  double time;  // of going ex, years from now; outside (0, year_fraction) without effect
-  DividendKind kind;
-  double amount;  // quote currency a share, or a share of the spot in [0, 1); >= 0
-};
+using market::Dividend;
+using market::DividendKind;
 
 // What happens when the spot is less than a cash dividend. The words are those of E. G. Haug, J.
 // Haug, A. Lewis, Wilmott (Sep. 2003) 37-51 (from memory).

@@ -54,20 +54,39 @@ class PendingVols {
   std::vector<bool> bids_;
 };
 
-void fill_vols(Quote& q, PendingVols& pending) {
-  const bool in_vol = q.quoted_in == QuotedIn::vol;
-  const auto fill = [&](double quoted, double& vol) {
-    if (in_vol)
-      vol = quoted;
-    else
-      pending.add(q, quoted, vol);
+// A side whose early exercise is accounted for; else it is taken as European.
+bool exercised(const EquivalentSide* side) {
+  return side != nullptr && side->status != AmericanVolStatus::not_finite &&
+         side->status != AmericanVolStatus::two_boundaries;
+}
+
+// The volatility of one side of a quote, or of its mid: `quoted` where it is one, or waiting to be
+// found from its price. A bid not above what exercise pays has 0, a mid or an ask there has none.
+void fill_vol(const Quote& q, double quoted, const EquivalentSide* side, double& vol,
+              PendingVols& pending) {
+  if (q.quoted_in == QuotedIn::vol)
+    vol = quoted;
+  else if (!exercised(side))
+    pending.add(q, quoted, vol);
+  else if (side->status == AmericanVolStatus::ok && std::isfinite(side->vol))
+    vol = side->vol;
+  else if (side->status == AmericanVolStatus::ok)
+    pending.add(q, side->price, vol);
+  else if (side->status != AmericanVolStatus::above_bound && &vol == &q.vol_bid)
+    vol = 0;
+}
+
+void fill_vols(Quote& q, const EquivalentQuote* equivalent, PendingVols& pending) {
+  const auto side = [&](EquivalentSide EquivalentQuote::*which) {
+    return equivalent == nullptr ? nullptr : &(equivalent->*which);
   };
   if (firm(q.bid))
-    fill(q.bid, q.vol_bid);
+    fill_vol(q, q.bid, side(&EquivalentQuote::bid), q.vol_bid, pending);
   else if (std::isfinite(q.bid))
     q.vol_bid = 0;
-  if (firm(q.ask)) fill(q.ask, q.vol_ask);
-  if (firm(q.bid) && firm(q.ask)) fill(quotes::mid(q), q.vol_mid);
+  if (firm(q.ask)) fill_vol(q, q.ask, side(&EquivalentQuote::ask), q.vol_ask, pending);
+  if (firm(q.bid) && firm(q.ask))
+    fill_vol(q, quotes::mid(q), side(&EquivalentQuote::mid), q.vol_mid, pending);
 }
 
 void judge_bounds(Quote& q, const SliceMarket& m) {
@@ -78,6 +97,17 @@ void judge_bounds(Quote& q, const SliceMarket& m) {
     q.reason = Reason::above_bound;
   else if (q.ask <= discounted_intrinsic(terms))
     q.reason = Reason::below_intrinsic;
+}
+
+void judge_exercise(Quote& q, const EquivalentQuote& equivalent) {
+  if (q.reason != Reason::none) return;
+  const auto bid = equivalent.bid.status, mid = equivalent.mid.status, ask = equivalent.ask.status;
+  if (bid == AmericanVolStatus::above_bound || ask == AmericanVolStatus::above_bound)
+    q.reason = Reason::above_bound;
+  else if (ask == AmericanVolStatus::below_intrinsic)
+    q.reason = Reason::below_intrinsic;
+  else if (mid != AmericanVolStatus::ok || ask != AmericanVolStatus::ok)
+    q.reason = Reason::immediate_exercise;
 }
 
 bool out_of_the_money(const Quote& q, double forward) {
@@ -221,11 +251,23 @@ std::optional<std::string> SelectionOptions::problem() const {
 }
 
 void select_quotes(quotes::QuoteTable& table, const quotes::ChainSlice& slice,
-                   const SliceMarket& market, const SelectionOptions& options) {
+                   const SliceMarket& market, const SelectionOptions& options,
+                   std::span<const EquivalentQuote> equivalents) {
+  const auto equivalent_of = [&](std::size_t i) {
+    return equivalents.empty() ? nullptr : &equivalents[i];
+  };
   PendingVols pending;
-  for (const auto row : slice.rows) fill_vols(table.quotes[row], pending);
+  for (std::size_t i = 0; i < slice.rows.size(); ++i)
+    fill_vols(table.quotes[slice.rows[i]], equivalent_of(i), pending);
   pending.invert(market);
-  for (const auto row : slice.rows) judge_bounds(table.quotes[row], market);
+  for (std::size_t i = 0; i < slice.rows.size(); ++i) {
+    Quote& q = table.quotes[slice.rows[i]];
+    const auto* equivalent = equivalent_of(i);
+    if (equivalent != nullptr && exercised(&equivalent->ask))
+      judge_exercise(q, *equivalent);
+    else
+      judge_bounds(q, market);
+  }
   SliceSelection selection(table, slice, market);
   selection.choose_sides();
   selection.judge_far_wings(options.far_deviations);

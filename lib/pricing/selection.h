@@ -6,6 +6,7 @@
 #include <span>
 #include <string>
 
+#include "pricing/american_slice.h"
 #include "quotes/chain.h"
 #include "quotes/quote.h"
 
@@ -30,11 +31,14 @@ struct SliceMarket {
 
 // Fills vol_bid, vol_mid and vol_ask of every sound quote of the slice (and of the firm sides
 // of one-sided and wide ones) and sets `reason`, first rule that applies, on those still
-// without one: above-bound, below-intrinsic, in-the-money, far-wing, outlier, thinned.
+// without one: above-bound, below-intrinsic, immediate-exercise, in-the-money, far-wing, outlier,
+// thinned. American quotes are judged by `equivalents`, one a row of the slice; without them, and
+// where the status is two_boundaries, they are taken as European.
 // What is left is used: at each strike the out-of-the-money side, or the other where
 // that one is not sound and this one's bid is above intrinsic. A quote in vol gets its prices' vols
 // as quoted.
 void select_quotes(quotes::QuoteTable& table, const quotes::ChainSlice& slice,
-                   const SliceMarket& market, const SelectionOptions& options);
+                   const SliceMarket& market, const SelectionOptions& options,
+                   std::span<const EquivalentQuote> equivalents = {});
 
 }  // namespace duskgrid::pricing

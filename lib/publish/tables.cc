@@ -2,6 +2,8 @@
 
 #include <fmt/format.h>
 
+#include <array>
+
 #include "publish/text.h"
 
 namespace duskgrid::publish {
@@ -108,6 +110,34 @@ std::string forwards_line(const ForwardRow& row, std::string_view underlying,
       .count(e.pairs)
       .count(e.breaks)
       .raw(word(e.source))
+      .end();
+}
+
+std::string_view word(Origin origin) {
+  constexpr std::array<std::string_view, 6> kWords{"",         "given", "rows",
+                                                   "inferred", "near",  "assumed"};
+  return kWords[static_cast<std::size_t>(origin)];
+}
+
+std::string_view word(ExerciseTaken taken) {
+  constexpr std::array<std::string_view, 3> kWords{"european", "american", "american-as-european"};
+  return kWords[static_cast<std::size_t>(taken)];
+}
+
+std::string financing_line(const FinancingRow& row, std::string_view underlying,
+                           const quotes::Clock& clock) {
+  return Line()
+      .text(underlying)
+      .raw(quotes::format_instant(clock, row.expiry))
+      .raw(word(row.exercise))
+      .number(row.spot)
+      .raw(word(row.spot_origin))
+      .number(row.zero_rate)
+      .raw(word(row.rate_origin))
+      .count(static_cast<std::int64_t>(row.dividends))
+      .number(row.dividend_effect)
+      .number(row.borrow)
+      .raw(word(row.borrow_origin))
       .end();
 }
 

@@ -331,7 +331,7 @@ Note ContractReader::read_expiry(Quote& quote) {
 }
 
 Note ContractReader::read_exercise(Quote& quote) const {
-  quote.exercise = options_.exercise;
+  quote.exercise = options_.exercise.value_or(Exercise::european);
   const std::string_view word = cell(Field::exercise);
   if (word.empty()) return Note::none;
   const std::optional<Exercise> read = parse_exercise(word);

@@ -13,6 +13,8 @@ constexpr std::array<ReasonEntry, kReasonCount> kReasons{{
      "sound, but further from the money than the configured number of deviations"},
     {Reason::thinned, State::spare, "thinned",
      "sound, but the slice already has the configured number of quotes"},
+    {Reason::immediate_exercise, State::spare, "immediate-exercise",
+     "american, and its mid is no more than exercise now pays: no one volatility follows from it"},
     {Reason::unreadable, State::dropped, "unreadable",
      "the row, or a cell the contract needs, cannot be read"},
     {Reason::expired, State::dropped, "expired", "expires at or before the as-of instant"},

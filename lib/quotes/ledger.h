@@ -16,7 +16,8 @@ enum class Reason : std::uint8_t {
   none,  // of used quotes only
   in_the_money,
   far_wing,
-  thinned,  // spare
+  thinned,
+  immediate_exercise,  // spare
   unreadable,
   expired,
   too_short,
@@ -32,7 +33,7 @@ enum class Reason : std::uint8_t {
   outlier,
   no_forward,
 };
-inline constexpr std::size_t kReasonCount = 18;
+inline constexpr std::size_t kReasonCount = 19;
 
 struct ReasonEntry {
   Reason reason;

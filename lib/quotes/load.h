@@ -36,7 +36,7 @@ struct SourceOptions {
   // one stated, else a file with only a price is refused.
   double half_spread_absolute = kAbsent;   // quote currency
   double half_spread_relative = kAbsent;   // fraction of the price
-  Exercise exercise = Exercise::european;  // where no column says
+  std::optional<Exercise> exercise;  // where no column says; european without it
   std::optional<std::string> problem() const;
 };
 

@@ -39,7 +39,8 @@ TEST(Reasons, WordsAreTheClosedListOfTheManual) {
   const std::set<std::string_view> kExpected{
       "",          "in-the-money", "far-wing",        "thinned",     "unreadable", "expired",
       "too-short", "no-bid",       "no-ask",          "crossed",     "wide",       "duplicate",
-      "stale",     "non-standard", "below-intrinsic", "above-bound", "outlier",    "no-forward"};
+      "stale",     "non-standard", "below-intrinsic", "above-bound", "outlier",    "no-forward",
+      "immediate-exercise"};
   std::set<std::string_view> words;
   for (const ReasonEntry& entry : reasons()) words.insert(word(entry.reason));
   EXPECT_EQ(words, kExpected);
@@ -50,6 +51,7 @@ TEST(StateOf, SpareReasonsAreThoseOfSoundQuotes) {
   EXPECT_EQ(state_of(Reason::in_the_money), State::spare);
   EXPECT_EQ(state_of(Reason::far_wing), State::spare);
   EXPECT_EQ(state_of(Reason::thinned), State::spare);
+  EXPECT_EQ(state_of(Reason::immediate_exercise), State::spare);
   const auto dropped = std::count_if(reasons().begin(), reasons().end(), [](const auto& entry) {
     return state_of(entry.reason) == State::dropped;
   });

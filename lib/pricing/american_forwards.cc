@@ -1,0 +1,105 @@
+#include "pricing/american_forwards.h"
+
+#include <cmath>
+#include <limits>
+
+namespace duskgrid::pricing {
+namespace {
+
+using market::ParityPair;
+
+// One step of the iteration: the forward that parity of the European equivalents gives, with the
+// premiums at another.
+class ForwardMap {
+ public:
+  ForwardMap(const AmericanInverter& inverter, const ExerciseTerms& terms,
+             std::span<const ExercisePair> near, const market::ForwardEstimate& start)
+      : inverter_(inverter), terms_(terms), near_(near), estimate_(start) {}
+
+  // Nothing where no borrow gives the forward, or no pair has volatilities.
+  std::optional<double> operator()(double forward) {
+    ++rounds_;
+    const auto borrow = market::borrow_of(forward, terms_.financing, terms_.dividends);
+    if (!borrow) return std::nullopt;
+    terms_.financing.borrow = *borrow;
+    const auto pairs = european_pairs(inverter_, terms_, near_);
+    if (pairs.empty()) return std::nullopt;
+    market::place_forward(pairs, estimate_);
+    return estimate_.forward > 0 ? std::optional(estimate_.forward) : std::nullopt;
+  }
+  const market::ForwardEstimate& estimate() const { return estimate_; }
+  double borrow() const { return terms_.financing.borrow; }
+  int rounds() const { return rounds_; }
+
+ private:
+  const AmericanInverter& inverter_;
+  ExerciseTerms terms_;
+  std::span<const ExercisePair> near_;
+  market::ForwardEstimate estimate_;
+  int rounds_ = 0;
+};
+
+}  // namespace
+
+std::vector<ParityPair> european_pairs(const AmericanInverter& inverter, const ExerciseTerms& terms,
+                                       std::span<const ExercisePair> near) {
+  using quotes::PutCall;
+  std::vector<double> strikes, prices;
+  std::vector<PutCall> sides;
+  for (const ExercisePair& p : near)
+    for (const PutCall side : {PutCall::call, PutCall::put}) {
+      strikes.push_back(p.quoted.strike);
+      sides.push_back(side);
+      prices.push_back(side == PutCall::call ? p.call_mid : p.put_mid);
+    }
+  std::vector<double> vols(prices.size()), europeans(prices.size());
+  std::vector<AmericanVolStatus> statuses(prices.size());
+  invert_american(inverter, terms, {strikes, sides, prices}, {vols, europeans, statuses});
+  std::vector<ParityPair> out;
+  for (std::size_t i = 0; i < near.size(); ++i) {
+    const auto premium = [&](std::size_t at, bool american) -> std::optional<double> {
+      if (!american) return 0.0;
+      if (statuses[at] != AmericanVolStatus::ok) return std::nullopt;
+      return prices[at] - europeans[at];
+    };
+    const auto call = premium(2 * i, near[i].call_american);
+    const auto put = premium(2 * i + 1, near[i].put_american);
+    if (!call || !put) continue;
+    ParityPair pair = near[i].quoted;
+    pair.low -= *call - *put;
+    pair.high -= *call - *put;
+    out.push_back(pair);
+  }
+  return out;
+}
+
+AmericanForward settle_forward(const AmericanInverter& inverter, const ExerciseTerms& terms,
+                               std::span<const ExercisePair> near,
+                               market::ForwardEstimate& estimate) {
+  constexpr int kMostRounds = 30;
+  ForwardMap map(inverter, terms, near, estimate);
+  double at = estimate.forward;
+  std::optional<double> before, missed_before;
+  while (map.rounds() < kMostRounds) {
+    const auto mapped = map(at);
+    if (!mapped) break;
+    const double miss = *mapped - at;
+    if (std::abs(miss) <= kForwardTolerance * at) {
+      // The premiums are those at `at`, the forward is what parity makes of them.
+      estimate = map.estimate();
+      return {true, map.rounds(), map.borrow()};
+    }
+    double next = *mapped;
+    if (before && miss != *missed_before) {
+      const double secant = at - miss * (at - *before) / (miss - *missed_before);
+      // A map with kinks may send the secant anywhere: no further than ten plain steps.
+      if (std::abs(secant - at) <= 10 * std::abs(miss)) next = secant;
+    }
+    before = at;
+    missed_before = miss;
+    at = next;
+  }
+  return {false, map.rounds(), 0};
+}
+
+}  // namespace duskgrid::pricing
