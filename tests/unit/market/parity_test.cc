@@ -148,7 +148,7 @@ TEST(EstimateForwards, ExpiryWithoutPairsUsesSpotAndTheNearestCarry) {
   ASSERT_TRUE(e[0] && e[1]);
   EXPECT_EQ(e[1]->source, ForwardSource::curve);
   EXPECT_EQ(e[1]->pairs, 0);
-  EXPECT_DOUBLE_EQ(*e[1]->carry, *e[0]->carry);
+  EXPECT_NEAR(*e[1]->carry, *e[0]->carry, kRounding);
   EXPECT_NEAR(e[1]->forward, 3980 * std::exp((e[1]->zero_rate - *e[1]->carry) * 0.5),
               3980 * kRounding);
   EXPECT_TRUE(std::isnan(e[1]->lowest_forward));

@@ -50,6 +50,8 @@ const std::vector<Stated>& stated() {
       {"", "spot", "101.5", "101.5"},
       {"", "rates", "{3M = 0.03, 2031-12-31 = 0.04}", R"({"3M":0.03,"2031-12-31":0.04})"},
       {"", "discount_factors", "{1Y = 0.97}", R"({"1Y":0.97})"},
+      {"", "exercise", "'american'", "\"american\""},
+      {"", "dividend_files", "['/d.csv']", R"(["/d.csv"])"},
       {"source", "files", "['/a.csv', '/b*.csv']", R"(["/a.csv","/b*.csv"])"},
       {"source", "layout", "'call-put-per-row'", "\"call-put-per-row\""},
       {"source", "delimiter", "';'", "\";\""},
@@ -69,6 +71,10 @@ const std::vector<Stated>& stated() {
       {"underlying.NAME", "carry", "-0.01", "-0.01"},
       {"underlying.NAME", "forwards", "{2031-06-20 = 100.5}", R"({"2031-06-20":100.5})"},
       {"underlying.NAME", "exercise", "'european'", "\"european\""},
+      {"underlying.OTHER", "borrow", "0.02", "0.02"},
+      {"underlying.OTHER", "dividends", "{2031-05-02 = 0.42}", R"({"2031-05-02":0.42})"},
+      {"underlying.OTHER", "proportional_dividends", "{2031-05-02 = 0.01}",
+       R"({"2031-05-02":0.01})"},
       {"clean", "shortest_hours", "2.5", "2.5"},
       {"clean", "widest", "0.75", "0.75"},
       {"clean", "stale_hours", "0", "0.0"},
@@ -111,7 +117,14 @@ std::string toml_of(const std::vector<Stated>& all) {
 json in_table(const json& config, const std::string& table) {
   if (table.empty()) return config;
   if (table == "source") return config["source"][0];
-  return table == "underlying.NAME" ? config["underlying"]["NAME"] : config[table];
+  constexpr std::string_view kUnderlying = "underlying.";
+  if (table.starts_with(kUnderlying)) return config["underlying"][table.substr(kUnderlying.size())];
+  return config[table];
+}
+
+// Some options of an underlying exclude one another: those have one of their own.
+std::string in_manual(const std::string& table) {
+  return table == "underlying.OTHER" ? "underlying.NAME" : table;
 }
 
 TEST(ConfigOptions, EveryOptionIsReadAndShownInTheResolvedCopy) {
@@ -124,8 +137,9 @@ TEST(ConfigOptions, EveryOptionIsOneOfThoseTriedHere) {
   const auto all = options();
   EXPECT_EQ(all.size(), stated().size());
   for (const auto& o : all)
-    EXPECT_TRUE(std::any_of(stated().begin(), stated().end(),
-                            [&](const Stated& s) { return s.table == o.table && s.key == o.key; }))
+    EXPECT_TRUE(std::any_of(
+        stated().begin(), stated().end(),
+        [&](const Stated& s) { return in_manual(s.table) == o.table && s.key == o.key; }))
         << o.table << " " << o.key;
 }
 
@@ -135,11 +149,57 @@ TEST(ConfigOptions, EveryOptionHasARangeAMeaningAndADefaultThatIsNotTheValueTrie
     EXPECT_FALSE(o.range.empty()) << o.key;
     EXPECT_FALSE(o.meaning.empty()) << o.key;
     const auto tried = std::find_if(stated().begin(), stated().end(), [&](const Stated& s) {
-      return s.table == o.table && s.key == o.key;
+      return in_manual(s.table) == o.table && s.key == o.key;
     });
     ASSERT_NE(tried, stated().end());
     EXPECT_NE(json::parse(o.fallback), json::parse(tried->json)) << o.table << " " << o.key;
   }
+}
+
+TEST(ConfigOptions, YieldsAndDividendsThatContradictOneAnotherAreRefused) {
+  const std::pair<const char*, const char*> kWrong[] = {
+      {"carry = 0.01\nborrow = 0.01", "two ways to say one thing"},
+      {"carry = 0.01\ndividends = {2031-05-02 = 0.4}", "state borrow beside dividends"},
+      {"borrow = 2", "borrow = 2"},
+      {"dividends = {soon = 0.4}", "dividends has 'soon'"},
+      {"dividends = {2031-05-02 = -0.4}", "must be >= 0"},
+      {"proportional_dividends = {2031-05-02 = 1.5}", "below 1"},
+  };
+  for (const auto& [toml, told] : kWrong) {
+    const auto config = parse_config(std::string("[underlying.HALYRD]\n") + toml, "night.toml", "");
+    ASSERT_FALSE(config.ok()) << toml;
+    EXPECT_EQ(config.failure().fault, Fault::configuration);
+    EXPECT_NE(config.failure().text().find(told), std::string::npos) << config.failure().text();
+  }
+}
+
+TEST(Resolve, DividendsOfFilesAndOfTheConfigurationAreTakenTogether) {
+  const std::string path = testing::TempDir() + "config_test_dividends.csv";
+  std::ofstream(path) << "underlying,ex_date,amount\nHALYRD,2031-08-01,0.44\nSALTPN,2031-08-01,1\n";
+  auto config = parse_config("as_of = '2031-03-14'\ndividend_files = ['" + path +
+                                 "']\n[underlying.HALYRD]\ndividends = {2031-05-02 = 0.42}\n"
+                                 "proportional_dividends = {2031-11-03 = 0.01}\n",
+                             "night.toml", "");
+  ASSERT_TRUE(config.ok()) << config.failure().text();
+  const auto night = resolve(*config);
+  ASSERT_TRUE(night.ok()) << night.failure().text();
+  EXPECT_EQ(night->dividends.at("HALYRD").size(), 3u);
+  EXPECT_EQ(night->dividends.at("SALTPN").size(), 1u);
+  ASSERT_EQ(night->dividend_rows.size(), 1u);
+  EXPECT_EQ(night->dividend_rows[0].second, 2);
+  std::filesystem::remove(path);
+  EXPECT_FALSE(resolve(*config).ok());
+}
+
+TEST(SourcesOf, NightsExerciseStandsWhereASourceIsSilent) {
+  auto config = parse_config(
+      "exercise = 'american'\n[[source]]\nfiles = ['a.csv']\n"
+      "[[source]]\nfiles = ['b.csv']\nexercise = 'european'\n",
+      "night.toml", "");
+  ASSERT_TRUE(config.ok()) << config.failure().text();
+  const auto sources = sources_of(*config);
+  EXPECT_EQ(sources[0].exercise, quotes::Exercise::american);
+  EXPECT_EQ(sources[1].exercise, quotes::Exercise::european);
 }
 
 TEST(ConfigOptions, DateOfTomlsOwnIsTakenAsItsText) {

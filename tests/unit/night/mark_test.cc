@@ -9,6 +9,7 @@
 
 #include "arbitrage/certificate.h"
 #include "market/day_count.h"
+#include "pricing/american.h"
 #include "pricing/black.h"
 
 namespace duskgrid::night {
@@ -253,14 +254,124 @@ TEST(MarkUnderlying, ExpiryWithoutAForwardIsFlaggedAndItsQuotesLeftOut) {
     EXPECT_EQ(q.reason == Reason::no_forward, q.expiry == in_days(180));
 }
 
-TEST(MarkUnderlying, AmericanQuotesAreFlagged) {
-  Night night(kRates);
-  night.add_flat(60);
-  for (Quote& q : night.table.quotes) q.exercise = quotes::Exercise::american;
+// An American chain of tonight by the reference engine, flat in volatility, half a cent to each
+// side of a price: puts and calls from 75 to 130.
+struct AmericanNight : Night {
+  static constexpr double kBorrow = 0.045, kHalf = 0.005;
+  explicit AmericanNight(const std::string& toml = "") : Night(toml) {}
+
+  void add_american(int days, double borrow = kBorrow) {
+    const pricing::AmericanEngine engine;
+    for (double strike = 75; strike <= 130; strike += 5)
+      for (const PutCall side : {PutCall::call, PutCall::put}) {
+        const auto price =
+            engine.price({side, kSpot, strike, kRate, borrow, years(days)}, kVol).price;
+        Quote& q = add(in_days(days), side, strike, price - kHalf, price + kHalf);
+        q.exercise = quotes::Exercise::american;
+        q.underlying_price = kSpot;
+      }
+  }
+};
+
+TEST(MarkUnderlying, AmericanChainGivesItsVolatilityAndItsBorrow) {
+  AmericanNight night(kRates);
+  for (const int days : {60, 180, 400}) night.add_american(days);
   const auto marked = night.mark();
-  EXPECT_EQ(marked.record.status, publish::Status::flagged);
-  EXPECT_TRUE(holds(marked.record.message, "american")) << marked.record.message;
-  EXPECT_TRUE(marked.surface);
+  EXPECT_EQ(marked.record.status, publish::Status::published) << marked.record.message;
+  EXPECT_EQ(marked.record.message, "");
+  ASSERT_EQ(marked.financing.size(), 3U);
+  for (std::size_t i = 0; i < 3; ++i) {
+    const auto& row = marked.financing[i];
+    const double t = marked.forwards[i].year_fraction;
+    EXPECT_EQ(row.exercise, publish::ExerciseTaken::american);
+    EXPECT_EQ(row.spot_origin, publish::Origin::rows);
+    EXPECT_EQ(row.rate_origin, publish::Origin::given);
+    EXPECT_EQ(row.borrow_origin, publish::Origin::inferred);
+    // The mids are exact: what is left is the 1e-6 of spot promised of an inversion.
+    EXPECT_NEAR(marked.forwards[i].estimate.forward,
+                kSpot * std::exp((kRate - AmericanNight::kBorrow) * t), 4e-6 * kSpot);
+    EXPECT_NEAR(row.borrow, AmericanNight::kBorrow, 4e-6 / t);
+    EXPECT_NEAR(row.borrow, *marked.forwards[i].estimate.carry, 1e-12);
+  }
+  // In the money a cent of spread is much in volatility: the fitted side is the other.
+  for (const Quote& q : night.table.quotes) {
+    if (q.reason != Reason::none) continue;
+    EXPECT_LT(q.vol_bid, kVol);
+    EXPECT_GT(q.vol_ask, kVol);
+    EXPECT_EQ(q.miss, 0) << q.strike;
+    EXPECT_NEAR(q.vol_fit, kVol, 2e-4) << q.strike;
+  }
+}
+
+TEST(MarkUnderlying, QuotedPricesOfAmericanChainsStayInTheLedger) {
+  AmericanNight night(kRates);
+  night.add_american(180);
+  const auto before = night.table.quotes;
+  night.mark();
+  for (std::size_t i = 0; i < before.size(); ++i) {
+    EXPECT_EQ(night.table.quotes[i].bid, before[i].bid);
+    EXPECT_EQ(night.table.quotes[i].ask, before[i].ask);
+  }
+}
+
+TEST(MarkUnderlying, AmericanChainWithoutASpotTakesItFromTheFirstForward) {
+  AmericanNight night(kRates);
+  night.add_american(30, 0);
+  night.add_american(180, 0);
+  for (Quote& q : night.table.quotes) q.underlying_price = quotes::kAbsent;
+  const auto marked = night.mark();
+  EXPECT_TRUE(holds(marked.record.message, "american without a spot")) << marked.record.message;
+  ASSERT_EQ(marked.financing.size(), 2U);
+  EXPECT_EQ(marked.financing[0].spot_origin, publish::Origin::inferred);
+  // Parity of the quoted prices, whose puts hold premiums of a few cents.
+  EXPECT_NEAR(marked.financing[0].spot, kSpot, 0.05);
+}
+
+TEST(MarkUnderlying, StatedBorrowDecidesTheForwardOfAnAmericanExpiry) {
+  AmericanNight night(std::string(kRates) + "[underlying.HALYRD]\nborrow = 0.05\n");
+  night.add_american(180);
+  const auto marked = night.mark();
+  ASSERT_EQ(marked.forwards.size(), 1U);
+  EXPECT_EQ(marked.forwards[0].estimate.source, market::ForwardSource::curve);
+  EXPECT_EQ(marked.financing[0].borrow_origin, publish::Origin::given);
+  EXPECT_NEAR(marked.forwards[0].estimate.forward, kSpot * std::exp((kRate - 0.05) * years(180)),
+              kForwardRounding);
+  // Half a per cent of borrow is 24 cents of forward, the spreads are a cent: parity is broken.
+  EXPECT_TRUE(holds(marked.record.message, "parity broken")) << marked.record.message;
+}
+
+TEST(MarkUnderlying, MixedExercisesOfOneNightAreEachTakenAsTheyAre) {
+  AmericanNight night(kRates);
+  night.add_american(180, 0);
+  night.add_flat(60);
+  const auto marked = night.mark();
+  EXPECT_EQ(marked.record.status, publish::Status::published) << marked.record.message;
+  ASSERT_EQ(marked.financing.size(), 2U);
+  EXPECT_EQ(marked.financing[0].exercise, publish::ExerciseTaken::european);
+  EXPECT_EQ(marked.financing[1].exercise, publish::ExerciseTaken::american);
+}
+
+TEST(MarkUnderlying, QuoteWorthWhatExerciseNowPaysHasAReasonAndNoVolatility) {
+  AmericanNight night(kRates);
+  night.add_american(180, 0);
+  for (const double strike : {150.0, 160.0})
+    for (const PutCall side : {PutCall::call, PutCall::put}) {
+      const double worth = side == PutCall::put ? strike - kSpot : 0.01;
+      Quote& q = night.add(in_days(180), side, strike, worth - 0.005, worth + 0.005);
+      q.exercise = quotes::Exercise::american;
+      q.underlying_price = kSpot;
+    }
+  night.mark();
+  int met = 0;
+  for (const Quote& q : night.table.quotes) {
+    if (q.put_call != PutCall::put || q.strike < 150) continue;
+    ++met;
+    EXPECT_EQ(q.reason, Reason::immediate_exercise);
+    EXPECT_EQ(quotes::state_of(q.reason), quotes::State::spare);
+    EXPECT_EQ(q.vol_bid, 0);
+    EXPECT_TRUE(std::isnan(q.vol_mid));
+  }
+  EXPECT_EQ(met, 2);
 }
 
 TEST(MarkUnderlying, StatedExerciseWinsOverTheRows) {

@@ -171,6 +171,22 @@ TEST(ForwardsLine, CarryWithoutASpotIsEmpty) {
   EXPECT_EQ(cell(kForwardsHeader, line, "carry"), "");
 }
 
+TEST(FinancingLine, EveryColumnHasItsCell) {
+  const FinancingRow row{kExpiry, ExerciseTaken::american, 101, Origin::rows,
+                         0.04,    Origin::given,           2,   -0.85,
+                         0.012,   Origin::inferred};
+  EXPECT_EQ(
+      financing_line(row, "HALYRD", kClock),
+      "HALYRD,2031-06-20T16:00:00-05:00,american,101,rows,0.04,given,2,-0.85,0.012,inferred\n");
+  EXPECT_EQ(cells_of(financing_line(row, "HALYRD", kClock)).size(),
+            cells_of(kFinancingHeader).size());
+}
+
+TEST(FinancingLine, WhatIsNotKnownIsEmpty) {
+  const auto line = financing_line({kExpiry, ExerciseTaken::american_as_european}, "=1+1", kClock);
+  EXPECT_EQ(line, "'=1+1,2031-06-20T16:00:00-05:00,american-as-european,,,,,0,,,\n");
+}
+
 arbitrage::Violation made_violation(std::vector<double> strikes) {
   return {arbitrage::Scope::quotes,
           arbitrage::Kind::vertical,
