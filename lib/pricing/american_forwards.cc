@@ -1,5 +1,6 @@
 #include "pricing/american_forwards.h"
 
+#include <algorithm>
 #include <cmath>
 #include <limits>
 
@@ -14,7 +15,7 @@ class ForwardMap {
  public:
   ForwardMap(const AmericanInverter& inverter, const ExerciseTerms& terms,
              std::span<const ExercisePair> near, const market::ForwardEstimate& start)
-      : inverter_(inverter), terms_(terms), near_(near), estimate_(start) {}
+      : inverter_(inverter), terms_(terms), near_(near.begin(), near.end()), estimate_(start) {}
 
   // Nothing where no borrow gives the forward, or no pair has volatilities.
   std::optional<double> operator()(double forward) {
@@ -24,6 +25,7 @@ class ForwardMap {
     terms_.financing.borrow = *borrow;
     const auto pairs = european_pairs(inverter_, terms_, near_);
     if (pairs.empty()) return std::nullopt;
+    keep(pairs);
     market::place_forward(pairs, estimate_);
     return estimate_.forward > 0 ? std::optional(estimate_.forward) : std::nullopt;
   }
@@ -32,9 +34,17 @@ class ForwardMap {
   int rounds() const { return rounds_; }
 
  private:
+  // A pair that has dropped out stays out: coming and going it would make the map jump.
+  void keep(std::span<const ParityPair> pairs) {
+    std::erase_if(near_, [&](const ExercisePair& p) {
+      return std::none_of(pairs.begin(), pairs.end(),
+                          [&](const ParityPair& k) { return k.strike == p.quoted.strike; });
+    });
+  }
+
   const AmericanInverter& inverter_;
   ExerciseTerms terms_;
-  std::span<const ExercisePair> near_;
+  std::vector<ExercisePair> near_;
   market::ForwardEstimate estimate_;
   int rounds_ = 0;
 };
@@ -76,25 +86,31 @@ std::vector<ParityPair> european_pairs(const AmericanInverter& inverter, const E
 AmericanForward settle_forward(const AmericanInverter& inverter, const ExerciseTerms& terms,
                                std::span<const ExercisePair> near,
                                market::ForwardEstimate& estimate) {
-  constexpr int kMostRounds = 30;
+  constexpr int kMostRounds = 40, kSecantRounds = 8;
   ForwardMap map(inverter, terms, near, estimate);
   double at = estimate.forward;
+  double low = 0, high = std::numeric_limits<double>::infinity();  // mapped up, mapped down
   std::optional<double> before, missed_before;
   while (map.rounds() < kMostRounds) {
     const auto mapped = map(at);
     if (!mapped) break;
     const double miss = *mapped - at;
-    if (std::abs(miss) <= kForwardTolerance * at) {
+    (miss > 0 ? low : high) = at;
+    // Pairs that contradict one another make the map jump where another of them gives way: then
+    // the jump itself is the answer.
+    if (std::abs(miss) <= kForwardTolerance * at || high - low <= kForwardTolerance * at) {
       // The premiums are those at `at`, the forward is what parity makes of them.
       estimate = map.estimate();
       return {true, map.rounds(), map.borrow()};
     }
     double next = *mapped;
-    if (before && miss != *missed_before) {
-      const double secant = at - miss * (at - *before) / (miss - *missed_before);
-      // A map with kinks may send the secant anywhere: no further than ten plain steps.
-      if (std::abs(secant - at) <= 10 * std::abs(miss)) next = secant;
-    }
+    if (before && miss != *missed_before)
+      next = at - miss * (at - *before) / (miss - *missed_before);
+    const bool bracketed = low > 0 && std::isfinite(high);
+    if (bracketed && (map.rounds() >= kSecantRounds || !(next > low && next < high)))
+      next = 0.5 * (low + high);
+    else if (!(std::abs(next - at) <= 10 * std::abs(miss)))
+      next = *mapped;
     before = at;
     missed_before = miss;
     at = next;

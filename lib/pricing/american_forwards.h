@@ -30,8 +30,9 @@ inline constexpr double kForwardTolerance = 1e-7;
 // prices put it to where that of the European equivalents does. `near` are the pairs used, at least
 // one; `terms` has spot, rate, time and dividends, its borrow is not looked at. A pair whose prices
 // have no volatility drops out. Unsettled, and the estimate as it was, where none is left, where
-// no borrow gives the forward, or where 30 rounds do not agree. A contraction in the forward, by
-// the share of the spot's moves that premiums take part in: the secant rule takes 2 to 4 rounds.
+// no borrow gives the forward, or where 40 rounds do not agree. A contraction in the forward, by
+// the share of the spot's moves that premiums take part in: the secant rule takes 2 to 5 rounds;
+// bisection follows where pairs contradict one another.
 AmericanForward settle_forward(const AmericanInverter& inverter, const ExerciseTerms& terms,
                                std::span<const ExercisePair> near,
                                market::ForwardEstimate& estimate);
