@@ -49,6 +49,15 @@ class ForwardMap {
   int rounds_ = 0;
 };
 
+// Under a negative rate a yield between it and zero (for calls; below it for puts) puts exercise
+// between two boundaries, which is not inverted. The premium is continuous in the yield and the
+// forward a hair off may fall there: the nearest yield outside stands in, whose premium is larger.
+ExerciseTerms with_one_boundary(ExerciseTerms terms) {
+  auto& f = terms.financing;
+  if (f.rate < 0 && f.borrow < 0) f.borrow = f.borrow > f.rate ? 0.0 : f.rate;
+  return terms;
+}
+
 }  // namespace
 
 std::vector<ParityPair> european_pairs(const AmericanInverter& inverter, const ExerciseTerms& terms,
@@ -64,7 +73,8 @@ std::vector<ParityPair> european_pairs(const AmericanInverter& inverter, const E
     }
   std::vector<double> vols(prices.size()), europeans(prices.size());
   std::vector<AmericanVolStatus> statuses(prices.size());
-  invert_american(inverter, terms, {strikes, sides, prices}, {vols, europeans, statuses});
+  invert_american(inverter, with_one_boundary(terms), {strikes, sides, prices},
+                  {vols, europeans, statuses});
   std::vector<ParityPair> out;
   for (std::size_t i = 0; i < near.size(); ++i) {
     const auto premium = [&](std::size_t at, bool american) -> std::optional<double> {
