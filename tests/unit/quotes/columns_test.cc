@@ -134,38 +134,35 @@ TEST(MapColumns, ColumnsKeepTheHeaderAsWritten) {
   EXPECT_EQ(written, (Headers{"Underlying", "Expiry", "Strike", "Right", "Bid Price", "Ask"}));
 }
 
-TEST(MapColumns, SnapshotWithARootAndUnderlyingQuotesNeedsNoMapping) {
-  const auto map = map_of({"underlying_symbol", "quote_datetime", "root", "expiration", "strike",
-                           "option_type", "trade_volume", "bid_size", "bid", "ask_size", "ask",
-                           "underlying_bid", "underlying_ask"});
+TEST(MapColumns, QuotesOfTheUnderlyingBesideThoseOfTheContractNeedNoMapping) {
+  const auto map =
+      map_of({"berth", "Best Bid", "Best Ask", "Underlying Bid", "Underlying Ask", "Ticker",
+              "Maturity", "Exercise Price", "call/put", "Volume", "root", "Quote Time"});
   ASSERT_TRUE(map.ok()) << map.failure().text();
-  EXPECT_EQ(map->ignored, Headers{"root"});
-  EXPECT_EQ(map->find(Field::quote_time), 1);
-  EXPECT_EQ(map->find(Field::volume), 6);
-  EXPECT_EQ(map->find(Field::bid), 8);
-  EXPECT_EQ(map->find(Field::underlying_bid), 11);
-  EXPECT_EQ(map->find(Field::underlying_ask), 12);
+  EXPECT_EQ(map->ignored, (Headers{"berth", "root"}));
+  EXPECT_EQ(map->find(Field::bid), 1);
+  EXPECT_EQ(map->find(Field::underlying_bid), 3);
+  EXPECT_EQ(map->find(Field::underlying_ask), 4);
+  EXPECT_EQ(map->find(Field::volume), 9);
+  EXPECT_EQ(map->find(Field::quote_time), 11);
 }
 
-const Headers kPairs{"bidsize.c", "bid.c", "ask.c",     "asksize.c", "chg.c",
-                     "impvol.c",  "vol.c", "openint.c", "delta.c",   "strike",
-                     "bidsize.p", "bid.p", "ask.p",     "asksize.p", "chg.p",
-                     "impvol.p",  "vol.p", "openint.p", "delta.p"};
+const Headers kPairs{"strike",    "bid.c", "ask.c", "lamp.c",    "openint.c", "bid.p",
+                     "asksize.p", "ask.p", "vol.p", "openint.p", "tide"};
 const Words kPairsFixed{{"underlying", "HALYRD"}, {"expiry", "2031-06-20"}};
 
 TEST(MapColumns, CallAndPutSideBySideAreFoundByTheirSuffixes) {
   const auto map = map_of(kPairs, {}, kPairsFixed);
   ASSERT_TRUE(map.ok()) << map.failure().text();
   EXPECT_EQ(map->layout, Layout::call_put_per_row);
+  EXPECT_EQ(map->find(Field::strike), 0);
   EXPECT_EQ(map->find(Field::bid, Side::call), 1);
   EXPECT_EQ(map->find(Field::ask, Side::call), 2);
-  EXPECT_EQ(map->find(Field::open_interest, Side::call), 7);
-  EXPECT_EQ(map->find(Field::strike), 9);
-  EXPECT_EQ(map->find(Field::bid, Side::put), 11);
-  EXPECT_EQ(map->find(Field::ask_size, Side::put), 13);
+  EXPECT_EQ(map->find(Field::open_interest, Side::call), 4);
+  EXPECT_EQ(map->find(Field::bid, Side::put), 5);
+  EXPECT_EQ(map->find(Field::ask_size, Side::put), 6);
   EXPECT_EQ(map->find(Field::bid), -1);
-  EXPECT_EQ(map->ignored, (Headers{"chg.c", "impvol.c", "vol.c", "delta.c", "chg.p", "impvol.p",
-                                   "vol.p", "delta.p"}));
+  EXPECT_EQ(map->ignored, (Headers{"lamp.c", "vol.p", "tide"}));
 }
 
 TEST(MapColumns, RowsThatNameTheirSideHoldOneContract) {
