@@ -9,8 +9,8 @@ add_stage(market
   NEEDS duskgrid::quotes PRIVATE_NEEDS fmt::fmt)
 
 add_stage(pricing
-  SOURCES american.cc american_batch.cc american_dividends.cc american_forwards.cc
-    american_panel.cc american_rules.cc american_slice.cc
+  SOURCES american.cc american_batch.cc american_dividend_batch.cc american_dividend_panel.cc
+    american_dividends.cc american_forwards.cc american_panel.cc american_rules.cc american_slice.cc
     black.cc invert.cc invert_batch.cc selection.cc
   NEEDS duskgrid::market PRIVATE_NEEDS Boost::boost fmt::fmt hwy::hwy)
 # Vectors without a size known to the compiler have no operators, which the kernel uses.

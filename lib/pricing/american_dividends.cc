@@ -199,8 +199,26 @@ void go_back(Stepper& stepper, Values& values, double length, std::size_t steps)
   }
 }
 
-double price_on_grid(const Problem& p, std::size_t intervals, std::size_t steps,
-                     std::size_t least_steps) {
+// Whether the exercise boundary is among the points next to the spot.
+bool is_near_boundary(const Values& spots, const Values& values, const Values& exercise,
+                      double at) {
+  constexpr std::ptrdiff_t kPoints = 4;
+  const auto above = std::upper_bound(spots.begin(), spots.end(), at) - spots.begin();
+  const auto first = std::max<std::ptrdiff_t>(above - 1 - kPoints, 0),
+             last = std::min<std::ptrdiff_t>(above + kPoints, std::ptrdiff_t(spots.size()));
+  bool exercised = false, held = false;
+  for (auto i = static_cast<std::size_t>(first); i < static_cast<std::size_t>(last); ++i)
+    (exercise[i] > 0 && values[i] <= exercise[i] * (1 + 1e-14) ? exercised : held) = true;
+  return exercised && held;
+}
+
+struct GridPrice {
+  double price;
+  bool near_boundary;
+};
+
+GridPrice price_on_grid(const Problem& p, std::size_t intervals, std::size_t steps,
+                        std::size_t least_steps) {
   const Values spots = spots_of(p, intervals);
   Stepper stepper(p, spots);
   Values values = stepper.exercise();
@@ -217,7 +235,9 @@ double price_on_grid(const Problem& p, std::size_t intervals, std::size_t steps,
   }
   back_to(0);
   const double price = interpolated(spots, values, p.terms.spot);
-  return p.style == Style::american ? std::max(price, payoff(p.terms, p.terms.spot)) : price;
+  if (p.style == Style::european) return {price, false};
+  return {std::max(price, payoff(p.terms, p.terms.spot)),
+          is_near_boundary(spots, values, stepper.exercise(), p.terms.spot)};
 }
 
 bool sound(const AmericanTerms& t, double vol, std::span<const Dividend> dividends) {
@@ -247,12 +267,19 @@ DividendPrice price_with_dividends(const AmericanTerms& terms, double vol,
     if (d.time > 0 && d.time < terms.year_fraction) problem.dividends.push_back(d);
   std::stable_sort(problem.dividends.begin(), problem.dividends.end(),
                    [](const Dividend& a, const Dividend& b) { return a.time > b.time; });
-  const double coarse = price_on_grid(problem, options.spots, options.steps, kPerInterval);
-  const double fine =
-      price_on_grid(problem, 2 * options.spots, 2 * options.steps, 2 * kPerInterval);
-  const double price = fine + (fine - coarse) / 3;
-  const double least = options.style == Style::american ? payoff(terms, terms.spot) : 0.0;
-  return {AmericanStatus::ok, std::max(price, least), price - fine};
+  // Next to the boundary the curvature jumps within a cell, which no extrapolation takes out: the
+  // grid has to be finer.
+  constexpr std::size_t kFiner = 8, kMoreSteps = 2;
+  std::size_t intervals = options.spots, steps = options.steps, least = kPerInterval;
+  GridPrice coarse = price_on_grid(problem, intervals, steps, least);
+  if (coarse.near_boundary) {
+    intervals *= kFiner, steps *= kMoreSteps, least *= kMoreSteps;
+    coarse = price_on_grid(problem, intervals, steps, least);
+  }
+  const GridPrice fine = price_on_grid(problem, 2 * intervals, 2 * steps, 2 * least);
+  const double price = fine.price + (fine.price - coarse.price) / 3;
+  const double floor = options.style == Style::american ? payoff(terms, terms.spot) : 0.0;
+  return {AmericanStatus::ok, std::max(price, floor), price - fine.price};
 }
 
 }  // namespace duskgrid::pricing

@@ -14,6 +14,7 @@
 #include <vector>
 
 #include "pricing/american_batch.h"
+#include "pricing/american_dividend_batch.h"
 #include "pricing/american_dividends.h"
 
 namespace duskgrid::pricing {
@@ -264,18 +265,13 @@ TEST(AmericanDividends, WithoutAnyAgreesWithTheEngine) {
   const AmericanEngine engine;
   Draws draws;
   double worst = 0;
-  int above = 0;
   for (int i = 0; i < cases(); ++i) {
     const Case c = draws.next();
     const double miss = std::abs(price_with_dividends(c.terms, c.vol, {}).price -
                                  engine.price(c.terms, c.vol).price);
-    // A spot a hair from the boundary, which the two grids see on different sides of it, has been
-    // seen to miss by twice as much, once in 2,000.
-    EXPECT_LE(miss, 3 * of_differences(c)) << c;
-    if (miss > of_differences(c)) ++above;
+    EXPECT_LE(miss, of_differences(c)) << c;
     worst = std::max(worst, miss / of_differences(c));
   }
-  EXPECT_LE(above, cases() / 500);
   std::cout << "worst " << worst << " of the promise\n";
 }
 
@@ -386,6 +382,94 @@ TEST(AmericanInverter, ByTheReferenceEngineComesBackToTheVol) {
     ASSERT_EQ(back.status, AmericanVolStatus::ok) << c;
     EXPECT_NEAR(back.vol, c.vol, kBack) << c;
   }
+}
+
+// An expiry of a stock that pays every quarter: time to two years, volatilities of 10 to 120 %,
+// rates of -1 to 8 %, borrow to 10 %, dividends of 0.2 to 2 % of the spot; strikes to 1.5
+// deviations.
+struct PayingExpiry {
+  AmericanColumnTerms terms;
+  std::vector<Dividend> dividends;
+  std::vector<double> strikes, vols, prices;
+  std::vector<PutCall> sides;
+};
+
+PayingExpiry next_paying(Draws& draws) {
+  // What has less time value says nothing of the volatility.
+  constexpr double kTimeValue = 1e-3 * kSpot;
+  PayingExpiry out;
+  const double t = 0.05 + 1.95 * draws.number() * draws.number();
+  const double level = 0.1 * std::pow(12, draws.number() * draws.number());
+  const double rate = -0.01 + 0.09 * draws.number();
+  const double borrow = draws.number() < 0.4 ? 0 : 0.1 * draws.number() * draws.number();
+  const double amount = kSpot * (0.002 + 0.018 * draws.number());
+  out.terms = {kSpot, rate, borrow, t};
+  double at = 0.25 * draws.number();
+  out.dividends.push_back({std::min(at, 0.9 * t), DividendKind::cash, amount});
+  for (at += 0.25; at < t; at += 0.25) out.dividends.push_back({at, DividendKind::cash, amount});
+  for (int i = 0; i < 6; ++i) {
+    const auto side = draws.number() < 0.5 ? PutCall::put : PutCall::call;
+    const double x = 3 * (draws.number() - 0.5), vol = level * std::exp(-0.1 * x);
+    const AmericanTerms terms{side, kSpot,  kSpot * std::exp(x * level * std::sqrt(t)),
+                              rate, borrow, t};
+    if (exercise_kind(side, rate, borrow) == ExerciseKind::between) continue;
+    const double price = price_with_dividends(terms, vol, out.dividends).price;
+    if (price < exercised(terms, kSpot) + kTimeValue) continue;
+    out.strikes.push_back(terms.strike);
+    out.sides.push_back(side);
+    out.vols.push_back(vol);
+    out.prices.push_back(price);
+  }
+  return out;
+}
+
+TEST(DividendInverter, AgreesWithFiniteDifferencesAtTheVolFound) {
+  // As measured on 2,000 expiries, with room (docs/american.md): tables of few nodes, whose error
+  // is largest for wide strikes, great volatility and spots next to the boundary.
+  constexpr double kEuropean = 1e-4 * kSpot, kAmerican = 4e-4 * kSpot;
+  constexpr double kMostEuropean = 5e-6 * kSpot, kMostAmerican = 4e-5 * kSpot;
+  const DividendInverter inverter;
+  Draws draws;
+  std::vector<double> american, european;
+  int quotes = 0;
+  for (int i = 0; i < std::max(1, cases() / 4); ++i) {
+    const PayingExpiry e = next_paying(draws);
+    const std::size_t n = e.prices.size();
+    std::vector<double> vols(n), prices(n);
+    std::vector<AmericanVolStatus> statuses(n);
+    inverter.invert({e.terms, e.dividends}, {e.strikes, e.sides, e.prices},
+                    {vols, prices, statuses});
+    for (std::size_t j = 0; j < n; ++j) {
+      ++quotes;
+      if (statuses[j] != AmericanVolStatus::ok) continue;
+      const Case c{{e.sides[j], kSpot, e.strikes[j], e.terms.rate, e.terms.carry_yield,
+                    e.terms.year_fraction},
+                   vols[j]};
+      DividendOptions options;
+      american.push_back(
+          std::abs(price_with_dividends(c.terms, vols[j], e.dividends).price - e.prices[j]));
+      options.style = Style::european;
+      european.push_back(
+          std::abs(price_with_dividends(c.terms, vols[j], e.dividends, options).price - prices[j]));
+      EXPECT_LE(american.back(), kAmerican) << c << " dividends " << e.dividends.size();
+      EXPECT_LE(european.back(), kEuropean) << c << " dividends " << e.dividends.size();
+    }
+  }
+  ASSERT_FALSE(american.empty());
+  EXPECT_GE(american.size(), 0.99 * quotes);
+  std::sort(american.begin(), american.end());
+  std::sort(european.begin(), european.end());
+  // 98 in 100.
+  const std::size_t most = american.size() - 1 - american.size() / 50;
+  EXPECT_LE(american[most], kMostAmerican);
+  EXPECT_LE(european[most], kMostEuropean);
+  for (const auto* misses : {&american, &european})
+    std::cout << (misses == &american ? "American" : "European") << ", of the spot: half within "
+              << (*misses)[misses->size() / 2] / kSpot << ", nine in ten "
+              << (*misses)[misses->size() * 9 / 10] / kSpot << ", 99 in 100 "
+              << (*misses)[misses->size() * 99 / 100] / kSpot << ", worst "
+              << misses->back() / kSpot << '\n';
+  std::cout << american.size() << " of " << quotes << " inverted\n";
 }
 
 }  // namespace
