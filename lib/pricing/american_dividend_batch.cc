@@ -135,7 +135,7 @@ class Side {
   // More nodes where cash dividends differ more from strike to strike.
   DividendPanelOptions options() const {
     DividendPanelOptions out;
-    if (strikes_.high > 2 * strikes_.low) out.strikes = 8;
+    if (strikes_.high > 3 * strikes_.low) out.strikes = 8;
     return out;
   }
 

@@ -2,6 +2,8 @@
 // expiries from a week to three years, 40 to 100 quotes an expiry, a third of the underlyings
 // without yield, skewed volatilities, quotes with some time value. Each quote is one price;
 // `three_prices` has a bid, a mid and an ask of each, which share the tables of their expiry.
+// `paying` is a night of 20 underlyings with four cash dividends a year, 0.2 to 1.5 % of the spot
+// each, and a third with borrow; expiries before the first dividend have none.
 // Tables begin anew in every call. Counters: inversions a second that found a volatility, tables
 // (boundaries of eight volatilities) an expiry, and the share that went to the reference engine.
 #include <benchmark/benchmark.h>
@@ -12,7 +14,7 @@
 #include <string>
 #include <vector>
 
-#include "pricing/american_batch.h"
+#include "pricing/american_dividend_batch.h"
 
 namespace {
 
@@ -116,6 +118,84 @@ void invert(benchmark::State& state, int times) {
   state.counters["found_share"] = static_cast<double>(found) / static_cast<double>(quotes);
 }
 
+struct PayingExpiry {
+  Expiry expiry;
+  std::vector<Dividend> dividends;
+};
+
+// Prices by coarse finite differences, as rounding to a cent would make them anyway.
+PayingExpiry paying_expiry(std::mt19937_64& random, double spot, double rate, double borrow,
+                           double level, double share, double first, double t) {
+  std::uniform_real_distribution<double> unit(0, 1);
+  PayingExpiry out;
+  auto& e = out.expiry;
+  e.terms = {spot, rate, borrow, t};
+  for (double at = first; at < t; at += 0.25)
+    out.dividends.push_back({at, DividendKind::cash, share * spot});
+  const double forward = forward_with_dividends(e.terms, out.dividends);
+  const int count = 30 + static_cast<int>(71 * unit(random));
+  const DividendOptions rough{Shortfall::liquidator, Style::american, 100, 20};
+  while (static_cast<int>(e.strikes.size()) < count) {
+    const double strike = forward * std::exp(level * std::sqrt(t) * 2.5 * (2 * unit(random) - 1.2));
+    const double vol = smile(level, 0.05, std::log(strike / forward), t);
+    const auto side = (strike < spot) == (unit(random) < 0.7) ? PutCall::put : PutCall::call;
+    const auto p =
+        price_with_dividends({side, spot, strike, rate, borrow, t}, vol, out.dividends, rough);
+    const double intrinsic = std::max(0.0, side == PutCall::put ? strike - spot : spot - strike);
+    if (p.status != AmericanStatus::ok || p.price < intrinsic + 1e-3 * spot) continue;
+    e.strikes.push_back(strike);
+    e.put_calls.push_back(side);
+    e.vols.push_back(vol);
+    e.prices.push_back(p.price);
+  }
+  return out;
+}
+
+const std::vector<PayingExpiry>& paying_night() {
+  static const std::vector<PayingExpiry> kNight = [] {
+    std::mt19937_64 random(20310314);
+    std::uniform_real_distribution<double> unit(0, 1);
+    const double times[] = {7, 14, 21, 35, 63, 98, 154, 217, 280, 399, 560, 730};
+    std::vector<PayingExpiry> night;
+    for (int u = 0; u < 20; ++u) {
+      const double spot = std::exp(3 + 3 * unit(random)), rate = 0.005 + 0.05 * unit(random);
+      const double borrow = u % 3 == 0 ? 0.03 * unit(random) : 0, level = 0.15 + 0.4 * unit(random);
+      const double share = 0.002 + 0.013 * unit(random), first = 0.25 * unit(random);
+      for (const double days : times)
+        night.push_back(paying_expiry(random, spot, rate, borrow, level, share, first, days / 365));
+    }
+    return night;
+  }();
+  return kNight;
+}
+
+void invert_paying(benchmark::State& state) {
+  std::vector<PayingExpiry> all;
+  for (const auto& e : paying_night()) all.push_back({repeated(e.expiry, 3), e.dividends});
+  const DividendInverter inverter;
+  std::vector<double> vols(512), european(512);
+  std::vector<AmericanVolStatus> statuses(512);
+  std::size_t panels = 0, quotes = 0, found = 0, expiries = 0;
+  for (auto _ : state)
+    for (const auto& [e, dividends] : all) {
+      const std::size_t n = e.prices.size();
+      const AmericanVolColumns out{std::span(vols).first(n), std::span(european).first(n),
+                                   std::span(statuses).first(n)};
+      panels +=
+          inverter.invert({e.terms, dividends}, {e.strikes, e.put_calls, e.prices}, out).panels;
+      quotes += n;
+      ++expiries;
+      found += static_cast<std::size_t>(
+          std::count(out.statuses.begin(), out.statuses.end(), AmericanVolStatus::ok));
+    }
+  using benchmark::Counter;
+  state.counters["inversions"] = Counter(static_cast<double>(found), Counter::kIsRate);
+  state.counters["seconds_an_expiry"] =
+      Counter(static_cast<double>(expiries), Counter::kIsRate | Counter::kInvert);
+  state.counters["tables_an_expiry"] = static_cast<double>(panels) / static_cast<double>(expiries);
+  state.counters["found_share"] = static_cast<double>(found) / static_cast<double>(quotes);
+}
+
 void table(benchmark::State& state) {
   const PanelMaker maker;
   for (auto _ : state) benchmark::DoNotOptimize(maker.make(0.03, 0.01, 0.1, 0.3));
@@ -142,6 +222,13 @@ int main(int argc, char** argv) {
         use_batch_target("");
       })->Unit(benchmark::kMillisecond);
     }
+  for (const auto& target : batch_targets())
+    benchmark::RegisterBenchmark(("invert/paying/" + target).c_str(), [target](
+                                                                          benchmark::State& state) {
+      use_batch_target(target);
+      invert_paying(state);
+      use_batch_target("");
+    })->Unit(benchmark::kMillisecond);
   benchmark::RegisterBenchmark("one_table", table)->Unit(benchmark::kMicrosecond);
   benchmark::RegisterBenchmark("one_reference_price", reference)->Unit(benchmark::kMicrosecond);
   benchmark::RunSpecifiedBenchmarks();
