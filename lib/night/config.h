@@ -11,7 +11,7 @@
 #include "market/curve.h"
 #include "market/dividend_file.h"
 #include "market/parity.h"
-#include "pricing/american_batch.h"
+#include "pricing/american_dividend_batch.h"
 #include "pricing/selection.h"
 #include "publish/grid.h"
 #include "quotes/clean.h"
@@ -65,7 +65,7 @@ struct ResolvedNight {
   // Of files and configuration together.
   market::DividendTable dividends;
   std::vector<std::pair<std::string, std::int64_t>> dividend_rows;  // by file
-  pricing::AmericanInverter american;                               // its tables, made once
+  pricing::DividendInverter american;                               // its tables, made once
 };
 
 // One line of the manual.

@@ -13,7 +13,7 @@ using market::ParityPair;
 // premiums at another.
 class ForwardMap {
  public:
-  ForwardMap(const AmericanInverter& inverter, const ExerciseTerms& terms,
+  ForwardMap(const DividendInverter& inverter, const ExerciseTerms& terms,
              std::span<const ExercisePair> near, const market::ForwardEstimate& start)
       : inverter_(inverter), terms_(terms), near_(near.begin(), near.end()), estimate_(start) {}
 
@@ -42,7 +42,7 @@ class ForwardMap {
     });
   }
 
-  const AmericanInverter& inverter_;
+  const DividendInverter& inverter_;
   ExerciseTerms terms_;
   std::vector<ExercisePair> near_;
   market::ForwardEstimate estimate_;
@@ -60,7 +60,7 @@ ExerciseTerms with_one_boundary(ExerciseTerms terms) {
 
 }  // namespace
 
-std::vector<ParityPair> european_pairs(const AmericanInverter& inverter, const ExerciseTerms& terms,
+std::vector<ParityPair> european_pairs(const DividendInverter& inverter, const ExerciseTerms& terms,
                                        std::span<const ExercisePair> near) {
   using quotes::PutCall;
   std::vector<double> strikes, prices;
@@ -93,7 +93,7 @@ std::vector<ParityPair> european_pairs(const AmericanInverter& inverter, const E
   return out;
 }
 
-AmericanForward settle_forward(const AmericanInverter& inverter, const ExerciseTerms& terms,
+AmericanForward settle_forward(const DividendInverter& inverter, const ExerciseTerms& terms,
                                std::span<const ExercisePair> near,
                                market::ForwardEstimate& estimate) {
   constexpr int kMostRounds = 40, kSecantRounds = 8;

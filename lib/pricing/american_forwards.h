@@ -33,12 +33,12 @@ inline constexpr double kForwardTolerance = 1e-7;
 // no borrow gives the forward, or where 40 rounds do not agree. A contraction in the forward, by
 // the share of the spot's moves that premiums take part in: the secant rule takes 2 to 5 rounds;
 // bisection follows where pairs contradict one another.
-AmericanForward settle_forward(const AmericanInverter& inverter, const ExerciseTerms& terms,
+AmericanForward settle_forward(const DividendInverter& inverter, const ExerciseTerms& terms,
                                std::span<const ExercisePair> near,
                                market::ForwardEstimate& estimate);
 
 // The near pairs with the premiums at the terms' borrow taken off; those with a volatility only.
-std::vector<market::ParityPair> european_pairs(const AmericanInverter& inverter,
+std::vector<market::ParityPair> european_pairs(const DividendInverter& inverter,
                                                const ExerciseTerms& terms,
                                                std::span<const ExercisePair> near);
 

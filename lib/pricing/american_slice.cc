@@ -21,7 +21,7 @@ class PendingSides {
     places_.push_back(&side);
   }
 
-  void invert(const AmericanInverter& inverter, const ExerciseTerms& terms) {
+  void invert(const DividendInverter& inverter, const ExerciseTerms& terms) {
     const std::size_t n = prices_.size();
     if (n == 0) return;
     std::vector<double> vols(n), europeans(n);
@@ -44,16 +44,13 @@ class PendingSides {
 
 }  // namespace
 
-void invert_american(const AmericanInverter& inverter, const ExerciseTerms& terms,
+void invert_american(const DividendInverter& inverter, const ExerciseTerms& terms,
                      const PriceColumns& columns, const AmericanVolColumns& out) {
   const auto& f = terms.financing;
-  const double forward = market::forward_of(f, terms.dividends);
-  const bool paid = market::count_before(terms.dividends, f.year_fraction) > 0;
-  const double yield = paid ? f.rate - std::log(forward / f.spot) / f.year_fraction : f.borrow;
-  inverter.invert({f.spot, f.rate, yield, f.year_fraction}, columns, out);
+  inverter.invert({{f.spot, f.rate, f.borrow, f.year_fraction}, terms.dividends}, columns, out);
 }
 
-std::vector<EquivalentQuote> european_equivalents(const AmericanInverter& inverter,
+std::vector<EquivalentQuote> european_equivalents(const DividendInverter& inverter,
                                                   const ExerciseTerms& terms,
                                                   const quotes::QuoteTable& table,
                                                   const quotes::ChainSlice& slice) {

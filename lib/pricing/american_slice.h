@@ -5,7 +5,7 @@
 #include <vector>
 
 #include "market/dividends.h"
-#include "pricing/american_batch.h"
+#include "pricing/american_dividend_batch.h"
 #include "quotes/chain.h"
 #include "quotes/quote.h"
 
@@ -19,7 +19,7 @@ struct ExerciseTerms {
 
 // Volatilities and European prices of American ones. Where cash dividends fall before expiry the
 // volatility is that of the spot between them.
-void invert_american(const AmericanInverter& inverter, const ExerciseTerms& terms,
+void invert_american(const DividendInverter& inverter, const ExerciseTerms& terms,
                      const PriceColumns& columns, const AmericanVolColumns& out);
 
 // One side of an American quote, or its mid, as a European one.
@@ -36,7 +36,7 @@ struct EquivalentQuote {
 
 // One a row of the slice; rows that are European, quoted in volatility or without a firm side
 // keep their defaults.
-std::vector<EquivalentQuote> european_equivalents(const AmericanInverter& inverter,
+std::vector<EquivalentQuote> european_equivalents(const DividendInverter& inverter,
                                                   const ExerciseTerms& terms,
                                                   const quotes::QuoteTable& table,
                                                   const quotes::ChainSlice& slice);

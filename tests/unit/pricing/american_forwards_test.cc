@@ -9,8 +9,8 @@ namespace {
 
 using quotes::PutCall;
 
-const AmericanInverter& inverter() {
-  static const AmericanInverter kInverter;
+const DividendInverter& inverter() {
+  static const DividendInverter kInverter;
   return kInverter;
 }
 

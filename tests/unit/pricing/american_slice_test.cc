@@ -38,7 +38,7 @@ class Equivalents : public testing::Test {
   }
 
   AmericanEngine engine_;
-  AmericanInverter inverter_;
+  DividendInverter inverter_;
   ExerciseTerms terms_{{kSpot, kRate, kBorrow, kTime}, {}};
   quotes::QuoteTable table_;
   quotes::ChainSlice slice_{};
