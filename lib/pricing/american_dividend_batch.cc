@@ -156,7 +156,7 @@ struct UnitQuote {
 
 struct Priced {
   double american, european;
-  bool exercised;
+  bool exercised, sure;
 };
 
 class Searcher {
@@ -171,7 +171,7 @@ class Searcher {
     panel_ = panel;
     const DividendExcess x = excess_at(*panel, weights_, side_.is_put(), q_.log_spot, s);
     const double black = q_.intrinsic + q_.scale * normalised_price(-std::abs(q_.log_forward), s);
-    out = {black + x.correction + x.premium, black + x.correction, x.exercised};
+    out = {black + x.correction + x.premium, black + x.correction, x.exercised, x.sure};
     return true;
   }
 
@@ -332,7 +332,8 @@ class Column {
     double s = 0;
     Priced at{};
     Searcher searcher(side, q);
-    const auto status = searcher.run(std::min(guess, 0.99 * most), most, s, at);
+    auto status = searcher.run(std::min(guess, 0.99 * most), most, s, at);
+    if (!at.sure) status = AmericanVolStatus::not_converged;
     // Where exercise never pays, the price is the European one.
     const bool never = side.is_put() && exercise_kind(PutCall::put, e_.terms.rate,
                                                       e_.terms.carry_yield) == ExerciseKind::never;

@@ -34,7 +34,10 @@ class DividendInverter {
   // - vol is the model's, of the spot between dividends, at which the American price is that asked
   // - not_finite also where a dividend is not finite, negative, a share of 1 or more, or as large
   //   as the forward of its time
-  // - not_converged where rates move the spot by more than 20 total volatilities.
+  // - not_converged next to an exercise boundary that tables do not follow, one about to vanish
+  // before
+  //   a dividend or far from the strike: deep in the money; and where rates move the spot by more
+  //   than 20 total volatilities.
   // Accuracy: docs/american.md.
   AmericanCounts invert(const DividendColumnTerms& terms, const PriceColumns& columns,
                         const AmericanVolColumns& out) const;

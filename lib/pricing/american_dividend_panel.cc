@@ -512,6 +512,7 @@ DividendPanel make_dividend_panel(const DividendProblem& problem, double low, do
   const auto [least, most] = std::minmax_element(boundaries.begin(), boundaries.end());
   if (*most - *least > narrow || last_coefficient(boundaries, out.strikes, out.vols) > smooth)
     out.bounded = false;
+  out.sure = *least;
   if (!out.bounded) boundaries.assign(n, double(plan.points - 1));
   out.spacing = plan.spacing;
   out.rows =
@@ -575,7 +576,7 @@ DividendExcess excess_at(const DividendPanel& panel, const StrikeWeights& by_str
       start += weights[lane] * panel.starts[lane];
     }
   const double at = panel.at_strike + (is_put ? -log_spot : log_spot) / (s * panel.spacing);
-  DividendExcess out{0, 0, panel.bounded && at >= start};
+  DividendExcess out{0, 0, panel.bounded && at >= start, panel.bounded || at < panel.sure - 1};
   if (out.exercised) return out;
   out.premium = tabled(panel.premium, panel.rows, n, weights.data(), start - at);
   out.correction = tabled(panel.correction, panel.points, n, weights.data(), at);

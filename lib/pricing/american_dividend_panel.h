@@ -54,6 +54,7 @@ struct DividendPanel {
   std::vector<double> strike_points, vol_points;  // of the logarithms
   std::size_t points = 0;
   double at_strike = 0;
+  double sure = 0;  // points from here on are exercised in a lane, though the table is not bounded
   std::vector<double> starts;      // a lane: the point of row 0
   std::vector<double> premium;     // rows x lanes: American less European, a unit strike
   std::vector<double> correction;  // points x lanes: European less Black
@@ -66,6 +67,7 @@ DividendPanel make_dividend_panel(const DividendProblem& problem, double low, do
 struct DividendExcess {
   double premium, correction;
   bool exercised;  // in the exercise region; the rest is 0
+  bool sure;       // false next to a boundary that the rows do not follow
 };
 
 // Weights of the strike's nodes, shared by all that is asked of one strike.
