@@ -24,7 +24,8 @@ enum class AmericanVolStatus {
   above_bound,         // at or above what the price tends to as volatility grows
   not_finite,          // an argument is not finite or outside its range
   two_boundaries,      // exercise between two boundaries (american.h), not inverted
-  not_converged,       // the reference engine found no boundary; not met in tests
+  not_converged,       // the reference engine found no boundary (not met in tests), or the price is
+                       // next to one that the tables of american_dividend_batch.h do not follow
 };
 std::string_view word(AmericanVolStatus status);
 
