@@ -126,14 +126,15 @@ Result<bool> write_tables(RunFolder& folder, const quotes::QuoteTable& table,
     file.write(publish::kGridHeader);
     for (const auto& m : marked)
       for (const auto& node : m.grid)
-        file.write(publish::grid_line(node, config.grid.axis, m.record.name, night.as_of.instant,
-                                      instants));
+        if (!file.write(publish::grid_line(node, config.grid.axis, m.record.name,
+                                           night.as_of.instant, instants)))
+          return;
   });
   if (written)
     written = folder.add("ledger.csv", [&](RunFile& file) {
       file.write(publish::kLedgerHeader);
       for (const auto& q : table.quotes)
-        if (!file.write(publish::ledger_line(q, table, instants))) break;
+        if (!file.write(publish::ledger_line(q, table, instants))) return;
     });
   if (written)
     written = folder.add("forwards.csv", [&](RunFile& file) {
