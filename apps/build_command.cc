@@ -138,11 +138,11 @@ void print_options() {
 }
 
 int build(const BuildArguments& args) {
+  StopSignals signals;
   auto config = args.input.config();
   if (!config) return console::report(config.failure());
   if (auto taken = take_spots(args, *config); !taken) return console::report(taken.failure());
   console::ProgressLine line(args.quiet);
-  StopSignals signals;
   const night::Progress progress = [&](std::string_view stage, std::int64_t done,
                                        std::int64_t total) {
     if (stage == "publish") signals.writing();

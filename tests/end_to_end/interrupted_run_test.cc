@@ -119,6 +119,16 @@ class InterruptedRun : public testing::Test {
   fs::path out() const { return scratch_ / "out"; }
   fs::path folder() const { return out() / kDate; }
   void publish_good() { ASSERT_EQ(duskgrid(good()).status, kSomeRefused); }
+  // What the run at work says of itself once it holds the lock.
+  std::string wait_for_holder() const {
+    std::string record;
+    for (int i = 0; i < 60'000 && record.empty(); ++i) {
+      std::this_thread::sleep_for(1ms);
+      record = slurp(out() / ".lock");
+    }
+    EXPECT_NE(record, "");
+    return record;
+  }
   bool wait_for(const std::string& name) const {
     for (int i = 0; i < 60'000 && !fs::exists(out() / name); ++i) std::this_thread::sleep_for(1ms);
     return fs::exists(out() / name);
@@ -150,19 +160,22 @@ TEST_F(InterruptedRun, KilledAtAnyInstantLeavesACompleteRunAndTheNextIsClean) {
   int killed = 0, writing = 0, replaced = 0;
   for (int i = 0; i < kills_asked(); ++i) {
     SCOPED_TRACE("kill " + std::to_string(i) + ", seed " + std::to_string(kSeed));
+    const fs::path partial = out() / (std::string(".partial-") + kDate);
+    const bool late = i % 4 >= 2, stale = fs::exists(partial);
     // Turn by turn, so that each kill is of a run that would change what is there.
     Running running(i % 2 == 0 ? arguments : good());
     const double share = std::uniform_real_distribution<double>(0, 1)(random);
-    const bool late = i % 4 >= 2;
-    if (late)
-      while (!fs::exists(out() / (std::string(".partial-") + kDate)) && !running.exited()) {
-      }
+    // What an earlier kill left must go before this run's own can come.
+    while (late && stale && fs::exists(partial) && !running.exited()) {
+    }
+    while (late && !fs::exists(partial) && !running.exited()) {
+    }
     std::this_thread::sleep_for((late ? 0.5 : 1.0) * share * whole);
     running.signal(SIGKILL);
     const int status = running.wait().status;
     ASSERT_TRUE(status == kKilled || status == kSomeRefused) << status;
     killed += status == kKilled;
-    writing += fs::exists(out() / (std::string(".partial-") + kDate));
+    writing += fs::exists(partial);
     const auto now = files_in(folder());
     ASSERT_TRUE(now == first || now == second) << "neither the one run nor the other";
     replaced += i % 2 == 0 ? now == second : now == first;
@@ -188,6 +201,7 @@ TEST_F(InterruptedRun, SignalStopsWithNothingLeftAndItsOwnStatus) {
     for (const bool writing : {false, true}) {
       SCOPED_TRACE(std::to_string(number) + (writing ? " while writing" : " before"));
       Running running(arguments);
+      wait_for_holder();
       if (writing) {
         ASSERT_TRUE(wait_for(std::string(".partial-") + kDate));
       }
@@ -216,9 +230,7 @@ TEST_F(InterruptedRun, SecondRunIsToldWhoHoldsTheFolderOrWaits) {
   publish_good();
   const auto arguments = long_one();
   Running first(arguments);
-  for (int i = 0; i < 60'000 && slurp(out() / ".lock").empty(); ++i)
-    std::this_thread::sleep_for(1ms);
-  const std::string record = slurp(out() / ".lock");
+  const std::string record = wait_for_holder();
   const auto second = duskgrid(good());
   EXPECT_EQ(second.status, 73);
   EXPECT_EQ(second.out, "");
