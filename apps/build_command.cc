@@ -3,11 +3,13 @@
 #include <algorithm>
 #include <charconv>
 #include <cmath>
+#include <csignal>
 
 #include "commands.h"
 #include "console.h"
 #include "input_arguments.h"
 #include "night/run.h"
+#include "stop_signals.h"
 
 namespace duskgrid::commands {
 namespace {
@@ -21,6 +23,7 @@ struct BuildArguments {
   std::string out = "out";
   std::vector<std::string> spots;
   int threads = 0;
+  double wait_seconds = 0;
   bool quiet = false;
   bool slices = false;
   bool list_options = false;
@@ -109,6 +112,7 @@ void print_summary(const night::NightOutcome& outcome, bool slices) {
   if (slices) print_slices(outcome);
   print_rows(record.rows);
   for (const auto& remark : outcome.remarks) fmt::print(stderr, "note: {}\n", remark);
+  fmt::print(stderr, "run.json has SHA-256 {}\n", outcome.run_sha256);
 }
 
 int status_of(const night::NightOutcome& outcome) {
@@ -134,15 +138,24 @@ void print_options() {
 }
 
 int build(const BuildArguments& args) {
+  StopSignals signals;
   auto config = args.input.config();
   if (!config) return console::report(config.failure());
   if (auto taken = take_spots(args, *config); !taken) return console::report(taken.failure());
   console::ProgressLine line(args.quiet);
   const night::Progress progress = [&](std::string_view stage, std::int64_t done,
-                                       std::int64_t total) { line.show(stage, done, total); };
-  auto outcome = night::run_night(*config, {args.out, args.threads, progress});
+                                       std::int64_t total) {
+    if (stage == "publish") signals.writing();
+    line.show(stage, done, total);
+  };
+  // Past a limit on file sizes a write fails, as on a full disk; by default the process would die.
+  std::signal(SIGXFSZ, SIG_IGN);
+  auto outcome = night::run_night(
+      *config, {args.out, args.threads, progress, args.wait_seconds, signals.token()});
   line.clear();
-  if (!outcome) return console::report(outcome.failure());
+  if (!outcome)
+    return outcome.failure().fault == Fault::stopped ? signals.report(outcome.failure())
+                                                     : console::report(outcome.failure());
   if (!args.quiet) print_summary(*outcome, args.slices);
   fmt::print("{}\n", outcome->folder);
   return status_of(*outcome);
@@ -163,6 +176,14 @@ void add_build(CLI::App& program, int& status) {
                    "where no file says it; again for each name")
       ->allow_extra_args(false)
       ->option_text("PRICE");
+  constexpr double kLongestWait = 7 * 86400;
+  command
+      ->add_option("--wait", args->wait_seconds,
+                   "How long to wait for another run that writes\n"
+                   "to the same folder, in seconds")
+      ->check(CLI::Range(0.0, kLongestWait))
+      ->capture_default_str()
+      ->option_text("SECONDS");
   command->add_option("--threads", args->threads, "Threads; 0 takes all the machine has")
       ->check(CLI::Range(0, 1024))
       ->capture_default_str();
@@ -183,7 +204,8 @@ void add_build(CLI::App& program, int& status) {
       "  duskgrid build habits.toml 'feed/*.csv.gz' --as-of 2031-03-14\n\n"
       "Exit status: 0 published; 3 published, some flagged; 4 some or all not\n"
       "published; 64 usage; 65 not such a CSV; 66 no input; 70 internal;\n"
-      "73 cannot create output; 78 configuration.");
+      "73 cannot create output; 78 configuration; 129, 130, 143 stopped by SIGHUP,\n"
+      "SIGINT, SIGTERM: nothing is published then.");
   command->callback([args, &status] { status = build(*args); });
 }
 

@@ -2,12 +2,14 @@
 
 #include <algorithm>
 #include <cmath>
+#include <filesystem>
 #include <fstream>
 #include <iterator>
 
 #include "arbitrage/certificate.h"
 #include "arbitrage/grid_checks.h"
 #include "arbitrage/surface_checks.h"
+#include "check_folder.h"
 #include "commands.h"
 #include "console.h"
 #include "publish/grid_file.h"
@@ -25,6 +27,7 @@ struct CheckArguments {
 struct Tally {
   std::size_t violations = 0;
   std::size_t unproved = 0;  // surfaces
+  std::size_t unsound = 0;   // run folders
   bool header = false;
 
   void print(const std::vector<arbitrage::Violation>& found, const std::string& underlying,
@@ -145,8 +148,16 @@ Result<bool> check_surface_file(const std::string& path, const std::string& text
   return true;
 }
 
+Result<bool> check_run(const std::string& folder, Tally& tally) {
+  const auto sound = check_folder(folder);
+  if (sound && !*sound) ++tally.unsound;
+  return sound;
+}
+
 // A stored surface is JSON, which no CSV header looks like.
 Result<bool> check_file(const std::string& path, double tolerance, Tally& tally) {
+  std::error_code unknown;
+  if (std::filesystem::is_directory(path, unknown)) return check_run(path, tally);
   std::ifstream file(path, std::ios::binary);
   char first = 0;
   if (!(file >> first) || first != '{') return check_grid_file(path, tolerance, tally);
@@ -163,20 +174,23 @@ int check(const CheckArguments& args) {
   for (const auto& path : args.files)
     if (auto checked = check_file(path, args.tolerance, tally); !checked)
       worst = std::max(worst, console::report(checked.failure()));
-  return tally.violations == 0 && tally.unproved == 0 ? worst
-                                                      : std::max<int>(worst, console::kFlagged);
+  const auto findings = tally.violations + tally.unproved + tally.unsound;
+  return findings == 0 ? worst : std::max<int>(worst, console::kFlagged);
 }
 
 }  // namespace
 
 void add_check(CLI::App& program, int& status) {
-  auto* command = program.add_subcommand("check", "Look for arbitrage in any grid or surface");
+  auto* command = program.add_subcommand("check",
+                                         "Look for arbitrage in any grid or surface,\n"
+                                         "or hold a run folder against its account");
   auto args = std::make_shared<CheckArguments>();
   command
       ->add_option("files", args->files,
                    "A grid as CSV with columns strike, vol,\n"
                    "forward, and year_fraction or as_of and\n"
-                   "expiry; or surfaces/NAME.json")
+                   "expiry; or surfaces/NAME.json; or the\n"
+                   "folder of a run")
       ->required();
   command
       ->add_option("--tolerance", args->tolerance,
@@ -189,12 +203,18 @@ void add_check(CLI::App& program, int& status) {
       "everywhere, or where it is not is found. Violations go as CSV to standard\n"
       "output, a line a grid or surface to standard error. A file that cannot be\n"
       "read is named there, and the others are checked all the same.\n\n"
+      "Of a run folder: every file has the SHA-256 that run.json says and none is\n"
+      "beside them, the counts are those of the tables, every surface is proved\n"
+      "again, and every node of the grid is what its surface gives. The account of\n"
+      "this goes to standard output.\n\n"
       "Examples:\n"
       "  duskgrid check marks/2031-03-14/grid.csv\n"
       "  duskgrid check --tolerance 1e-5 theirs.csv > breaks.csv\n"
-      "  duskgrid check marks/2031-03-14/surfaces/*.json\n\n"
-      "Exit status, the highest that applies: 0 none found; 3 some found, or a\n"
-      "surface is not proved; 64 usage; 65 not such a file; 66 no input; 70 internal.");
+      "  duskgrid check marks/2031-03-14/surfaces/*.json\n"
+      "  duskgrid check marks/latest > approval.txt\n\n"
+      "Exit status, the highest that applies: 0 none found; 3 some found, a\n"
+      "surface is not proved, or a folder is not sound; 64 usage; 65 not such a\n"
+      "file; 66 no input; 70 internal.");
   command->callback([args, &status] { status = check(*args); });
 }
 

@@ -1,11 +1,26 @@
 // duskgrid: a night's option quotes in, arbitrage-free volatility grids out.
 #include <fmt/format.h>
 
+#include <cerrno>
 #include <cstdio>
+#include <cstring>
 #include <exception>
 
 #include "commands.h"
 #include "console.h"
+
+namespace {
+
+// What was printed may still be on its way: a full disk or a closed pipe shows only now.
+int flushed(int status) {
+  using duskgrid::console::kCannotCreate;
+  if (std::fflush(stdout) == 0 && std::ferror(stdout) == 0) return status;
+  fmt::print(stderr, "duskgrid: standard output cannot be written: {}; what it shows is cut off\n",
+             std::strerror(errno));
+  return kCannotCreate;
+}
+
+}  // namespace
 
 int main(int argc, char** argv) {
   using namespace duskgrid;
@@ -32,8 +47,9 @@ int main(int argc, char** argv) {
   } catch (const CLI::ParseError& error) {
     return program.exit(error) == 0 ? console::kDone : console::kUsage;
   } catch (const std::exception& error) {
+    if (std::ferror(stdout) != 0) return flushed(status);
     fmt::print(stderr, "duskgrid: internal error: {}\n", error.what());
     return console::kInternal;
   }
-  return status;
+  return flushed(status);
 }

@@ -26,8 +26,8 @@ add_stage(arbitrage
   NEEDS duskgrid::surface PRIVATE_NEEDS fmt::fmt)
 
 add_stage(publish
-  SOURCES digest.cc grid.cc grid_file.cc points_file.cc run_folder.cc run_record.cc
-    surface_json.cc tables.cc text.cc values.cc
+  SOURCES digest.cc grid.cc grid_file.cc output_lock.cc points_file.cc run_audit.cc run_folder.cc
+    run_record.cc surface_json.cc table_file.cc tables.cc text.cc values.cc
   NEEDS duskgrid::arbitrage
   PRIVATE_NEEDS Boost::boost OpenSSL::Crypto fmt::fmt nlohmann_json::nlohmann_json)
 

@@ -6,9 +6,9 @@
 
 #include <algorithm>
 #include <chrono>
-#include <filesystem>
 #include <mutex>
 #include <numeric>
+#include <optional>
 #include <thread>
 
 #include "publish/digest.h"
@@ -81,8 +81,18 @@ Result<std::vector<publish::InputRecord>> record_inputs(
   return inputs;
 }
 
+// The sums, taken last, must be those of what was read. Quote files are the first of the inputs.
+std::optional<Failure> changed_meanwhile(const std::vector<quotes::FileSummary>& files,
+                                         const std::vector<publish::InputRecord>& inputs) {
+  for (std::size_t i = 0; i < files.size(); ++i)
+    if (files[i].bytes != inputs[i].bytes)
+      return Failure{Fault::no_input, files[i].file, "changed while it was read; run again"};
+  return std::nullopt;
+}
+
 std::vector<MarkedUnderlying> mark_all(quotes::QuoteTable& table, const NightConfig& config,
-                                       const ResolvedNight& night, const Stages& stages) {
+                                       const ResolvedNight& night, const Stages& stages,
+                                       const std::stop_token& stop) {
   auto chains = quotes::group_chains(table);
   // A name seen only on rows that cannot be read is no underlying of the night.
   std::erase_if(chains, [](const quotes::Chain& chain) { return chain.slices.empty(); });
@@ -95,6 +105,7 @@ std::vector<MarkedUnderlying> mark_all(quotes::QuoteTable& table, const NightCon
   std::mutex telling;
   std::int64_t done = 0;
   tbb::parallel_for_each(order.begin(), order.end(), [&](std::size_t i) {
+    if (stop.stop_requested()) return;
     marked[i] = mark_underlying(table, chains[i], config, night);
     const std::lock_guard lock(telling);
     stages.tell(++done, static_cast<std::int64_t>(chains.size()));
@@ -115,13 +126,15 @@ Result<bool> write_tables(RunFolder& folder, const quotes::QuoteTable& table,
     file.write(publish::kGridHeader);
     for (const auto& m : marked)
       for (const auto& node : m.grid)
-        file.write(publish::grid_line(node, config.grid.axis, m.record.name, night.as_of.instant,
-                                      instants));
+        if (!file.write(publish::grid_line(node, config.grid.axis, m.record.name,
+                                           night.as_of.instant, instants)))
+          return;
   });
   if (written)
     written = folder.add("ledger.csv", [&](RunFile& file) {
       file.write(publish::kLedgerHeader);
-      for (const auto& q : table.quotes) file.write(publish::ledger_line(q, table, instants));
+      for (const auto& q : table.quotes)
+        if (!file.write(publish::ledger_line(q, table, instants))) return;
     });
   if (written)
     written = folder.add("forwards.csv", [&](RunFile& file) {
@@ -167,15 +180,11 @@ void remark_unmatched(const NightConfig& config, const quotes::QuoteTable& table
   }
 }
 
-// A run that marked nothing must not take the place of one that did.
-std::string folder_name(const RunOptions& options, const ResolvedNight& night,
-                        const std::vector<MarkedUnderlying>& marked) {
-  const auto date = quotes::format_date(night.as_of.clock, night.as_of.instant);
-  const bool any = std::any_of(marked.begin(), marked.end(),
-                               [](const MarkedUnderlying& m) { return m.surface.has_value(); });
-  std::error_code error;
-  return any || !std::filesystem::exists(options.out + "/" + date, error) ? date
-                                                                          : date + "-refused";
+Failure stopped() { return {Fault::stopped, "", "stopped before anything was written"}; }
+
+bool any_surface(const std::vector<MarkedUnderlying>& marked) {
+  return std::any_of(marked.begin(), marked.end(),
+                     [](const MarkedUnderlying& m) { return m.surface.has_value(); });
 }
 
 quotes::LedgerCounts count_rows(const quotes::QuoteTable& table) {
@@ -201,12 +210,21 @@ Result<NightOutcome> run_night(const NightConfig& config, const RunOptions& opti
   auto& table = loaded->table;
   auto inputs = record_inputs(loaded->files, *night);
   if (!inputs) return inputs.failure();
+  if (auto changed = changed_meanwhile(loaded->files, *inputs)) return *changed;
+  stages.end();  // waiting for another run is nobody's work
+  auto created =
+      RunFolder::create(options.out, quotes::format_date(night->as_of.clock, night->as_of.instant),
+                        {options.wait_seconds, options.stop});
+  if (!created) return created.failure();
+  auto& folder = **created;
+  if (options.stop.stop_requested()) return stopped();
   stages.begin("clean");
   quotes::clean_quotes(table, night->as_of.instant, config.clean);
   stages.begin("mark");
-  auto marked = mark_all(table, config, *night, stages);
+  auto marked = mark_all(table, config, *night, stages, options.stop);
 
   stages.begin("publish");
+  if (options.stop.stop_requested()) return stopped();
   NightOutcome outcome;
   outcome.record = {DUSKGRID_VERSION,
                     night->as_of,
@@ -218,9 +236,6 @@ Result<NightOutcome> run_night(const NightConfig& config, const RunOptions& opti
   if (!outcome.record.rows.adds_up())
     return Failure{Fault::no_convergence, "ledger", "the counts do not add up to the rows read"};
   for (const auto& m : marked) outcome.record.underlyings.push_back(m.record);
-  auto created = RunFolder::create(options.out, folder_name(options, *night, marked));
-  if (!created) return created.failure();
-  auto& folder = **created;
   if (auto written = write_tables(folder, table, marked, config, *night); !written)
     return written.failure();
   outcome.record.outputs = folder.digests();
@@ -230,11 +245,13 @@ Result<NightOutcome> run_night(const NightConfig& config, const RunOptions& opti
   if (written)
     written = folder.add("timings.json",
                          [&](RunFile& file) { file.write(publish::timings_to_json(timings)); });
-  if (written) written = folder.commit();
+  if (written) written = folder.commit(any_surface(marked));
   if (!written) return written.failure();
   outcome.folder = folder.final_path();
+  outcome.run_sha256 = folder.digests().at("run.json");
   remark_unmatched(config, table, outcome.remarks);
   if (folder.replaced()) outcome.remarks.push_back("replaced the earlier run of that date");
+  outcome.remarks.insert(outcome.remarks.end(), folder.remarks().begin(), folder.remarks().end());
   for (const auto& file : loaded->files)
     if (file.rows == 0) outcome.remarks.push_back(file.file + " holds no rows");
   for (auto& m : marked) m.grid.clear();

@@ -3,6 +3,7 @@
 
 #include <cstdint>
 #include <functional>
+#include <stop_token>
 #include <string>
 #include <string_view>
 #include <vector>
@@ -22,6 +23,11 @@ struct RunOptions {
   std::string out = "out";  // folder that holds a folder a night
   int threads = 0;          // 0 takes as many as the machine has
   Progress progress;        // may be empty
+  double wait_seconds = 0;  // how long another run that writes to `out` is waited for, >= 0
+  // Looked at between stages, underlyings and lines written: the run then ends in Fault::stopped
+  // with nothing left behind. One file being read, or one underlying being marked, is not cut
+  // short. A stop that comes when the run is in its place changes nothing.
+  std::stop_token stop = {};
 };
 
 struct NightOutcome {
@@ -30,13 +36,16 @@ struct NightOutcome {
       underlyings;  // by name; without their grids, which are in the folder
   std::vector<quotes::FileSummary> files;
   std::string folder;                // where it was published
+  std::string run_sha256;            // of run.json, which names the sums of all the rest
   std::vector<std::string> remarks;  // what a person should know of the run as a whole
 };
 
-// Loads, cleans, marks every underlying and publishes. The folder is <out>/<local date of the
+// Loads, cleans, marks every underlying and publishes. `out` is locked from when the quotes are
+// read, and written to from the stage "publish" on. The folder is <out>/<local date of the
 // as-of>; a run that could mark nothing does not replace one that did, but goes beside it under
-// "<date>-refused". Failures are those of resolve(), load_quotes() and RunFolder; nothing is
-// published then. Same inputs give the same bytes for any number of threads, but for timings.json.
+// "<date>-refused". Failures are those of resolve(), load_quotes() and RunFolder, and
+// stopped; nothing is published then. Same inputs give the same bytes for any number of threads,
+// but for timings.json.
 Result<NightOutcome> run_night(const NightConfig& config, const RunOptions& options);
 
 }  // namespace duskgrid::night

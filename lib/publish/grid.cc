@@ -116,20 +116,30 @@ class TimedAxis {
   double at_the_money_;
 };
 
-std::vector<Node> nodes_of(const TimedAxis& axis, const std::vector<double>& points) {
+std::optional<Node> node_of(const TimedAxis& axis, double point) {
   // Closer to the forward than this a point is the node at k = 0: below any strike spacing.
   constexpr double kSame = 1e-12;
+  const auto k = axis.k_of(point);
+  if (!k || !std::isfinite(*k)) return std::nullopt;
+  return Node{point, std::abs(*k) < kSame ? 0 : *k};
+}
+
+std::vector<Node> nodes_of(const TimedAxis& axis, const std::vector<double>& points) {
   std::vector<Node> nodes;
-  for (const double point : points) {
-    const auto k = axis.k_of(point);
-    if (k && std::isfinite(*k)) nodes.push_back({point, std::abs(*k) < kSame ? 0 : *k});
-  }
+  for (const double point : points)
+    if (const auto node = node_of(axis, point)) nodes.push_back(*node);
   if (std::none_of(nodes.begin(), nodes.end(), [](const Node& n) { return n.k == 0; }))
     nodes.push_back({axis.point_of_forward(), 0});
   std::sort(nodes.begin(), nodes.end(), [](const Node& a, const Node& b) { return a.k < b.k; });
   const auto same = [](const Node& a, const Node& b) { return a.k == b.k; };
   nodes.erase(std::unique(nodes.begin(), nodes.end(), same), nodes.end());
   return nodes;
+}
+
+std::optional<NodeValue> value_of(const TimedAxis& axis, double year_fraction, const Node& node) {
+  const NodeValue value{axis.strike_of(node), axis.total_vol(node.k) / std::sqrt(year_fraction)};
+  if (!positive(value.vol) || !positive(value.strike)) return std::nullopt;
+  return value;
 }
 
 // Half way to the neighbours; an end node reaches as far out as in, a lone node everywhere.
@@ -234,15 +244,21 @@ std::vector<GridNode> sample_grid(const surface::Surface& surface, const GridInp
     const TimedAxis axis(surface, when, options.axis);
     const auto nodes = nodes_of(axis, points);
     for (std::size_t i = 0; i < nodes.size(); ++i) {
-      const double vol = axis.total_vol(nodes[i].k) / std::sqrt(when.year_fraction);
-      const double strike = axis.strike_of(nodes[i]);
-      if (!positive(vol) || !positive(strike)) continue;
+      const auto value = value_of(axis, when.year_fraction, nodes[i]);
+      if (!value) continue;
       grid.push_back({when.expiry, when.tenor, when.year_fraction, when.forward,
-                      when.discount_factor, nodes[i].point, strike, vol,
+                      when.discount_factor, nodes[i].point, value->strike, value->vol,
                       support_of(surface, inputs, when, nodes, i)});
     }
   }
   return grid;
+}
+
+std::optional<NodeValue> node_at(const surface::Surface& surface, double year_fraction,
+                                 double forward, Axis axis, double point) {
+  const TimedAxis timed(surface, {{}, {}, year_fraction, forward, 1, -1}, axis);
+  const auto node = node_of(timed, point);
+  return node ? value_of(timed, year_fraction, *node) : std::nullopt;
 }
 
 }  // namespace duskgrid::publish

@@ -64,4 +64,13 @@ struct GridNode {
 std::vector<GridNode> sample_grid(const surface::Surface& surface, const GridInputs& inputs,
                                   const GridOptions& options);
 
+// A node of a grid asked for again: what sample_grid() gives at this time, with this forward to it,
+// for a point on the axis. Nothing where it would leave the node out.
+struct NodeValue {
+  double strike;
+  double vol;  // decimals a year
+};
+std::optional<NodeValue> node_at(const surface::Surface& surface, double year_fraction,
+                                 double forward, Axis axis, double point);
+
 }  // namespace duskgrid::publish

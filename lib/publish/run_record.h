@@ -4,10 +4,12 @@
 #include <cstdint>
 #include <map>
 #include <string>
+#include <string_view>
 #include <vector>
 
 #include "quotes/instants.h"
 #include "quotes/ledger.h"
+#include "quotes/result.h"
 
 namespace duskgrid::publish {
 
@@ -43,6 +45,9 @@ struct RunRecord {
   std::vector<UnderlyingRecord> underlyings;
 };
 std::string run_to_json(const RunRecord& run);
+// The record back, its configuration as compact JSON. Failure (not_quotes, at `where`): not JSON, a
+// key is missing or of another type, a word is unknown, or made by another tool.
+Result<RunRecord> run_from_json(std::string_view text, const std::string& where);
 
 struct StageTime {
   std::string stage;

@@ -16,6 +16,7 @@ enum class Fault {
   not_quotes,       // a file is there but is not such a CSV
   no_input,         // a file is missing, unreadable or not a file
   cannot_create,    // output cannot be written
+  stopped,          // asked from outside to stop before the end
   configuration,    // the configuration file or a field of it is wrong
   not_enough_data,  // a numerical call has too little to work on
   no_convergence,   // a numerical call stopped without an answer

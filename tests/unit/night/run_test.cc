@@ -259,6 +259,31 @@ TEST_F(RunNightTest, PlaceThatCannotBeWrittenIsCannotCreate) {
   EXPECT_EQ(outcome.failure().fault, Fault::cannot_create);
 }
 
+TEST_F(RunNightTest, StopInAnyStageBeforeTheLastPublishesNothing) {
+  write(joined(rows_));
+  const auto before = files_of(run("out").folder);
+  write(joined(rows_of("HALYRD", 100)));
+  const auto config = parse_config("as_of = '2031-03-14'\n[[source]]\nfiles = 'quotes.csv'\n",
+                                   "night.toml", folder_);
+  for (const std::string last : {"read", "clean", "mark", "publish"}) {
+    std::stop_source source;
+    const auto progress = [&](std::string_view stage, std::int64_t, std::int64_t) {
+      if (stage == last) source.request_stop();
+    };
+    const auto outcome = run_night(*config, {folder_ + "/out", 2, progress, 0, source.get_token()});
+    ASSERT_FALSE(outcome.ok()) << last;
+    EXPECT_EQ(outcome.failure().fault, Fault::stopped);
+    EXPECT_EQ(files_of(folder_ + "/out/2031-03-14"), before);
+    EXPECT_FALSE(fs::exists(folder_ + "/out/.partial-2031-03-14"));
+  }
+}
+
+TEST_F(RunNightTest, SumOfTheAccountIsTold) {
+  write(joined(rows_));
+  const auto outcome = run("out");
+  EXPECT_EQ(outcome.run_sha256, publish::digest_file(outcome.folder + "/run.json")->sha256);
+}
+
 TEST_F(RunNightTest, ProgressTellsEveryStageAndEveryUnderlyingOnce) {
   write(joined(rows_));
   const auto config = parse_config("as_of = '2031-03-14'\n[[source]]\nfiles = 'quotes.csv'\n",

@@ -190,6 +190,112 @@ TEST_F(RunFolderTest, RunThatSteppedAsideForACompleteOneIsCleared) {
   EXPECT_EQ(files_in(out_), (Files{{"night/a.csv", "new\n"}}));
 }
 
+TEST_F(RunFolderTest, RefusedRunThatSteppedAsideDoesNotTakeThePlaceOfAGoodOne) {
+  fs::create_directories(out_ + "/.partial-night-refused.old");
+  std::ofstream(out_ + "/.partial-night-refused.old/a.csv") << "refused\n";
+  created("night").reset();
+  EXPECT_EQ(files_in(out_), (Files{{"night-refused/a.csv", "refused\n"}}));
+}
+
+TEST_F(RunFolderTest, LinkHalfMadeByAKilledRunIsCleared) {
+  fs::create_directories(out_);
+  fs::create_symlink("night", out_ + "/.partial-latest");
+  publish({{"a.csv", "one\n"}});
+  EXPECT_FALSE(fs::is_symlink(out_ + "/.partial-latest"));
+  EXPECT_EQ(fs::read_symlink(out_ + "/latest"), "night");
+}
+
+TEST_F(RunFolderTest, LatestLeadsToTheLatestNightAndNotToTheLastOneRun) {
+  publish({{"a.csv", "first\n"}}, "2031-03-13");
+  EXPECT_EQ(fs::read_symlink(out_ + "/latest"), "2031-03-13");
+  publish({{"a.csv", "second\n"}}, "2031-03-14");
+  EXPECT_EQ(fs::read_symlink(out_ + "/latest"), "2031-03-14");
+  publish({{"a.csv", "again\n"}}, "2031-03-13");
+  EXPECT_EQ(fs::read_symlink(out_ + "/latest"), "2031-03-14");
+  EXPECT_EQ(content_of(out_ + "/latest/a.csv"), "second\n");
+}
+
+TEST_F(RunFolderTest, LatestThatLeadsNowhereGivesWay) {
+  fs::create_directories(out_);
+  fs::create_symlink("2031-12-31", out_ + "/latest");
+  publish({{"a.csv", "one\n"}}, "2031-03-14");
+  EXPECT_EQ(fs::read_symlink(out_ + "/latest"), "2031-03-14");
+}
+
+TEST_F(RunFolderTest, FolderNamedLatestIsLeftAloneWithARemark) {
+  fs::create_directories(out_ + "/latest");
+  const auto folder = created();
+  ASSERT_TRUE(add(*folder, "a.csv", "one\n").ok());
+  ASSERT_TRUE(folder->commit().ok());
+  EXPECT_TRUE(fs::is_directory(fs::symlink_status(out_ + "/latest")));
+  ASSERT_EQ(folder->remarks().size(), 1U);
+  EXPECT_NE(folder->remarks()[0].find("latest"), std::string::npos);
+}
+
+TEST_F(RunFolderTest, RunWithoutMarksGoesBesideAndIsNeverTheLatest) {
+  const auto without_marks = [&](const std::string& name) {
+    const auto folder = created(name);
+    EXPECT_TRUE(add(*folder, "a.csv", "none\n").ok());
+    EXPECT_TRUE(folder->commit(false).ok());
+    return folder->final_path();
+  };
+  EXPECT_EQ(without_marks("2031-03-13"), out_ + "/2031-03-13");
+  EXPECT_FALSE(fs::is_symlink(out_ + "/latest"));
+  publish({{"a.csv", "good\n"}}, "2031-03-14");
+  EXPECT_EQ(without_marks("2031-03-14"), out_ + "/2031-03-14-refused");
+  EXPECT_EQ(without_marks("2031-03-14"), out_ + "/2031-03-14-refused") << "a second time";
+  EXPECT_EQ(content_of(out_ + "/latest/a.csv"), "good\n");
+}
+
+TEST_F(RunFolderTest, StopBeforeOrWhileWritingLeavesTheOldRun) {
+  publish({{"a.csv", "old\n"}});
+  for (const bool early : {true, false}) {
+    std::stop_source source;
+    auto folder = RunFolder::create(out_, "night", {0, source.get_token()});
+    ASSERT_TRUE(folder.ok());
+    if (early) source.request_stop();
+    bool went_on = true;
+    const auto written = (*folder)->add("a.csv", [&](RunFile& file) {
+      EXPECT_TRUE(file.write("new\n"));
+      source.request_stop();
+      went_on = file.write("new\n");
+    });
+    ASSERT_FALSE(written.ok());
+    EXPECT_EQ(written.failure().fault, Fault::stopped);
+    EXPECT_EQ(went_on, early) << "where it is stopped already, nothing is filled";
+    folder->reset();
+    EXPECT_EQ(files_in(out_), (Files{{"night/a.csv", "old\n"}}));
+  }
+}
+
+TEST_F(RunFolderTest, StopAfterTheLastFileLeavesTheOldRun) {
+  publish({{"a.csv", "old\n"}});
+  std::stop_source source;
+  auto folder = RunFolder::create(out_, "night", {0, source.get_token()});
+  ASSERT_TRUE(add(**folder, "a.csv", "new\n").ok());
+  source.request_stop();
+  const auto committed = (*folder)->commit();
+  ASSERT_FALSE(committed.ok());
+  EXPECT_EQ(committed.failure().fault, Fault::stopped);
+  folder->reset();
+  EXPECT_EQ(files_in(out_), (Files{{"night/a.csv", "old\n"}}));
+}
+
+TEST_F(RunFolderTest, FailureSaysWhatIsPublishedAndWhatIsNot) {
+  publish({{"a.csv", "old\n"}});
+  for (const std::string& name : {std::string("night"), std::string("other")}) {
+    const auto folder = created(name);
+    const FullDisk limit(4096);
+    const auto written = add(*folder, "a.csv", std::string(1'000'000, 'x'));
+    ASSERT_FALSE(written.ok());
+    const auto text = written.failure().text();
+    EXPECT_NE(text.find(name == "night" ? "the earlier run " + out_ + "/night is untouched"
+                                        : "nothing is published"),
+              std::string::npos)
+        << text;
+  }
+}
+
 TEST_F(RunFolderTest, FullDiskIsCannotCreateAndLeavesTheOldRun) {
   publish({{"a.csv", "old\n"}});
   {

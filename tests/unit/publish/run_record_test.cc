@@ -59,6 +59,34 @@ TEST(RunToJson, FileNameThatIsNoTextDoesNotStopTheRecord) {
   EXPECT_TRUE(json::accept(run_to_json(run)));
 }
 
+TEST(RunFromJson, RecordComesBackAsItWas) {
+  const std::string text = run_to_json(made_record());
+  const auto back = run_from_json(text, "run.json");
+  ASSERT_TRUE(back.ok()) << back.failure().text();
+  EXPECT_EQ(run_to_json(*back), text);
+}
+
+TEST(RunFromJson, EveryMissingKeyIsRefusedWithItsPlace) {
+  const json whole = json::parse(run_to_json(made_record()));
+  for (const auto& [key, value] : whole.items()) {
+    json part = whole;
+    part.erase(key);
+    const auto back = run_from_json(part.dump(), "run.json");
+    ASSERT_FALSE(back.ok()) << key;
+    EXPECT_EQ(back.failure().fault, Fault::not_quotes);
+    EXPECT_EQ(back.failure().where, "run.json");
+  }
+}
+
+TEST(RunFromJson, UnknownWordsAreRefused) {
+  json run = json::parse(run_to_json(made_record()));
+  run["underlyings"]["HALYRD"]["status"] = "approved";
+  EXPECT_FALSE(run_from_json(run.dump(), "").ok());
+  run = json::parse(run_to_json(made_record()));
+  run["reasons"]["whim"] = 1;
+  EXPECT_FALSE(run_from_json(run.dump(), "").ok());
+}
+
 TEST(StatusWord, EveryStatusHasItsOwn) {
   EXPECT_EQ(word(Status::published), "published");
   EXPECT_EQ(word(Status::flagged), "flagged");
