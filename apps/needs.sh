@@ -7,7 +7,7 @@ needs=(
   g++ cmake ninja-build ccache
   libeigen3-dev libboost-dev libboost-iostreams-dev libfccp-dev libcli11-dev
   libtomlplusplus-dev nlohmann-json3-dev libfmt-dev libtbb-dev libhwy-dev
-  libhowardhinnant-date-dev libssl-dev libgtest-dev libbenchmark-dev tzdata
+  libhowardhinnant-date-dev libssl-dev libsqlite3-dev libgtest-dev libbenchmark-dev tzdata
 )
 missing=()
 for package in "${needs[@]}"; do

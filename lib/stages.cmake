@@ -18,7 +18,7 @@ target_compile_definitions(duskgrid_pricing PRIVATE
   "HWY_DISABLED_TARGETS=(HWY_SVE|HWY_SVE2|HWY_SVE_256|HWY_SVE2_128|HWY_RVV)")
 
 add_stage(surface
-  SOURCES backbone.cc derived.cc fit.cc overlay.cc quadratic_program.cc slice_model.cc surface.cc
+  SOURCES backbone.cc carry.cc derived.cc fit.cc overlay.cc quadratic_program.cc slice_model.cc surface.cc
   NEEDS duskgrid::pricing PRIVATE_NEEDS Boost::boost Eigen3::Eigen fmt::fmt)
 
 add_stage(arbitrage
@@ -26,13 +26,14 @@ add_stage(arbitrage
   NEEDS duskgrid::surface PRIVATE_NEEDS fmt::fmt)
 
 add_stage(publish
-  SOURCES digest.cc grid.cc grid_file.cc output_lock.cc points_file.cc run_audit.cc run_folder.cc
-    run_record.cc surface_json.cc table_file.cc tables.cc text.cc values.cc
+  SOURCES compare.cc digest.cc grid.cc grid_file.cc history.cc output_lock.cc past_run.cc
+    points_file.cc run_audit.cc run_folder.cc run_record.cc surface_json.cc table_file.cc tables.cc
+    text.cc values.cc
   NEEDS duskgrid::arbitrage
-  PRIVATE_NEEDS Boost::boost OpenSSL::Crypto fmt::fmt nlohmann_json::nlohmann_json)
+  PRIVATE_NEEDS Boost::boost OpenSSL::Crypto SQLite::SQLite3 fmt::fmt nlohmann_json::nlohmann_json)
 
 add_stage(night
-  SOURCES config.cc mark.cc run.cc slice_market.cc
+  SOURCES carry.cc changes.cc config.cc expiries.cc mark.cc previous.cc run.cc slice_market.cc
   NEEDS duskgrid::publish
   PRIVATE_NEEDS TBB::tbb fmt::fmt nlohmann_json::nlohmann_json tomlplusplus::tomlplusplus)
 target_compile_definitions(duskgrid_night PRIVATE DUSKGRID_VERSION="${PROJECT_VERSION}")

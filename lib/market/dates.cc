@@ -1,5 +1,6 @@
 #include "market/dates.h"
 
+#include <algorithm>
 #include <charconv>
 
 namespace duskgrid::market {
@@ -37,6 +38,21 @@ quotes::Instant add_tenor(quotes::Instant as_of, const Tenor& tenor, const quote
   }
   if (!date.ok()) date = date.year() / date.month() / last;
   return quotes::to_instant(clock, date, time_of_day);
+}
+
+int business_days(std::chrono::sys_days from, std::chrono::sys_days to,
+                  const std::vector<std::chrono::sys_days>& holidays) {
+  int count = 0;
+  for (auto day = from + std::chrono::days{1}; day <= to; day += std::chrono::days{1}) {
+    const std::chrono::weekday weekday{day};
+    if (weekday == std::chrono::Saturday || weekday == std::chrono::Sunday) continue;
+    if (std::find(holidays.begin(), holidays.end(), day) == holidays.end()) ++count;
+  }
+  return count;
+}
+
+std::chrono::sys_days local_date(quotes::Instant instant, const quotes::Clock& clock) {
+  return std::chrono::floor<std::chrono::days>(instant + quotes::offset_at(clock, instant));
 }
 
 }  // namespace duskgrid::market

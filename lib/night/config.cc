@@ -70,6 +70,9 @@ const std::vector<Field<NightConfig>>& night_fields() {
           "local time of day that a word of the settlement column stands for; without it am is "
           "09:30 and pm 16:00",
           DUSKGRID_AT(settlement_times), to_text_map),
+      field<NightConfig>("holidays", "list of dates",
+                         "days that, like Saturdays and Sundays, are not business days",
+                         DUSKGRID_AT(holidays), to_texts),
       field<NightConfig>("spot", "> 0, quote currency",
                          "price of every underlying that neither its table nor its file gives",
                          DUSKGRID_AT(spot), to_number),
@@ -283,6 +286,44 @@ const std::vector<Field<FlagOptions>>& flag_fields() {
   return fields;
 }
 
+const std::vector<Field<publish::CompareOptions>>& compare_fields() {
+  using C = publish::CompareOptions;
+  static const std::vector<Field<C>> fields{
+      field<C>("tolerance", "> 0, decimals of vol",
+               "change of a node since the night before, at equal log-moneyness, that is to be "
+               "signed off",
+               DUSKGRID_AT(tolerance), to_number),
+      field<C>("times_typical", ">= 0",
+               "the same as a multiple of the median nightly change of the underlying's "
+               "at-the-money vol at that time to expiry; 0 for none",
+               DUSKGRID_AT(times_typical), to_number),
+      field<C>("least_nights", ">= 2", "nights in the history that the median needs",
+               DUSKGRID_AT(least_nights), to_count),
+      field<C>("most_nights", "least_nights to 1000", "nights of the history that it looks at",
+               DUSKGRID_AT(most_nights), to_count),
+  };
+  return fields;
+}
+
+const std::vector<Field<CarryOptions>>& carry_fields() {
+  static const std::vector<Field<CarryOptions>> fields{
+      field<CarryOptions>("most_business_days", "0 to 250",
+                          "oldest surface that stands in for an underlying that cannot be marked; "
+                          "0 carries none",
+                          DUSKGRID_AT(most_business_days), to_count),
+  };
+  return fields;
+}
+
+const std::vector<Field<HistoryOptions>>& history_fields() {
+  static const std::vector<Field<HistoryOptions>> fields{
+      field<HistoryOptions>("surfaces", "true or false",
+                            "whether history.sqlite keeps whole surfaces beside their figures",
+                            DUSKGRID_AT(surfaces), to_flag),
+  };
+  return fields;
+}
+
 #undef DUSKGRID_AT
 
 // Tables of one name and one place: calls visit(name, fields, member of config) for each.
@@ -295,6 +336,9 @@ void each_table(Config& config, Visit visit) {
   visit("overlay", overlay_fields(), config.overlay);
   visit("grid", grid_fields(), config.grid);
   visit("flags", flag_fields(), config.flags);
+  visit("compare", compare_fields(), config.compare);
+  visit("carry", carry_fields(), config.carry);
+  visit("history", history_fields(), config.history);
 }
 
 // Where the reading stands, for messages.
@@ -455,6 +499,10 @@ std::optional<std::string> problem_of(const NightConfig& c) {
   if (c.spot && !(*c.spot > 0)) return fmt::format("spot = {}, must be > 0", *c.spot);
   if (!(c.flags.most_missed >= 0 && c.flags.most_missed <= 1))
     return fmt::format("flags.most_missed = {}, must be 0 to 1", c.flags.most_missed);
+  if (auto p = in("compare", c.compare.problem())) return p;
+  if (c.carry.most_business_days < 0 || c.carry.most_business_days > 250)
+    return fmt::format("carry.most_business_days = {}, must be 0 to 250",
+                       c.carry.most_business_days);
   return std::nullopt;
 }
 
@@ -497,6 +545,18 @@ std::optional<Failure> gather_dividends(const NightConfig& config, ResolvedNight
               {market::ex_instant(*cell, night.as_of.clock), kind, amount});
     }
   return std::nullopt;
+}
+
+Result<std::vector<std::chrono::sys_days>> holidays_of(const NightConfig& config) {
+  std::vector<std::chrono::sys_days> days;
+  for (const auto& text : config.holidays) {
+    const auto cell = quotes::parse_date_cell(text);
+    if (!cell || !cell->date || cell->time_of_day)
+      return Failure{Fault::configuration, "",
+                     fmt::format("holidays has '{}', must be a date like 2031-12-25", text)};
+    days.emplace_back(*cell->date);
+  }
+  return days;
 }
 
 Result<std::optional<market::ZeroCurve>> curve_of(const NightConfig& config,
@@ -620,6 +680,9 @@ Result<ResolvedNight> resolve(const NightConfig& config) {
   if (!curve) return curve.failure();
   night.curve = std::move(*curve);
   if (auto failure = gather_dividends(config, night)) return *failure;
+  auto holidays = holidays_of(config);
+  if (!holidays) return holidays.failure();
+  night.holidays = std::move(*holidays);
   return night;
 }
 

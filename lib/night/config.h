@@ -2,6 +2,7 @@
 // (options()) feeds the reader, the resolved copy in run.json, and the manual.
 #pragma once
 
+#include <chrono>
 #include <map>
 #include <optional>
 #include <string>
@@ -13,6 +14,7 @@
 #include "market/parity.h"
 #include "pricing/american_dividend_batch.h"
 #include "pricing/selection.h"
+#include "publish/compare.h"
 #include "publish/grid.h"
 #include "quotes/clean.h"
 #include "quotes/load.h"
@@ -37,10 +39,23 @@ struct FlagOptions {
   double most_missed = 0.1;
 };
 
+// How long a surface stands in for one that cannot be made.
+struct CarryOptions {
+  // Age of the quotes behind it, business days from their night to tonight. Range: 0 to 250; 0
+  // carries nothing. Larger keeps names in the grid whose market has gone.
+  int most_business_days = 5;
+};
+
+struct HistoryOptions {
+  // Whether whole surfaces are kept in the history, some 10 kB an underlying and night.
+  bool surfaces = true;
+};
+
 struct NightConfig {
   std::string as_of_text;  // as written; the command line wins
   std::string zone;        // IANA name; empty for the as-of's own offset
   std::map<std::string, std::string> settlement_times;
+  std::vector<std::string> holidays;  // dates as written
   std::vector<quotes::SourceOptions> sources;
   std::map<std::string, double> rates;  // tenor or date, to continuous zero rate
   std::map<std::string, double> discount_factors;
@@ -55,6 +70,9 @@ struct NightConfig {
   surface::OverlayOptions overlay;
   publish::GridOptions grid;
   FlagOptions flags;
+  publish::CompareOptions compare;
+  CarryOptions carry;
+  HistoryOptions history;
 };
 
 // What must be known before a night can run, worked out of its configuration.
@@ -66,6 +84,7 @@ struct ResolvedNight {
   market::DividendTable dividends;
   std::vector<std::pair<std::string, std::int64_t>> dividend_rows;  // by file
   pricing::DividendInverter american;                               // its tables, made once
+  std::vector<std::chrono::sys_days> holidays;                      // any order
 };
 
 // One line of the manual.

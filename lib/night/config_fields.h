@@ -63,6 +63,7 @@ inline std::optional<std::string> to_text(const toml::node& node) {
   if (const auto* instant = node.as_date_time()) text << *instant;
   return text.str();
 }
+inline std::optional<bool> to_flag(const toml::node& node) { return node.value_exact<bool>(); }
 inline std::optional<char> to_letter(const toml::node& node) {
   const auto text = to_text(node);
   return text && text->size() == 1 ? std::optional((*text)[0]) : std::nullopt;

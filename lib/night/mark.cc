@@ -9,6 +9,7 @@
 #include "arbitrage/quote_checks.h"
 #include "arbitrage/surface_checks.h"
 #include "night/slice_market.h"
+#include "night/expiries.h"
 #include "pricing/black.h"
 
 namespace duskgrid::night {
@@ -60,6 +61,8 @@ class Marker {
     check_the_quotes();
     if (out_.surface) sample();
     conclude();
+    out_.spot = spot_;
+    out_.expiries = expiry_rows(table_, chain_, out_.quality);
     return std::move(out_);
   }
 

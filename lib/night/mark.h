@@ -6,6 +6,7 @@
 
 #include "arbitrage/violation.h"
 #include "night/config.h"
+#include "publish/expiries.h"
 #include "publish/run_record.h"
 #include "publish/tables.h"
 #include "quotes/chain.h"
@@ -27,6 +28,8 @@ struct MarkedUnderlying {
   std::vector<SliceQuality> quality;
   std::vector<arbitrage::Violation> violations;
   std::optional<surface::Surface> surface;
+  std::optional<double> spot;                // tonight's, quote currency
+  std::vector<publish::ExpiryRow> expiries;  // by expiry; those of its quotes
   std::vector<publish::GridNode> grid;
 };
 

@@ -6,11 +6,15 @@
 
 #include <algorithm>
 #include <chrono>
+#include <filesystem>
 #include <mutex>
 #include <numeric>
 #include <optional>
 #include <thread>
 
+#include "night/carry.h"
+#include "night/changes.h"
+#include "night/previous.h"
 #include "publish/digest.h"
 #include "publish/run_folder.h"
 #include "publish/surface_json.h"
@@ -157,6 +161,13 @@ Result<bool> write_tables(RunFolder& folder, const quotes::QuoteTable& table,
         for (const auto& violation : m.violations)
           file.write(publish::violations_line(violation, m.record.name, clock));
     });
+  if (written)
+    written = folder.add("expiries.csv", [&](RunFile& file) {
+      file.write(publish::kExpiriesHeader);
+      for (const auto& m : marked)
+        for (const auto& row : m.expiries)
+          file.write(publish::expiries_line(row, m.record.name, instants));
+    });
   for (const auto& m : marked) {
     if (!written || !m.surface) continue;
     written = folder.add("surfaces/" + publish::encode_file_name(m.record.name) + ".json",
@@ -182,9 +193,31 @@ void remark_unmatched(const NightConfig& config, const quotes::QuoteTable& table
 
 Failure stopped() { return {Fault::stopped, "", "stopped before anything was written"}; }
 
+// Carried ones aside, which are no marks of tonight.
 bool any_surface(const std::vector<MarkedUnderlying>& marked) {
-  return std::any_of(marked.begin(), marked.end(),
-                     [](const MarkedUnderlying& m) { return m.surface.has_value(); });
+  return std::any_of(marked.begin(), marked.end(), [](const MarkedUnderlying& m) {
+    return m.surface && m.record.status != publish::Status::carried;
+  });
+}
+
+publish::PreviousRecord record_of(const publish::PastRun& run) {
+  return {std::filesystem::path(run.folder).filename().string(),
+          quotes::format_instant(run.as_of.clock, run.as_of.instant), run.sha256};
+}
+
+// The history is beside the night, not part of it: without it the night stands.
+void keep_history(const RunOptions& options, const NightConfig& config, const ResolvedNight& night,
+                  NightOutcome& outcome) {
+  const bool named_by_date = std::filesystem::path(outcome.folder).filename() ==
+                             quotes::format_date(night.as_of.clock, night.as_of.instant);
+  if (!named_by_date) return;
+  const auto kept =
+      write_history(options.out, outcome.underlyings, config, night, outcome.record.version);
+  if (!kept)
+    outcome.remarks.push_back(
+        "the history lacks this night, which is published all the same; run "
+        "it again to add it: " +
+        kept.failure().text());
 }
 
 quotes::LedgerCounts count_rows(const quotes::QuoteTable& table) {
@@ -223,9 +256,13 @@ Result<NightOutcome> run_night(const NightConfig& config, const RunOptions& opti
   stages.begin("mark");
   auto marked = mark_all(table, config, *night, stages, options.stop);
 
-  stages.begin("publish");
   if (options.stop.stop_requested()) return stopped();
+  stages.begin("carry");
   NightOutcome outcome;
+  const auto previous = previous_night(options.out, *night, outcome.remarks);
+  if (previous) carry_all(marked, *previous, config, *night);
+
+  stages.begin("publish");
   outcome.record = {DUSKGRID_VERSION,
                     night->as_of,
                     config_to_json(config),
@@ -235,9 +272,15 @@ Result<NightOutcome> run_night(const NightConfig& config, const RunOptions& opti
                     {}};
   if (!outcome.record.rows.adds_up())
     return Failure{Fault::no_convergence, "ledger", "the counts do not add up to the rows read"};
-  for (const auto& m : marked) outcome.record.underlyings.push_back(m.record);
+  if (previous) outcome.record.previous = record_of(*previous);
   if (auto written = write_tables(folder, table, marked, config, *night); !written)
     return written.failure();
+  const auto date = quotes::format_date(night->as_of.clock, night->as_of.instant);
+  const ComparedNights nights{previous ? &*previous : nullptr,
+                              past_terms(options.out, date, config.compare, outcome.remarks)};
+  if (auto changes = write_changes(folder, marked, nights, config, *night); !changes)
+    return changes.failure();
+  for (const auto& m : marked) outcome.record.underlyings.push_back(m.record);
   outcome.record.outputs = folder.digests();
   auto written = folder.add(
       "run.json", [&](RunFile& file) { file.write(publish::run_to_json(outcome.record)); });
@@ -257,6 +300,7 @@ Result<NightOutcome> run_night(const NightConfig& config, const RunOptions& opti
   for (auto& m : marked) m.grid.clear();
   outcome.underlyings = std::move(marked);
   outcome.files = std::move(loaded->files);
+  keep_history(options, config, *night, outcome);
   return outcome;
 }
 

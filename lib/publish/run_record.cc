@@ -127,6 +127,11 @@ std::string run_to_json(const RunRecord& run) {
   for (const auto& i : run.inputs)
     out["inputs"].push_back(ordered_json::object(
         {{"file", i.file}, {"sha256", i.sha256}, {"bytes", i.bytes}, {"rows", i.rows}}));
+  out["previous"] = nullptr;
+  if (run.previous)
+    out["previous"] = ordered_json::object({{"folder", run.previous->folder},
+                                            {"as_of", run.previous->as_of},
+                                            {"sha256", run.previous->sha256}});
   out["outputs"] = ordered_json::array();
   for (const auto& [file, sha256] : run.outputs)
     out["outputs"].push_back(ordered_json::object({{"file", file}, {"sha256", sha256}}));

@@ -3,6 +3,7 @@
 
 #include <cstdint>
 #include <map>
+#include <optional>
 #include <string>
 #include <string_view>
 #include <vector>
@@ -35,6 +36,13 @@ struct UnderlyingRecord {
   std::string message;       // why flagged or refused, in a few words
 };
 
+// The run that a night was compared with, and from which it carried.
+struct PreviousRecord {
+  std::string folder;  // its name, without the way to it
+  std::string as_of;
+  std::string sha256;  // of its run.json, which has those of its other files
+};
+
 struct RunRecord {
   std::string version;
   quotes::AsOf as_of;
@@ -43,6 +51,7 @@ struct RunRecord {
   std::map<std::string, std::string> outputs;  // path in the folder to SHA-256
   quotes::LedgerCounts rows;
   std::vector<UnderlyingRecord> underlyings;
+  std::optional<PreviousRecord> previous = {};
 };
 std::string run_to_json(const RunRecord& run);
 // The record back, its configuration as compact JSON. Failure (not_quotes, at `where`): not JSON, a

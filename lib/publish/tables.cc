@@ -141,6 +141,19 @@ std::string financing_line(const FinancingRow& row, std::string_view underlying,
       .end();
 }
 
+std::string expiries_line(const ExpiryRow& row, std::string_view underlying,
+                          InstantTexts& instants) {
+  return Line()
+      .text(underlying)
+      .raw(instants.of(row.expiry))
+      .count(row.quotes)
+      .count(row.used)
+      .count(row.inside)
+      .number(row.rms_vol)
+      .raw(row.print)
+      .end();
+}
+
 std::string violations_line(const arbitrage::Violation& v, std::string_view underlying,
                             const quotes::Clock& clock) {
   Line line;

@@ -11,6 +11,7 @@
 
 #include "arbitrage/violation.h"
 #include "market/parity.h"
+#include "publish/expiries.h"
 #include "publish/grid.h"
 #include "publish/values.h"
 #include "quotes/instants.h"
@@ -94,6 +95,8 @@ std::string forwards_line(const ForwardRow& row, std::string_view underlying,
                           const quotes::Clock& clock);
 std::string financing_line(const FinancingRow& row, std::string_view underlying,
                            const quotes::Clock& clock);
+std::string expiries_line(const ExpiryRow& row, std::string_view underlying,
+                          InstantTexts& instants);
 std::string violations_line(const arbitrage::Violation& violation, std::string_view underlying,
                             const quotes::Clock& clock);
 std::string values_line(const ValueTime& time, const ValueRow& row, InstantTexts& instants);
