@@ -120,8 +120,11 @@ int status_of(const night::NightOutcome& outcome) {
   for (const auto& u : outcome.record.underlyings) worst = std::max(worst, u.status);
   const bool empty_file = std::any_of(outcome.files.begin(), outcome.files.end(),
                                       [](const auto& f) { return f.rows == 0; });
-  if (worst == Status::refused || outcome.record.underlyings.empty() || empty_file)
-    return console::kNotAllPublished;
+  // Where all is carried nothing of tonight has been published.
+  const bool any_marked =
+      std::any_of(outcome.record.underlyings.begin(), outcome.record.underlyings.end(),
+                  [](const auto& u) { return u.status < Status::carried; });
+  if (worst == Status::refused || !any_marked || empty_file) return console::kNotAllPublished;
   return worst == Status::published ? console::kDone : console::kFlagged;
 }
 
@@ -202,8 +205,8 @@ void add_build(CLI::App& program, int& status) {
       "  duskgrid build quotes.csv --as-of 2031-03-14T16:00:00-04:00 --out marks\n"
       "  duskgrid build NIGHT.toml --out marks\n"
       "  duskgrid build habits.toml 'feed/*.csv.gz' --as-of 2031-03-14\n\n"
-      "Exit status: 0 published; 3 published, some flagged; 4 some or all not\n"
-      "published; 64 usage; 65 not such a CSV; 66 no input; 70 internal;\n"
+      "Exit status: 0 published; 3 published, some flagged or carried; 4 some or\n"
+      "all not published; 64 usage; 65 not such a CSV; 66 no input; 70 internal;\n"
       "73 cannot create output; 78 configuration; 129, 130, 143 stopped by SIGHUP,\n"
       "SIGINT, SIGTERM: nothing is published then.");
   command->callback([args, &status] { status = build(*args); });

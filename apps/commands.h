@@ -10,5 +10,7 @@ void add_build(CLI::App& program, int& status);
 void add_survey(CLI::App& program, int& status);
 void add_check(CLI::App& program, int& status);
 void add_value(CLI::App& program, int& status);
+void add_compare(CLI::App& program, int& status);
+void add_history(CLI::App& program, int& status);
 
 }  // namespace duskgrid::commands

@@ -38,6 +38,8 @@ int main(int argc, char** argv) {
   commands::add_survey(program, status);
   commands::add_check(program, status);
   commands::add_value(program, status);
+  commands::add_compare(program, status);
+  commands::add_history(program, status);
   try {
     program.parse(argc, argv);
   } catch (const CLI::ExtrasError& error) {

@@ -47,6 +47,9 @@ int main(int argc, char** argv) {
   app.add_option("--out", out, "Folder to write the night to")->required();
   app.add_option("--seed", world.seed, "Same seed, same night")->capture_default_str();
   app.add_option("--as-of", as_of, "Instant the night is taken at")->capture_default_str();
+  bool next = false;
+  app.add_flag("--next-night", next,
+               "The night after it instead, with changes planted;\nchanges.tsv lists them");
   app.footer("Example: make_night --out data/demo_night");
   try {
     app.parse(argc, argv);
@@ -57,6 +60,7 @@ int main(int argc, char** argv) {
   if (!instant) {
     return fail(kUsage, fmt::format("--as-of = {}, must be like 2031-03-14T16:00:00-05:00", as_of));
   }
-  world.as_of = *instant;
+  world.listed = *instant;
+  world.as_of = next ? next_business_day(*instant) : *instant;
   return write_night(out, world);
 }

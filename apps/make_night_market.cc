@@ -92,6 +92,14 @@ std::optional<AsOf> parse_as_of(std::string_view text) {
               sign == '-' ? -offset : offset};
 }
 
+AsOf next_business_day(const AsOf& as_of) {
+  AsOf next = as_of;
+  const Date date = days_ahead(as_of, 1);
+  next.date = chrono::sys_days{date};
+  next.text = iso_date(date) + as_of.text.substr(iso_date(date).size());
+  return next;
+}
+
 std::int64_t unix_seconds(const AsOf& as_of) {
   return chrono::seconds{as_of.date.time_since_epoch() + as_of.time_of_day - as_of.offset}.count();
 }

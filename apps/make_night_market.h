@@ -40,6 +40,8 @@ struct AsOf {
 };
 // Reads the one form "2031-03-14T16:00:00-05:00"; nothing for any other text.
 std::optional<AsOf> parse_as_of(std::string_view text);
+// The same time of day on the next day that is no weekend.
+AsOf next_business_day(const AsOf& as_of);
 // Seconds since 1970 in UTC.
 std::int64_t unix_seconds(const AsOf& as_of);
 

@@ -74,6 +74,8 @@ std::vector<MadeQuote> make_chain(const World& world, const ChainPlan& plan, Quo
   // Two calendar rules can name one day, depending on the as-of.
   std::sort(expiries.begin(), expiries.end());
   expiries.erase(std::unique(expiries.begin(), expiries.end()), expiries.end());
+  std::erase_if(expiries,
+                [&](const Expiry& expiry) { return !(year_fraction(world.as_of, expiry) > 0); });
 
   std::vector<MadeQuote> quotes;
   for (const Expiry& expiry : expiries) {

@@ -73,6 +73,7 @@ struct ChainPlan {
 struct World {
   std::uint64_t seed = 1;
   AsOf as_of;
+  AsOf listed;  // when the contracts were listed: the as-of, or on the next night that before it
   RateCurve rates;
 };
 
@@ -83,8 +84,8 @@ void quote_price(MadeQuote& quote, double price, double distance, const SpreadRu
 void quote_vol(MadeQuote& quote, double vol, double distance, Stream& random);
 
 enum class QuotedIn : std::uint8_t { price, vol };
-// Every contract of the plan by expiry, strike, call before put. In volatility only the
-// side out of the money is quoted.
+// Every contract of the plan that has not expired, by expiry, strike, call before put. In
+// volatility only the side out of the money is quoted.
 std::vector<MadeQuote> make_chain(const World& world, const ChainPlan& plan,
                                   QuotedIn unit = QuotedIn::price);
 

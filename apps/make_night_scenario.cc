@@ -29,12 +29,43 @@ void mark(MadeQuote& quote, const std::string& kind, const std::string& expected
   quote.fault = Fault{kind, expected};
 }
 
+// --- What is different on the next night ------------------------------------------
+
+bool next_night(const World& world) { return world.as_of.date != world.listed.date; }
+
+// One name whose level jumps, one whose skew steepens, and an index on an ordinary day.
+Name moved(const World& world, Name name) {
+  if (!next_night(world)) return name;
+  if (name.code == "KELPWK") {
+    name.smile.vol_short += 0.045;
+    name.smile.vol_long += 0.045;
+  }
+  if (name.code == "LANTRN") name.smile.skew = -0.66;
+  if (name.code == "QNOR") {
+    name.spot += 1'705;
+    name.smile.vol_short += 0.004;
+  }
+  return name;
+}
+
+std::string next_night_lines(const World& world) {
+  const auto line = [](const char* name, const std::string& expiry, const char* kind,
+                       const char* expected) {
+    return fmt::format("{}\t{}\t{}\t{}\n", name, expiry, kind, expected);
+  };
+  return "underlying\texpiry\tkind\texpected\n" + line("KELPWK", "", "level", "compared") +
+         line("LANTRN", "", "skew", "compared") +
+         line("BRAKSH", iso_date(third_friday(world.listed, 6)), "expiry-gone", "vanished-expiry") +
+         line("SALTPN", "", "file-of-the-night-before", "stale") +
+         line("TRWLR", "", "underlying-gone", "carried");
+}
+
 // --- The names -----------------------------------------------------------------
 
 Quotes index_chain(const World& world) {
-  const AsOf& as_of = world.as_of;
+  const AsOf& as_of = world.listed;
   ChainPlan plan;
-  plan.name = {"QNOR", 284'635, 0.014, {0.145, 0.195, 1.8, -0.68, 1.05}};
+  plan.name = moved(world, {"QNOR", 284'635, 0.014, {0.145, 0.195, 1.8, -0.68, 1.05}});
   plan.expiries = {{days_ahead(as_of, 3)}, {third_friday(as_of, 0)}, {days_ahead(as_of, 14)}};
   for (const int count : {0, 1, 2, 3, 6, 9, 12, 24}) {
     plan.expiries.push_back({third_friday(as_of, count), Settled::morning});
@@ -46,8 +77,8 @@ Quotes index_chain(const World& world) {
 
 ChainPlan share(const World& world, Name name) {
   ChainPlan plan;
-  plan.name = std::move(name);
-  plan.expiries = monthlies(world.as_of, {0, 1, 3, 6});
+  plan.name = moved(world, std::move(name));
+  plan.expiries = monthlies(world.listed, {0, 1, 3, 6});
   plan.strikes = {{50, 100, 250, 500, 1000, 2500, 5000}, 2.8, 2.8, 44};
   plan.spread = {0.01, 0.006, 0.12, kShareTicks};
   return plan;
@@ -60,7 +91,9 @@ ChainPlan lantern(const World& world) {
   return share(world, {"LANTRN", 13'215, 0.008, {0.36, 0.33, 1.0, -0.38, 0.9}});
 }
 ChainPlan brackish(const World& world) {
-  return share(world, {"BRAKSH", 126'240, 0.017, {0.23, 0.25, 1.5, -0.5, 1.0}});
+  ChainPlan plan = share(world, {"BRAKSH", 126'240, 0.017, {0.23, 0.25, 1.5, -0.5, 1.0}});
+  if (next_night(world)) plan.expiries.pop_back();
+  return plan;
 }
 ChainPlan marsh(const World& world) {
   return share(world, {"MARSHG", 7'655, 0.0, {0.41, 0.37, 0.8, -0.3, 0.85}});
@@ -69,7 +102,7 @@ ChainPlan marsh(const World& world) {
 // Nobody bids for any of its contracts.
 Quotes foghorn(const World& world) {
   ChainPlan plan = share(world, {"FOGHRN", 915, 0.0, {0.6, 0.55, 1.0, -0.2, 0.6}});
-  plan.expiries = monthlies(world.as_of, {1, 3});
+  plan.expiries = monthlies(world.listed, {1, 3});
   plan.strikes.most = 12;
   Quotes quotes = make_chain(world, plan);
   for (MadeQuote& quote : quotes) {
@@ -106,7 +139,7 @@ Quotes tidelock_quotes(const World& world) {
 
 ChainPlan halyard(const World& world) {
   ChainPlan plan = share(world, {"HALYRD", 6'440, 0.019, {0.31, 0.3, 1.0, -0.4, 0.9}});
-  plan.expiries = monthlies(world.as_of, {3});
+  plan.expiries = monthlies(world.listed, {3});
   plan.strikes = {{100, 250}, 4.2, 4.2, 90};
   return plan;
 }
@@ -122,13 +155,13 @@ ChainPlan drydock(const World& world) {
 }
 ChainPlan eelrun(const World& world) {
   ChainPlan plan = share(world, {"EELRUN", 15'850, 0.012, {0.34, 0.28, 1.4, -0.25, 0.9}});
-  plan.expiries = monthlies(world.as_of, {0, 1, 2, 3, 6, 12});
+  plan.expiries = monthlies(world.listed, {0, 1, 2, 3, 6, 12});
   plan.strikes = {{250, 500, 1000, 2500}, 2.5, 2.5, 17};
   return plan;
 }
 ChainPlan saltpan(const World& world) {
   ChainPlan plan = share(world, {"SALTPN", 8'550, 0.051, {0.33, 0.26, 1.6, 0.2, 0.9}, true});
-  plan.expiries = monthlies(world.as_of, {1, 3, 6, 9});
+  plan.expiries = monthlies(world.listed, {1, 3, 6, 9});
   plan.strikes = {{50, 100, 250, 500}, 2.6, 2.6, 40};
   return plan;
 }
@@ -149,8 +182,8 @@ std::vector<MadeQuote*> targets(Quotes& quotes, const std::string& name, const D
 }
 
 void plant_in_kelp(Quotes& quotes, const World& world) {
-  const Date near = third_friday(world.as_of, 1);
-  const Date far = third_friday(world.as_of, 6);
+  const Date near = third_friday(world.listed, 1);
+  const Date far = third_friday(world.listed, 6);
   for (MadeQuote* quote : targets(quotes, "KELPWK", near, Side::call, 3)) {
     std::swap(quote->bid, quote->ask);
     mark(*quote, "crossed", "crossed");
@@ -181,16 +214,16 @@ void plant_damage(Quotes& quotes, const Date& expiry) {
 }
 
 void plant_in_lantern(Quotes& quotes, const World& world) {
-  for (MadeQuote* quote : targets(quotes, "LANTRN", third_friday(world.as_of, 1), Side::put, 3)) {
+  for (MadeQuote* quote : targets(quotes, "LANTRN", third_friday(world.listed, 1), Side::put, 3)) {
     quote->quoted -= 3 * kDay;
     mark(*quote, "stale", "stale");
   }
-  for (MadeQuote* quote : targets(quotes, "LANTRN", third_friday(world.as_of, 3), Side::call, 3)) {
+  for (MadeQuote* quote : targets(quotes, "LANTRN", third_friday(world.listed, 3), Side::call, 3)) {
     // A spread of 1.64 times the mid.
     quote->ask = *quote->bid * 10;
     mark(*quote, "wide", "wide");
   }
-  plant_damage(quotes, third_friday(world.as_of, 6));
+  plant_damage(quotes, third_friday(world.listed, 6));
 }
 
 // Moves the call and the put of one strike together, so that parity holds and only
@@ -209,14 +242,14 @@ void lift_strike(Quotes& quotes, const MadeQuote& like, Cents by, const std::str
 
 void plant_in_marsh(Quotes& quotes, const World& world) {
   // Two middle calls sell for 30 cents more than both wings cost.
-  const auto fly = out_of_the_money(quotes, "MARSHG", third_friday(world.as_of, 3), Side::call);
+  const auto fly = out_of_the_money(quotes, "MARSHG", third_friday(world.listed, 3), Side::call);
   if (fly.size() > 4) {
     const MadeQuote& body = quotes[fly[3]];
     const Cents wings = *quotes[fly[2]].ask + *quotes[fly[4]].ask;
     lift_strike(quotes, body, (wings + 30 - 2 * *body.bid + 1) / 2, "butterfly-break");
   }
   // The higher strike sells for 10 cents more than the lower one costs.
-  const auto step = out_of_the_money(quotes, "MARSHG", third_friday(world.as_of, 1), Side::call);
+  const auto step = out_of_the_money(quotes, "MARSHG", third_friday(world.listed, 1), Side::call);
   if (step.size() > 4) {
     const MadeQuote& higher = quotes[step[3]];
     lift_strike(quotes, higher, *quotes[step[2]].ask + 10 - *higher.bid, "vertical-break");
@@ -225,7 +258,7 @@ void plant_in_marsh(Quotes& quotes, const World& world) {
 
 // Contracts adjusted for a past distribution: another multiplier, strikes off the ladder.
 void plant_adjusted(Quotes& quotes, const World& world) {
-  const auto calls = out_of_the_money(quotes, "BRAKSH", third_friday(world.as_of, 3), Side::call);
+  const auto calls = out_of_the_money(quotes, "BRAKSH", third_friday(world.listed, 3), Side::call);
   Quotes more;
   for (std::size_t i = 0; i < calls.size() && i < 2; ++i) {
     for (const std::size_t offset : {0U, 1U}) {  // the call and the put after it
@@ -240,7 +273,7 @@ void plant_adjusted(Quotes& quotes, const World& world) {
 
 // Rows of an expiry that has passed, still listed.
 void plant_expired(Quotes& quotes, const World& world) {
-  const Date past = third_friday(world.as_of, -1);
+  const Date past = third_friday(world.listed, -1);
   for (const Cents strike : {4'500, 4'750, 5'000}) {
     for (const Side side : {Side::call, Side::put}) {
       MadeQuote quote;
@@ -261,7 +294,7 @@ void plant_expired(Quotes& quotes, const World& world) {
 // The same rows again, and rows requoted since: the later line, then the older quote,
 // is the one to leave out.
 void plant_repeats(Quotes& quotes, const World& world) {
-  const Date expiry = third_friday(world.as_of, 1);
+  const Date expiry = third_friday(world.listed, 1);
   Quotes more;
   for (const MadeQuote* quote : targets(quotes, "BRAKSH", expiry, Side::put, 4)) {
     more.push_back(*quote);
@@ -326,10 +359,11 @@ void plant_outliers(Quotes& quotes, const World& world, const ChainPlan& plan) {
 Quotes symbols(const World& world) {
   const ChainPlan flat = trawler(world);
   const ChainPlan dock = drydock(world);
-  Quotes quotes = make_chain(world, flat);
+  Quotes quotes;
+  if (!next_night(world)) append(quotes, make_chain(world, flat));
   append(quotes, make_chain(world, dock));
   for (MadeQuote* quote :
-       targets(quotes, flat.name.code, third_friday(world.as_of, 3), Side::call, 2)) {
+       targets(quotes, flat.name.code, third_friday(world.listed, 3), Side::call, 2)) {
     quote->quoted -= 2 * kDay;
     mark(*quote, "stale", "stale");
   }
@@ -359,7 +393,10 @@ std::vector<NightFile> demo_night(const World& world) {
   const Quotes ladder_quotes = ladder(world);
   const Quotes symbol_quotes = symbols(world);
   const Quotes vol_quotes = make_chain(world, eelrun(world), QuotedIn::vol);
-  const Quotes settlement_quotes = settlements(world);
+  // The next night's settlements have not come: there is the file of the night before.
+  World settled = world;
+  settled.as_of = world.listed;
+  const Quotes settlement_quotes = settlements(settled);
 
   std::vector<NightFile> files{{"index_chain.csv.gz", index_text(index_quotes), Packing::gzip},
                                {"shares_a.csv", shares_text(share_quotes, world.as_of)},
@@ -374,6 +411,7 @@ std::vector<NightFile> demo_night(const World& world) {
                           planted_lines("shares_a.csv", share_quotes, 1) +
                           planted_lines("ladder.csv", ladder_quotes, 2) +
                           planted_lines("osi_symbols.csv.zst", symbol_quotes, 1)});
+  if (next_night(world)) files.push_back({"changes.tsv", next_night_lines(world)});
   return files;
 }
 

@@ -9,7 +9,8 @@
 namespace duskgrid::make_night {
 
 // Every file of the night: the quotes, night.toml, and planted.tsv with one line a
-// planted fault.
+// planted fault. On a night after that of the listing also changes.tsv, with one line a planted
+// change since.
 std::vector<NightFile> demo_night(const World& world);
 
 }  // namespace duskgrid::make_night

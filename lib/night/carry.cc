@@ -92,7 +92,7 @@ class Carrier {
     return std::nullopt;
   }
 
-  // Tonight's forward and discount factor of an old slice; see docs/methods.md, section 12.
+  // Tonight's forward and discount factor of an old slice; see docs/methods.md, section 9.3.
   market::ForwardEstimate estimate(const surface::Slice& old, double t) const {
     if (const auto* row = row_of(old.expiry)) return row->estimate;
     const double passed = old.year_fraction - t;

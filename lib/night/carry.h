@@ -12,7 +12,7 @@ namespace duskgrid::night {
 // Gives `marked`, which has no surface, the one of `past`: at equal log-moneyness and remaining
 // time where that can be restated and is proved free of arbitrage, else at equal expiry where that
 // is, with forwards of tonight where there are any. Else it stays refused, with a message that says
-// why. docs/methods.md, section 12.
+// why. docs/methods.md, section 9.3.
 void carry(MarkedUnderlying& marked, const publish::PastUnderlying& past, const NightConfig& config,
            const ResolvedNight& night);
 

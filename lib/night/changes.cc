@@ -86,7 +86,7 @@ void flag_changes(publish::UnderlyingRecord& record, const UnderlyingChange& cha
   if (count == 0) return;
   const auto& most = *change.largest();
   flag(record, fmt::format("{} of {} nodes to sign off: up to {:+.4f} of vol, at {}, strike {:.6g}",
-                           count, change.nodes.size(), most.change,
+                           count, change.nodes.size(), most.move,
                            quotes::format_instant(clock, most.node.expiry), most.node.strike));
 }
 

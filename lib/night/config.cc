@@ -289,10 +289,11 @@ const std::vector<Field<FlagOptions>>& flag_fields() {
 const std::vector<Field<publish::CompareOptions>>& compare_fields() {
   using C = publish::CompareOptions;
   static const std::vector<Field<C>> fields{
-      field<C>("tolerance", "> 0, decimals of vol",
-               "change of a node since the night before, at equal log-moneyness, that is to be "
-               "signed off",
-               DUSKGRID_AT(tolerance), to_number),
+      field<C>(
+          "tolerance", "> 0, decimals of vol",
+          "change of a node since the night before, at equal log-moneyness and less roll-down, "
+          "that is to be signed off",
+          DUSKGRID_AT(tolerance), to_number),
       field<C>("times_typical", ">= 0",
                "the same as a multiple of the median nightly change of the underlying's "
                "at-the-money vol at that time to expiry; 0 for none",

@@ -80,7 +80,7 @@ std::optional<TimePair> pair_of(const StoredSurface& before, const GridNode& nod
 }
 
 SignOff sign_off_of(const NodeChange& node, const CompareOptions& options) {
-  const double size = std::abs(node.change);
+  const double size = std::abs(node.move);
   const bool wide = !(size <= options.tolerance);
   const bool odd =
       options.times_typical > 0 && node.typical > 0 && size > options.times_typical * node.typical;
@@ -99,7 +99,7 @@ void compare_time(const StoredSurface& before, const StoredSurface& now,
       new_now(now.surface, t);
   const SurfaceMove move(old_now, new_now);
   for (const auto& node : nodes) {
-    NodeChange change{node, std::log(node.strike / node.forward), 0, 0, 0, 0, {}, typical, {}};
+    NodeChange change{node, std::log(node.strike / node.forward), 0, 0, 0, 0, {}, 0, typical, {}};
     const double k = change.k;
     change.vol_old = vol_of(old_then, k);
     change.vol_old_at_strike = vol_of(old_then, std::log(node.strike / pair->forward_old));
@@ -109,7 +109,8 @@ void compare_time(const StoredSurface& before, const StoredSurface& now,
     parts.forward = change.vol_old - change.vol_old_at_strike;
     parts.roll_down = vol_of(old_now, k) - change.vol_old;
     move.split(k, parts);
-    parts.rest = change.change - parts.roll_down - parts.level - parts.skew - parts.curvature;
+    change.move = change.change - parts.roll_down;
+    parts.rest = change.move - parts.level - parts.skew - parts.curvature;
     if (!std::isfinite(change.change_at_strike) || !std::isfinite(parts.rest)) continue;
     change.sign_off = sign_off_of(change, options);
     out.push_back(std::move(change));
@@ -207,7 +208,7 @@ std::int64_t UnderlyingChange::to_sign_off() const {
 
 const NodeChange* UnderlyingChange::largest() const {
   const auto most = std::max_element(nodes.begin(), nodes.end(), [](const auto& a, const auto& b) {
-    return std::abs(a.change) < std::abs(b.change);
+    return std::abs(a.move) < std::abs(b.move);
   });
   return most == nodes.end() ? nullptr : &*most;
 }
@@ -259,7 +260,9 @@ std::string changes_lines(const UnderlyingChange& change, Axis axis, const quote
   InstantTexts instants(clock);
   const std::string name = csv_text(change.underlying);
   std::string out;
-  constexpr int kOtherCells = 17;  // after the expiry
+  constexpr int kOtherCells = 18;  // after the expiry
+  // A change of volatilities by less is that of their last digits.
+  constexpr double kRounding = 1e-15;
   const auto event = [&](ChangeState state, std::string_view expiry) {
     out += fmt::format("{},{},{}{:,>{}}\n", name, word(state), expiry, "", kOtherCells);
   };
@@ -271,11 +274,14 @@ std::string changes_lines(const UnderlyingChange& change, Axis axis, const quote
     out += fmt::format("{},{},{},{},{}", name, word(change.state), instants.of(n.node.expiry),
                        n.node.tenor, word(axis));
     const auto& p = n.parts;
-    for (const double value :
-         {n.node.point, n.node.strike, n.k, n.vol_old, n.node.vol, n.change, n.change_at_strike,
-          p.forward, p.roll_down, p.level, p.skew, p.curvature, p.rest, n.typical}) {
+    for (const double value : {n.node.point, n.node.strike, n.k, n.vol_old, n.node.vol}) {
       out += ',';
       out += csv_number(value);
+    }
+    for (const double value : {n.change, n.change_at_strike, p.forward, p.roll_down, n.move,
+                               p.level, p.skew, p.curvature, p.rest, n.typical}) {
+      out += ',';
+      out += csv_number(std::abs(value) < kRounding ? 0 : value);
     }
     out += fmt::format(",{}\n", word(n.sign_off));
   }

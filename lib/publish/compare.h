@@ -16,8 +16,8 @@
 namespace duskgrid::publish {
 
 struct CompareOptions {
-  // Change of a node's volatility at equal log-moneyness that wants a signature. Decimals of vol,
-  // range: > 0. Smaller asks for more of them.
+  // Change of a node's volatility at equal log-moneyness, less roll-down, that wants a signature.
+  // Decimals of vol, range: > 0. Smaller asks for more of them.
   double tolerance = 0.03;
   // The same in terms of the node's own past: so many times the median absolute change, from night
   // to night, of the underlying's at-the-money volatility at that time to expiry. Range: >= 0; 0
@@ -32,11 +32,11 @@ struct CompareOptions {
 
 // Parts of a change of volatility from the old node to the new one, decimals a year. They add up to
 // the change at equal strike; without `forward`, to the change at equal log-moneyness. Exact
-// definitions: docs/methods.md, section 11.
+// definitions: docs/methods.md, section 9.2.
 struct ChangeParts {
-  double forward;    // along the old smile, as ln(K/F) of the strike moved with the forward
-  double roll_down;  // along the old surface, as time to expiry went by
-  double level, skew, curvature;  // the surface itself, within one deviation of the forward
+  double forward;                 // along the old smile, as ln(K/F) of the strike moved
+  double roll_down;               // along the old surface, as time to expiry went by
+  double level, skew, curvature;  // of the surface itself, within one deviation of the forward
   double rest;                    // what those leave
 };
 
@@ -50,6 +50,7 @@ struct NodeChange {
   double vol_old_at_strike;
   double change, change_at_strike;
   ChangeParts parts;
+  double move;     // of the surface itself: change less roll_down
   double typical;  // the median named above, kAbsent where too few nights are known
   SignOff sign_off;
 };
@@ -92,7 +93,7 @@ struct UnderlyingChange {
   std::vector<NodeChange> nodes;  // of expiries and tenors that both have, in their order
 
   std::int64_t to_sign_off() const;
-  const NodeChange* largest() const;  // by change at equal log-moneyness; none without nodes
+  const NodeChange* largest() const;  // by move; none without nodes
 };
 
 // `nodes` are those of the new surface's grid. A node of a listed expiry is compared with the old
@@ -104,7 +105,7 @@ UnderlyingChange compare_underlying(const std::string& underlying, const Compare
 
 inline constexpr std::string_view kChangesHeader =
     "underlying,state,expiry,tenor,axis,point,strike,log_moneyness,vol_old,vol,change,"
-    "change_at_strike,forward,roll_down,level,skew,curvature,rest,typical,sign_off\n";
+    "change_at_strike,forward,roll_down,move,level,skew,curvature,rest,typical,sign_off\n";
 // Lines of changes.csv, with their line feeds: what is new or gone, then the nodes.
 std::string changes_lines(const UnderlyingChange& change, Axis axis, const quotes::Clock& clock);
 

@@ -75,5 +75,27 @@ TEST(AddTenor, ZoneClockKeepsTheLocalTimeOverAClockChange) {
   EXPECT_EQ(add_tenor(winter, {1, TenorUnit::week}, eastern), sys_days{2031y / March / 14} + 20h);
 }
 
+TEST(BusinessDays, WeekendsAndHolidaysAreSkipped) {
+  const sys_days friday = 2031y / March / 14, monday = 2031y / March / 17;
+  EXPECT_EQ(business_days(friday, monday, {}), 1);
+  EXPECT_EQ(business_days(friday, friday + days{2}, {}), 0);
+  EXPECT_EQ(business_days(friday, friday + days{14}, {}), 10);
+  EXPECT_EQ(business_days(friday, friday + days{14}, {monday, friday + days{12}}), 8);
+  // A holiday on a weekend counts once.
+  EXPECT_EQ(business_days(friday, monday, {friday + days{1}}), 1);
+}
+
+TEST(BusinessDays, BackwardOrTheSameDayIsNone) {
+  const sys_days friday = 2031y / March / 14;
+  EXPECT_EQ(business_days(friday, friday, {}), 0);
+  EXPECT_EQ(business_days(friday, friday - days{30}, {}), 0);
+}
+
+TEST(LocalDate, IsThatOfTheClock) {
+  const auto late = local(2031y / March / 14, 23h);  // 04:00 of the 15th in UTC
+  EXPECT_EQ(local_date(late, kFiveWest), sys_days{2031y / March / 14});
+  EXPECT_EQ(local_date(late, Clock{"", minutes{0}}), sys_days{2031y / March / 15});
+}
+
 }  // namespace
 }  // namespace duskgrid::market

@@ -297,7 +297,7 @@ TEST_F(RunNightTest, ProgressTellsEveryStageAndEveryUnderlyingOnce) {
     marked.push_back(done);
   };
   ASSERT_TRUE(run_night(*config, {folder_ + "/out", 2, progress}).ok());
-  EXPECT_EQ(stages, (std::vector<std::string>{"read", "clean", "mark", "publish"}));
+  EXPECT_EQ(stages, (std::vector<std::string>{"read", "clean", "mark", "carry", "publish"}));
   EXPECT_EQ(marked, (std::vector<std::int64_t>{1, 2, 3}));
   const json timings = json::parse(content_of(folder_ + "/out/2031-03-14/timings.json"));
   ASSERT_EQ(timings["stages"].size(), stages.size());
