@@ -83,9 +83,10 @@ std::string points(double vol) { return fmt::format("{:+.2f}", 100 * vol); }
 void add_row(console::Table& table, const UnderlyingChange& change) {
   const auto* most = change.largest();
   const auto count = static_cast<std::int64_t>(change.nodes.size());
-  std::vector<std::string> cells{
-      console::shortened(change.underlying, 20), std::string(publish::word(change.state)),
-      most ? console::grouped(count) : "", most ? console::grouped(change.to_sign_off()) : ""};
+  std::vector<std::string> cells{console::shortened(change.underlying, 20),
+                                 std::string(publish::word(change.state)),
+                                 count > 0 ? console::grouped(count) : "",
+                                 count > 0 ? console::grouped(change.to_sign_off()) : ""};
   const auto& p = most ? most->parts : publish::ChangeParts{};
   for (const double part : {most ? most->move : 0, p.level, p.skew, p.curvature, p.rest})
     cells.push_back(most ? points(part) : "");

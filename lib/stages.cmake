@@ -30,7 +30,8 @@ add_stage(publish
     points_file.cc run_audit.cc run_folder.cc run_record.cc surface_json.cc table_file.cc tables.cc
     text.cc values.cc
   NEEDS duskgrid::arbitrage
-  PRIVATE_NEEDS Boost::boost OpenSSL::Crypto SQLite::SQLite3 fmt::fmt nlohmann_json::nlohmann_json)
+  PRIVATE_NEEDS Boost::boost Boost::iostreams OpenSSL::Crypto SQLite::SQLite3 fmt::fmt
+    nlohmann_json::nlohmann_json)
 
 add_stage(night
   SOURCES carry.cc changes.cc config.cc expiries.cc mark.cc previous.cc run.cc slice_market.cc

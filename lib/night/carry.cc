@@ -9,6 +9,7 @@
 #include "arbitrage/certificate.h"
 #include "market/dates.h"
 #include "market/day_count.h"
+#include "market/dividends.h"
 #include "surface/carry.h"
 
 namespace duskgrid::night {
@@ -92,6 +93,17 @@ class Carrier {
     return std::nullopt;
   }
 
+  // From tonight's spot, rate and dividends, where a borrow or carry is stated; else not above 0.
+  double financed_forward(double rate, double t) const {
+    const auto borrow = facts_.borrow ? facts_.borrow : facts_.carry;
+    if (!spot_ || !borrow) return 0;
+    std::vector<market::Dividend> dividends;
+    if (const auto dated = night_.dividends.find(out_.record.name); dated != night_.dividends.end())
+      dividends = market::dividends_after(night_.as_of.instant, dated->second);
+    const double forward = market::forward_of({*spot_, rate, *borrow, t}, dividends);
+    return std::isfinite(forward) ? forward : 0;
+  }
+
   // Tonight's forward and discount factor of an old slice; see docs/methods.md, section 9.3.
   market::ForwardEstimate estimate(const surface::Slice& old, double t) const {
     if (const auto* row = row_of(old.expiry)) return row->estimate;
@@ -107,8 +119,8 @@ class Carrier {
     if (const auto stated = stated_forward(old.expiry)) {
       out.forward = *stated;
       out.source = ForwardSource::given;
-    } else if (spot_ && facts_.carry) {
-      out.forward = *spot_ * std::exp((out.zero_rate - *facts_.carry) * t);
+    } else if (const double financed = financed_forward(out.zero_rate, t); financed > 0) {
+      out.forward = financed;
       out.source = ForwardSource::curve;
     } else {
       // Growth from the spot on; a forward is today's mean of itself where no spot is known.

@@ -187,7 +187,8 @@ Result<bool> write_history(const std::string& out, const std::vector<MarkedUnder
       }
       u.slices.push_back(s);
     }
-    if (config.history.surfaces) u.surface = publish::surface_to_json({night.as_of, *m.surface});
+    if (config.history.surfaces)
+      u.surface = publish::packed_surface(publish::surface_to_json({night.as_of, *m.surface}));
   });
   auto history = publish::History::open(out + "/" + publish::History::kFileName,
                                         publish::History::Access::write);

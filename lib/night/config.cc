@@ -298,6 +298,9 @@ const std::vector<Field<publish::CompareOptions>>& compare_fields() {
                "the same as a multiple of the median nightly change of the underlying's "
                "at-the-money vol at that time to expiry; 0 for none",
                DUSKGRID_AT(times_typical), to_number),
+      field<C>("deviations", "> 0",
+               "furthest node to be signed off, in at-the-money deviations from the forward",
+               DUSKGRID_AT(deviations), to_number),
       field<C>("least_nights", ">= 2", "nights in the history that the median needs",
                DUSKGRID_AT(least_nights), to_count),
       field<C>("most_nights", "least_nights to 1000", "nights of the history that it looks at",

@@ -8,8 +8,8 @@
 #include "arbitrage/certificate.h"
 #include "arbitrage/quote_checks.h"
 #include "arbitrage/surface_checks.h"
-#include "night/slice_market.h"
 #include "night/expiries.h"
+#include "night/slice_market.h"
 #include "pricing/black.h"
 
 namespace duskgrid::night {

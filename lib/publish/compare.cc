@@ -33,6 +33,7 @@ class SurfaceMove {
     bend_ = (right - 2 * level_ + left) / (reach_ * reach_);
   }
 
+  double deviations(double k) const { return std::abs(k) / reach_; }
   double at(double k) const { return vol_of(now_, k) - vol_of(before_, k); }
   // Beyond one deviation skew and curvature stay as they are there: a parabola carried into the
   // wings would explain nothing, and be taken back by the rest.
@@ -80,6 +81,7 @@ std::optional<TimePair> pair_of(const StoredSurface& before, const GridNode& nod
 }
 
 SignOff sign_off_of(const NodeChange& node, const CompareOptions& options) {
+  if (!node.near) return SignOff::none;
   const double size = std::abs(node.move);
   const bool wide = !(size <= options.tolerance);
   const bool odd =
@@ -99,8 +101,10 @@ void compare_time(const StoredSurface& before, const StoredSurface& now,
       new_now(now.surface, t);
   const SurfaceMove move(old_now, new_now);
   for (const auto& node : nodes) {
-    NodeChange change{node, std::log(node.strike / node.forward), 0, 0, 0, 0, {}, 0, typical, {}};
+    NodeChange change{node, std::log(node.strike / node.forward), 0, 0, 0, 0, {}, 0, false, typical,
+                      {}};
     const double k = change.k;
+    change.near = move.deviations(k) <= options.deviations;
     change.vol_old = vol_of(old_then, k);
     change.vol_old_at_strike = vol_of(old_then, std::log(node.strike / pair->forward_old));
     change.change = node.vol - change.vol_old;
@@ -183,6 +187,7 @@ double vol_at(const std::vector<TermPoint>& points, double t) {
 std::optional<std::string> CompareOptions::problem() const {
   if (!(tolerance > 0)) return fmt::format("tolerance = {}, must be > 0", tolerance);
   if (!(times_typical >= 0)) return fmt::format("times_typical = {}, must be >= 0", times_typical);
+  if (!(deviations > 0)) return fmt::format("deviations = {}, must be > 0", deviations);
   if (least_nights < 2) return fmt::format("least_nights = {}, must be >= 2", least_nights);
   if (most_nights < least_nights || most_nights > 1000)
     return fmt::format("most_nights = {}, must be least_nights to 1000", most_nights);
@@ -207,10 +212,10 @@ std::int64_t UnderlyingChange::to_sign_off() const {
 }
 
 const NodeChange* UnderlyingChange::largest() const {
-  const auto most = std::max_element(nodes.begin(), nodes.end(), [](const auto& a, const auto& b) {
-    return std::abs(a.move) < std::abs(b.move);
-  });
-  return most == nodes.end() ? nullptr : &*most;
+  const NodeChange* most = nullptr;
+  for (const auto& node : nodes)
+    if (node.near && (!most || std::abs(node.move) > std::abs(most->move))) most = &node;
+  return most;
 }
 
 double typical_change(const TermNights& nights, double t) {

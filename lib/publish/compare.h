@@ -23,6 +23,9 @@ struct CompareOptions {
   // to night, of the underlying's at-the-money volatility at that time to expiry. Range: >= 0; 0
   // asks for none. Smaller asks for more.
   double times_typical = 8;
+  // Furthest node that may want one, in at-the-money deviations from the forward. Range: > 0.
+  // Beyond it a volatility of a short expiry swings with the wing, and little hangs on it.
+  double deviations = 5;
   // Nights of the underlying that must be known for that. Range: >= 2.
   int least_nights = 10;
   // Nights before the older one of the two, itself included, that are looked at. Range: >= least.
@@ -51,6 +54,7 @@ struct NodeChange {
   double change, change_at_strike;
   ChangeParts parts;
   double move;     // of the surface itself: change less roll_down
+  bool near;       // within the deviations of the options
   double typical;  // the median named above, kAbsent where too few nights are known
   SignOff sign_off;
 };
@@ -93,7 +97,8 @@ struct UnderlyingChange {
   std::vector<NodeChange> nodes;  // of expiries and tenors that both have, in their order
 
   std::int64_t to_sign_off() const;
-  const NodeChange* largest() const;  // by move; none without nodes
+  const NodeChange* largest() const;  // by move, of near nodes; none without
+                                      // any
 };
 
 // `nodes` are those of the new surface's grid. A node of a listed expiry is compared with the old

@@ -4,10 +4,15 @@
 #include <sqlite3.h>
 
 #include <array>
+#include <boost/iostreams/device/array.hpp>
+#include <boost/iostreams/device/back_inserter.hpp>
+#include <boost/iostreams/filter/zstd.hpp>
+#include <boost/iostreams/filtering_stream.hpp>
 #include <cmath>
-#include <cstring>
 #include <filesystem>
 #include <string_view>
+#include <unordered_map>
+#include <unordered_set>
 #include <utility>
 
 namespace duskgrid::publish {
@@ -37,7 +42,7 @@ CREATE TABLE slices (night INTEGER NOT NULL REFERENCES nights, name INTEGER NOT 
     // 2: whole surfaces, and a way from a name to its nights.
     R"(
 CREATE TABLE surfaces (night INTEGER NOT NULL REFERENCES nights, name INTEGER NOT NULL
-  REFERENCES names, surface TEXT NOT NULL, PRIMARY KEY (night, name)) STRICT;
+  REFERENCES names, surface BLOB NOT NULL, PRIMARY KEY (night, name)) STRICT;
 CREATE INDEX nights_of_name ON underlyings (name, night);
 )"};
 
@@ -84,6 +89,10 @@ class Statement {
     check(sqlite3_bind_text64(held_, ++bound_, text, value.size(), SQLITE_STATIC, SQLITE_UTF8));
     return *this;
   }
+  Statement& bind_bytes(const std::string& value) {
+    check(sqlite3_bind_blob64(held_, ++bound_, value.data(), value.size(), SQLITE_STATIC));
+    return *this;
+  }
   Statement& bind_or_null(const std::string& value) {
     if (!value.empty()) return bind(std::string_view(value));
     check(sqlite3_bind_null(held_, ++bound_));
@@ -112,8 +121,9 @@ class Statement {
     return sqlite3_column_type(held_, column) == SQLITE_NULL ? quotes::kAbsent
                                                              : sqlite3_column_double(held_, column);
   }
+  // The bytes of a text, or of a blob.
   std::string text(int column) {
-    const auto* bytes = reinterpret_cast<const char*>(sqlite3_column_text(held_, column));
+    const auto* bytes = static_cast<const char*>(sqlite3_column_blob(held_, column));
     const auto size = static_cast<std::size_t>(sqlite3_column_bytes(held_, column));
     return bytes ? std::string(bytes, size) : std::string();
   }
@@ -179,6 +189,23 @@ void migrate(sqlite3* handle) {
                               History::kSchema)
                       .c_str());
   transaction.commit();
+}
+
+// Not more than any surface takes: a file may have been made to unpack without end.
+std::string unpacked(const std::string& bytes) {
+  namespace io = boost::iostreams;
+  constexpr std::size_t kMost = std::size_t{64} << 20;
+  constexpr std::size_t kBlock = std::size_t{1} << 16;
+  io::filtering_istream stream;
+  stream.push(io::zstd_decompressor());
+  stream.push(io::array_source(bytes.data(), bytes.size()));
+  stream.exceptions(std::ios::badbit);
+  std::string out, block(kBlock, '\0');
+  while (stream.read(block.data(), static_cast<std::streamsize>(kBlock)), stream.gcount() > 0) {
+    out.append(block.data(), static_cast<std::size_t>(stream.gcount()));
+    if (out.size() > kMost) throw Trouble{"holds a surface that is too large to be one"};
+  }
+  return out;
 }
 
 quotes::AsOf as_of_from(Statement& row, int first) {
@@ -253,6 +280,17 @@ Variance variance_at(const std::vector<HistorySlice>& slices, double t) {
 
 }  // namespace
 
+std::string packed_surface(const std::string& json) {
+  namespace io = boost::iostreams;
+  std::string out;
+  io::filtering_ostream stream;
+  stream.push(io::zstd_compressor(io::zstd_params(io::zstd::best_speed)));
+  stream.push(io::back_inserter(out));
+  stream.write(json.data(), static_cast<std::streamsize>(json.size()));
+  stream.reset();
+  return out;
+}
+
 HistorySlice history_slice(const surface::Slice& s) {
   const auto point = surface::smile_of(s, 0);
   HistorySlice out{s.expiry, s.year_fraction, s.forward, s.discount_factor, 0, 0, 0};
@@ -301,6 +339,16 @@ struct History::Database {
     Statement find(handle, "SELECT id FROM names WHERE name = ?");
     find.bind(std::string_view(name));
     return find.step() ? find.integer(0) : 0;
+  }
+  // Underlyings of a night that were marked from its quotes.
+  std::unordered_set<std::int64_t> marked_names(std::int64_t night) {
+    Statement find(handle,
+                   "SELECT name FROM underlyings WHERE night = ? "
+                   "AND status IN ('published', 'flagged')");
+    find.bind(night);
+    std::unordered_set<std::int64_t> names;
+    while (find.step()) names.insert(find.integer(0));
+    return names;
   }
 };
 
@@ -372,6 +420,7 @@ Result<bool> History::write_night(const HistoryNight& night) {
         .run();
     const std::int64_t id = sqlite3_last_insert_rowid(db.handle);
     Statement name(db.handle, "INSERT OR IGNORE INTO names (name) VALUES (?)");
+    Statement find_name(db.handle, "SELECT id FROM names WHERE name = ?");
     Statement underlying(db.handle,
                          "INSERT INTO underlyings (night, name, status, message, carried_from, "
                          "certified, used, inside, violations, term_slope) "
@@ -384,7 +433,9 @@ Result<bool> History::write_night(const HistoryNight& night) {
     for (const auto& u : night.underlyings) {
       const auto& r = u.record;
       name.bind(std::string_view(r.name)).run();
-      const std::int64_t name_id = db.name_id(r.name);
+      find_name.bind(std::string_view(r.name)).step();
+      const std::int64_t name_id = find_name.integer(0);
+      find_name.rewind();
       underlying.bind(id).bind(name_id).bind(word(r.status)).bind(std::string_view(r.message));
       underlying.bind_or_null(r.carried_from).bind(std::int64_t{r.certified}).bind(r.used);
       underlying.bind(r.inside).bind(r.violations).bind(u.term_slope).run();
@@ -393,8 +444,7 @@ Result<bool> History::write_night(const HistoryNight& night) {
         slice.bind(s.year_fraction).bind(s.forward).bind(s.discount_factor).bind(s.vol);
         slice.bind(s.skew).bind(s.curvature).bind(s.used).bind(s.inside).bind(s.rms_vol).run();
       }
-      if (!u.surface.empty())
-        surface.bind(id).bind(name_id).bind(std::string_view(u.surface)).run();
+      if (!u.surface.empty()) surface.bind(id).bind(name_id).bind_bytes(u.surface).run();
     }
     transaction.commit();
     return true;
@@ -450,40 +500,44 @@ Result<std::optional<std::string>> History::surface(const std::string& date,
                    "WHERE n.date = ? AND s.name = ?");
     find.bind(std::string_view(date)).bind(db.name_id(name));
     if (!find.step()) return std::nullopt;
-    return find.text(0);
+    return unpacked(find.text(0));
   });
 }
 
 Result<std::map<std::string, TermNights>> History::terms(const std::string& before, int most) {
   auto& db = *database_;
   return db.attempt([&] {
-    std::map<std::string, TermNights> out;
     std::vector<std::int64_t> nights;  // the last first
     Statement find(db.handle, "SELECT id FROM nights WHERE date < ? ORDER BY date DESC LIMIT ?");
     find.bind(std::string_view(before)).bind(std::int64_t{most});
     while (find.step()) nights.push_back(find.integer(0));
-    // One night after another, in the order in which they lie in the file.
+    // One night after another, in the order in which rows lie in the file: a join would cost more
+    // than all the rest.
+    std::unordered_map<std::int64_t, TermNights> by_id;
     Statement points(db.handle,
-                     "SELECT m.name, s.year_fraction, s.vol FROM slices s "
-                     "JOIN underlyings u ON u.night = s.night AND u.name = s.name "
-                     "JOIN names m ON m.id = s.name WHERE s.night = ? "
-                     "AND u.status IN ('published', 'flagged') ORDER BY s.name, s.expiry");
+                     "SELECT name, year_fraction, vol FROM slices WHERE night = ? "
+                     "ORDER BY name, expiry");
     for (auto night = nights.rbegin(); night != nights.rend(); ++night) {
+      const auto marked = db.marked_names(*night);
+      std::int64_t current = 0;
+      TermNights* terms = nullptr;
       points.bind(*night);
-      const std::string* current = nullptr;
-      TermNights* of_name = nullptr;
       while (points.step()) {
-        const std::string name = points.text(0);
-        if (!current || name != *current) {
-          const auto at = out.try_emplace(name).first;
-          current = &at->first;
-          of_name = &at->second;
-          of_name->emplace_back();
+        const std::int64_t id = points.integer(0);
+        if (id != current || !terms) {
+          current = id;
+          terms = marked.count(id) > 0 ? &by_id[id] : nullptr;
+          if (terms) terms->emplace_back();
         }
-        of_name->back().push_back({points.number(1), points.number(2)});
+        if (terms) terms->back().push_back({points.number(1), points.number(2)});
       }
       points.rewind();
     }
+    std::map<std::string, TermNights> out;
+    Statement names(db.handle, "SELECT id, name FROM names");
+    while (names.step())
+      if (const auto found = by_id.find(names.integer(0)); found != by_id.end())
+        out[names.text(1)] = std::move(found->second);
     return out;
   });
 }

@@ -45,8 +45,10 @@ struct HistoryUnderlying {
   UnderlyingRecord record;  // `slices` is not kept: they are counted
   double term_slope = quotes::kAbsent;
   std::vector<HistorySlice> slices;  // by expiry
-  std::string surface;               // JSON as published; empty for none
+  std::string surface;               // as packed_surface() gives it; empty for none
 };
+// The JSON of a surface in the form in which the history keeps it: a zstd frame.
+std::string packed_surface(const std::string& json);
 
 struct HistoryNight {
   std::string date;  // local date of the as-of, 2031-03-14: what names a night
@@ -78,7 +80,7 @@ class History {
   // Each has one underlying, without its surface.
   Result<std::vector<HistoryNight>> series(const std::string& underlying, const std::string& from,
                                            const std::string& to);
-  // The surface of a night as it was published; nothing when it has none.
+  // The JSON of a night's surface as it was published; nothing when it has none.
   Result<std::optional<std::string>> surface(const std::string& date,
                                              const std::string& underlying);
   // At-the-money volatilities of the last `most` nights before a date, by underlying: a night each

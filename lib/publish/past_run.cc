@@ -81,6 +81,7 @@ CompareOptions compare_of(const json& configuration) {
     CompareOptions out;
     out.tolerance = in.at("tolerance").get<double>();
     out.times_typical = in.at("times_typical").get<double>();
+    out.deviations = in.at("deviations").get<double>();
     out.least_nights = in.at("least_nights").get<int>();
     out.most_nights = in.at("most_nights").get<int>();
     return out.problem() ? CompareOptions{} : out;

@@ -27,7 +27,8 @@ HistoryNight night(int days) {
     for (const int ahead : {98, 280})
       u.slices.push_back(
           {as_of + 24h * ahead, ahead / 365.0, 101.5, 0.99, 0.2, -0.3, 1.5, 40, 39, 0.001});
-    u.surface = std::string(3000, 'x');
+    for (int i = 0; i < 500; ++i) u.surface += std::to_string(i * i);
+    u.surface = packed_surface(u.surface);
     out.underlyings.push_back(std::move(u));
   }
   return out;
@@ -59,7 +60,8 @@ TEST(FuzzHistory, DamagedFilesAreSaidToBeSoOrRead) {
     if (auto history = History::open(path, History::Access::read, 10ms)) {
       const auto series = (*history)->series("HALYRD", "", "");
       const auto terms = (*history)->terms("2031-03-20", 10);
-      sound_run = series.ok() && terms.ok();
+      const auto surface = (*history)->surface("2031-03-14", "HALYRD");
+      sound_run = series.ok() && terms.ok() && surface.ok();
       for (const auto* failed :
            {series.ok() ? nullptr : &series.failure(), terms.ok() ? nullptr : &terms.failure()}) {
         EXPECT_TRUE(!failed || !failed->detail.empty());

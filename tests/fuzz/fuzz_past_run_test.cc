@@ -57,7 +57,7 @@ std::string account() {
                   {"", std::chrono::minutes{-300}}};
   record.configuration =
       R"({"zone": "", "grid": {"axis": "moneyness", "points": [0.9, 1.1], "tenors": ["3M", "1Y"]},
-          "compare": {"tolerance": 0.02, "times_typical": 5.0, "least_nights": 4,
+          "compare": {"tolerance": 0.02, "times_typical": 5.0, "deviations": 4, "least_nights": 4,
           "most_nights": 9}})";
   record.underlyings.push_back({"HALYRD", Status::flagged, true, 2, 8, 7, 0, "", "2 of 3"});
   record.underlyings.push_back(

@@ -84,9 +84,11 @@ TEST(CompareUnderlying, FlatShiftIsLevelAlone) {
     for (const double other :
          {n.parts.forward, n.parts.roll_down, n.parts.skew, n.parts.curvature, n.parts.rest})
       EXPECT_NEAR(other, 0, kRounding);
-    EXPECT_EQ(n.sign_off, SignOff::tolerance);
+    // 95 days at 20 %: moneyness 0.5 and 0.6 are 6.8 and 5.006 deviations away.
+    EXPECT_EQ(n.near, n.node.point > 0.65) << n.node.point;
+    EXPECT_EQ(n.sign_off, n.near ? SignOff::tolerance : SignOff::none);
   }
-  EXPECT_EQ(change.to_sign_off(), static_cast<std::int64_t>(change.nodes.size()));
+  EXPECT_EQ(change.to_sign_off(), static_cast<std::int64_t>(change.nodes.size()) - 2);
 }
 
 TEST(CompareUnderlying, SteeperSkewLeavesTheLevelAndRaisesLowStrikes) {
@@ -223,7 +225,7 @@ TEST(CompareUnderlying, MoveIsJudgedByTheTypicalOneOnceEnoughNightsAreKnown) {
   options.tolerance = 0.03;
   options.times_typical = 8;
   options.least_nights = 10;
-  const auto why = [&] { return compared(before, now, past, options).nodes.front().sign_off; };
+  const auto why = [&] { return compared(before, now, past, options).nodes[3].sign_off; };
   EXPECT_EQ(why(), SignOff::history);
   options.tolerance = 0.005;
   EXPECT_EQ(why(), SignOff::both);
@@ -251,6 +253,7 @@ TEST(CompareOptions, RangesAreChecked) {
   EXPECT_EQ(CompareOptions{}.problem(), std::nullopt);
   EXPECT_TRUE((CompareOptions{.tolerance = 0}).problem());
   EXPECT_TRUE((CompareOptions{.times_typical = -1}).problem());
+  EXPECT_TRUE((CompareOptions{.deviations = 0}).problem());
   EXPECT_TRUE((CompareOptions{.least_nights = 1}).problem());
   EXPECT_TRUE((CompareOptions{.least_nights = 30, .most_nights = 20}).problem());
 }

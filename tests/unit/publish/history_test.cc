@@ -22,6 +22,10 @@ const quotes::Instant kFriday = std::chrono::sys_days{std::chrono::year{2031} / 
 // A volatility from a total variance and back.
 constexpr double kRounding = 1e-14;
 
+std::string json_of(const std::string& name) {
+  return "{\"form\": \"a surface of " + name + "\"}\n";
+}
+
 HistoryUnderlying underlying(const std::string& name, double vol,
                              Status status = Status::published) {
   HistoryUnderlying u;
@@ -29,7 +33,7 @@ HistoryUnderlying underlying(const std::string& name, double vol,
   if (status == Status::refused) return u;
   u.term_slope = 0.01;
   u.slices = {{kFriday + 24h * 98, 98 / 365.0, 101.5, 0.99, vol, -0.3, 1.5, 40, 39, 0.001}};
-  u.surface = "{\"form\": \"a surface of " + name + "\"}\n";
+  u.surface = packed_surface(json_of(name));
   return u;
 }
 
@@ -103,8 +107,20 @@ TEST_F(HistoryTest, NightReadsBackAsItWasWritten) {
   EXPECT_EQ(s.used, wrote.used);
   EXPECT_EQ(s.inside, wrote.inside);
   EXPECT_EQ(s.rms_vol, wrote.rms_vol);
-  EXPECT_EQ(history->surface("2031-03-14", "HALYRD").value(), underlying("HALYRD", 0.2).surface);
+  EXPECT_EQ(history->surface("2031-03-14", "HALYRD").value(), json_of("HALYRD"));
   EXPECT_EQ(history->surface("2031-03-15", "HALYRD").value(), std::nullopt);
+}
+
+TEST_F(HistoryTest, SurfaceThatCannotBeUnpackedIsSaidToBeSo) {
+  auto u = underlying("A", 0.2);
+  u.surface = "not a frame";
+  auto history = opened();
+  ASSERT_TRUE(history->write_night(night(0, {u})).ok());
+  EXPECT_FALSE(history->surface("2031-03-14", "A").ok());
+  // What unpacks to over 64 MiB is no surface.
+  u.surface = packed_surface(std::string(std::size_t{65} << 20, ' '));
+  ASSERT_TRUE(history->write_night(night(0, {u})).ok());
+  EXPECT_FALSE(history->surface("2031-03-14", "A").ok());
 }
 
 TEST_F(HistoryTest, HostileNamesAreTextAndNothingElse) {
@@ -154,7 +170,8 @@ TEST_F(HistoryTest, SeriesKeepsToItsDates) {
     ASSERT_TRUE(history->write_night(night(day, {underlying("A", 0.2)})).ok());
   const auto dates = [&](const char* from, const char* to) {
     std::string out;
-    for (const auto& n : *history->series("A", from, to)) out += n.date.substr(8) + " ";
+    const auto series = history->series("A", from, to);
+    for (const auto& n : *series) out += n.date.substr(8) + " ";
     return out;
   };
   EXPECT_EQ(dates("", ""), "14 17 18 19 ");
@@ -174,7 +191,8 @@ TEST_F(HistoryTest, TermsAreThoseOfMarkedNightsBeforeADateInOrder) {
   ASSERT_TRUE(history->write_night(night(7, {underlying("A", 0.99)})).ok());
   const auto vols = [&](int most) {
     std::vector<double> out;
-    for (const auto& n : history->terms("2031-03-21", most)->at("A")) out.push_back(n.at(0).vol);
+    const auto terms = history->terms("2031-03-21", most);
+    for (const auto& n : terms->at("A")) out.push_back(n.at(0).vol);
     return out;
   };
   EXPECT_EQ(vols(20), (std::vector{0.21, 0.22, 0.23}));

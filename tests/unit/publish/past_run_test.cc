@@ -18,7 +18,7 @@ const quotes::Instant kFriday = std::chrono::sys_days{std::chrono::year{2031} / 
 
 constexpr const char* kConfiguration =
     R"({"zone": "", "grid": {"axis": "log_moneyness", "points": [-0.1, 0.1], "tenors": ["3M"]},
-        "compare": {"tolerance": 0.02, "times_typical": 5.0, "least_nights": 4, "most_nights": 9}})";
+        "compare": {"tolerance": 0.02, "times_typical": 5.0, "deviations": 4, "least_nights": 4, "most_nights": 9}})";
 
 class PastRunTest : public testing::Test {
  protected:
@@ -61,6 +61,7 @@ TEST_F(PastRunTest, RunReadsBackAsItWasWritten) {
   EXPECT_EQ(run->grid.points, (std::vector{-0.1, 0.1}));
   EXPECT_EQ(run->grid.tenor_words, (std::vector<std::string>{"3M"}));
   EXPECT_EQ(run->compare.tolerance, 0.02);
+  EXPECT_EQ(run->compare.deviations, 4);
   EXPECT_EQ(run->compare.most_nights, 9);
   ASSERT_EQ(run->underlyings.size(), 2U);
   const auto& u = run->underlyings.at("=A,B");
