@@ -68,6 +68,10 @@ Result<Compared> compare_files(const CompareArguments& args) {
   const auto now = publish::read_stored_surface(args.now);
   if (!now) return now.failure();
   if (!(before->as_of.instant < now->as_of.instant)) return wrong_order();
+  if (before->surface.underlying != now->surface.underlying)
+    return Failure{Fault::usage, "",
+                   "the two are surfaces of different names: " + before->surface.underlying +
+                       " and " + now->surface.underlying};
   publish::CompareOptions options;
   if (args.tolerance > 0) options.tolerance = args.tolerance;
   const publish::GridOptions grid;

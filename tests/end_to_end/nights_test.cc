@@ -152,6 +152,10 @@ TEST_F(TwoNights, CompareRefusesWhatItCannotCompare) {
             64);
   EXPECT_EQ(
       duskgrid({"compare", first().string(), (next() / "surfaces/QNOR.json").string()}).status, 64);
+  EXPECT_EQ(duskgrid({"compare", (first() / "surfaces/QNOR.json").string(),
+                      (next() / "surfaces/KELPWK.json").string()})
+                .status,
+            64);
   EXPECT_EQ(duskgrid({"compare", out(), next().string()}).status, 66);
   EXPECT_EQ(
       duskgrid({"compare", (first() / "grid.csv").string(), (next() / "grid.csv").string()}).status,
