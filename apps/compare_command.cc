@@ -128,7 +128,7 @@ std::vector<const UnderlyingChange*> by_concern(const std::vector<UnderlyingChan
 
 void print_summary(const Compared& compared) {
   constexpr std::size_t kMostRows = 40;
-  fmt::print(stderr, "{} against {}; the largest move of each, in vol points\n\n",
+  fmt::print(stderr, "night of {}\nagainst  {}; the largest move of each, in vol points\n\n",
              quotes::format_instant(compared.now.clock, compared.now.instant),
              quotes::format_instant(compared.before.clock, compared.before.instant));
   console::Table table({"underlying", "state", ">nodes", ">sign off", ">move", ">level", ">skew",

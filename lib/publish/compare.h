@@ -25,7 +25,7 @@ struct CompareOptions {
   double times_typical = 8;
   // Furthest node that may want one, in at-the-money deviations from the forward. Range: > 0.
   // Beyond it a volatility of a short expiry swings with the wing, and little hangs on it.
-  double deviations = 5;
+  double deviations = 3;
   // Nights of the underlying that must be known for that. Range: >= 2.
   int least_nights = 10;
   // Nights before the older one of the two, itself included, that are looked at. Range: >= least.
