@@ -51,6 +51,7 @@ const std::vector<Stated>& stated() {
       {"", "rates", "{3M = 0.03, 2031-12-31 = 0.04}", R"({"3M":0.03,"2031-12-31":0.04})"},
       {"", "discount_factors", "{1Y = 0.97}", R"({"1Y":0.97})"},
       {"", "exercise", "'american'", "\"american\""},
+      {"", "holidays", "['2031-12-25', 2032-01-01]", R"(["2031-12-25","2032-01-01"])"},
       {"", "dividend_files", "['/d.csv']", R"(["/d.csv"])"},
       {"source", "files", "['/a.csv', '/b*.csv']", R"(["/a.csv","/b*.csv"])"},
       {"source", "layout", "'call-put-per-row'", "\"call-put-per-row\""},
@@ -94,6 +95,13 @@ const std::vector<Stated>& stated() {
       {"grid", "points", "[0.25, 0.5]", "[0.25,0.5]"},
       {"grid", "tenors", "['1M', '2y']", R"(["1M","2y"])"},
       {"flags", "most_missed", "0.25", "0.25"},
+      {"compare", "tolerance", "0.25", "0.25"},
+      {"compare", "times_typical", "4.5", "4.5"},
+      {"compare", "deviations", "2.5", "2.5"},
+      {"compare", "least_nights", "7", "7"},
+      {"compare", "most_nights", "30", "30"},
+      {"carry", "most_business_days", "3", "3"},
+      {"history", "surfaces", "false", "false"},
   };
   return kStated;
 }
@@ -243,7 +251,7 @@ TEST(ParseConfig, UnknownTableIsNamedWithTheNearestOne) {
 
 TEST(ParseConfig, PlainValueWhereATableBelongsIsRefused) {
   for (const char* table : {"clean", "parity", "selection", "backbone", "overlay", "grid", "flags",
-                            "source", "underlying"})
+                            "compare", "carry", "history", "source", "underlying"})
     EXPECT_TRUE(holds(refused(std::string(table) + " = 3\n").detail, table));
   EXPECT_TRUE(holds(refused("[source]\nfiles = 'a'\n").detail, "[[source]]"));
   EXPECT_TRUE(holds(refused("[underlying]\nHALYRD = 3\n").detail, "underlying.HALYRD"));
@@ -276,6 +284,10 @@ TEST(ParseConfig, ValuesOutOfRangeAreRefusedWithTheirKey) {
       {"[grid]\ntenors = ['1Q']", "grid.tenors"},
       {"[flags]\nmost_missed = 1.5", "flags.most_missed"},
       {"[flags]\nmost_missed = -0.5", "flags.most_missed"},
+      {"[compare]\ntolerance = 0", "compare.tolerance"},
+      {"[compare]\nleast_nights = 30", "compare.most_nights"},
+      {"[carry]\nmost_business_days = -1", "carry.most_business_days"},
+      {"[history]\nsurfaces = 1", "history.surfaces"},
       {"[[source]]\nfiles = 'a'\ndelimiter = '|'", "delimiter"},
       {"[[source]]\nfiles = 'a'\ndecimal = ','\nthousands = ','", "thousands"},
       {"[[source]]\nfiles = 'a'\nprice_scale = 0", "price_scale"},
