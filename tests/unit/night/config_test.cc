@@ -218,8 +218,9 @@ TEST(ConfigOptions, DateOfTomlsOwnIsTakenAsItsText) {
 
 TEST(ConfigOptions, ValueOfAnotherKindIsRefusedWithKeyAndLine) {
   for (const auto& s : stated()) {
-    // A truth value is no number, text, list or table.
-    const Failure failure = refused(heading(s.table) + s.key + " = true\n");
+    // A truth value is no number, text, list or table, and a number is no truth value.
+    const std::string other = s.json == "false" ? "1" : "true";
+    const Failure failure = refused(heading(s.table) + s.key + " = " + other + "\n");
     EXPECT_TRUE(holds(failure.detail, s.key)) << failure.detail;
     EXPECT_EQ(failure.where, s.table.empty() ? "night.toml line 1" : "night.toml line 2") << s.key;
   }
