@@ -128,7 +128,9 @@ class NameWriter {
 
  private:
   void write_slice(const ListedSlice& slice) {
-    Terms terms = terms_of(world_.as_of, world_.rates, listed_.name, slice.expiry);
+    Name name = listed_.name;
+    name.carry = carry_to(listed_, world_.as_of, world_.rates, slice.expiry);
+    Terms terms = terms_of(world_.as_of, world_.rates, name, slice.expiry);
     const auto variance = [&](double k) {
       return total_variance(listed_, world_.as_of, slice.expiry, k);
     };
@@ -141,8 +143,8 @@ class NameWriter {
     const std::string date = iso_date(slice.expiry.date);
     const double rate = world_.rates.zero_rate(terms.t);
     if (listed_.kind == Kind::index) return write_nodes(date, terms, nodes, nullptr, nullptr);
-    const Premiums calls(engines_, Side::call, listed_.name, terms, rate, nodes);
-    const Premiums puts(engines_, Side::put, listed_.name, terms, rate, nodes);
+    const Premiums calls(engines_, Side::call, name, terms, rate, nodes);
+    const Premiums puts(engines_, Side::put, name, terms, rate, nodes);
     write_nodes(date, terms, nodes, &calls, &puts);
   }
 
@@ -197,7 +199,16 @@ class NameWriter {
   Texts texts_;
 };
 
-std::string universe_toml(const World& world) {
+std::string dividends_toml(const ListedName& listed) {
+  if (listed.dividends.empty()) return {};
+  std::string list;
+  for (const CashDividend& dividend : listed.dividends)
+    list += fmt::format("{}\"{}\" = {}", list.empty() ? "" : ", ", iso_date(dividend.ex),
+                        decimals(dividend.amount));
+  return fmt::format("\n[underlying.{}]\ndividends = {{ {} }}\n", listed.name.code, list);
+}
+
+std::string universe_toml(const World& world, const std::vector<ListedName>& names) {
   std::string text = fmt::format(
       "# An invented universe, for measuring and for comparing with the truth.\n"
       "as_of = \"{}\"\n\n[[source]]\nfiles = [\"quotes.csv\"]\n\n"
@@ -207,6 +218,7 @@ std::string universe_toml(const World& world) {
     const double t = year_fraction(world.as_of, {months_ahead(world.as_of, months)});
     text += fmt::format("\"{}M\" = {:.7f}\n", months, world.rates.zero_rate(t));
   }
+  for (const ListedName& listed : names) text += dividends_toml(listed);
   return text;
 }
 
@@ -242,9 +254,10 @@ std::string write_names(const std::filesystem::path& folder, const World& world,
 
 std::string write_universe(const std::filesystem::path& folder, const World& world,
                            const UniverseSize& size) {
-  if (!store(folder, {"night.toml", universe_toml(world)}))
+  const auto names = list_universe(world, size.underlyings, size.quotes / 2);
+  if (!store(folder, {"night.toml", universe_toml(world, names)}))
     return (folder / "night.toml").string() + ": cannot be written";
-  return write_names(folder, world, list_universe(world, size.underlyings, size.quotes / 2));
+  return write_names(folder, world, names);
 }
 
 }  // namespace duskgrid::make_night

@@ -23,7 +23,8 @@ struct UniverseSize {
 // Smiles are surface SVI, those of event names mixtures of two lognormals from the event on. Vol at
 // a strike is that of call and put. American prices are Black's price plus the premium of early
 // exercise under a continuous yield, by the tables of pricing/american_panel.h, which leave an
-// error below a hundredth of a cent for a spot of 100: all dividends are continuous yields here.
+// error below a hundredth of a cent for a spot of 100. Cash dividends count in full in the forward;
+// in the premium they act as the continuous yield of the same forward to the expiry.
 std::string write_universe(const std::filesystem::path& folder, const World& world,
                            const UniverseSize& size);
 

@@ -71,7 +71,7 @@ constexpr std::array<KindRule, 8> kRules{{
      {20, 40},
      {20, 250},
      {0.15, 0.35},
-     {0.03, 0.07},
+     {0, 0},
      {0.03, 0.010, 0.15, {1, 5, 300}}},
     {"hard-to-borrow",
      0.03,
@@ -159,9 +159,22 @@ EventJump event_of(const AsOf& as_of, Stream& random) {
           (1 - chance * up) / (1 - chance), chance};
 }
 
+// Every quarter, somewhere in the first one on a Wednesday, until after the last expiry.
+std::vector<CashDividend> dividends_of(const AsOf& as_of, Cents spot, Stream& random) {
+  constexpr int kQuarters = 18;
+  const double yearly = Range{0.02, 0.06}.draw(random);
+  const auto amount = std::llround(yearly / 4 * static_cast<double>(spot));
+  const auto wednesday = as_of.date + (chrono::Wednesday - chrono::weekday{as_of.date});
+  const auto first = wednesday + chrono::days{7 * random.between(0, 12)};
+  std::vector<CashDividend> dividends;
+  for (int i = 0; i < kQuarters; ++i)
+    dividends.push_back({Date{first + chrono::days{91 * i}}, std::max<Cents>(1, amount)});
+  return dividends;
+}
+
 ListedName list_name(const World& world, std::int64_t number, Kind kind) {
   const KindRule& rule = rule_of(kind);
-  ListedName listed{kind, {}, rule.spread, {}, {}};
+  ListedName listed{kind, {}, rule.spread, {}, {}, {}};
   listed.name.code = code_of(number);
   Stream random(world.seed, listed.name.code);
   const double spot = rule.spot.low * std::pow(rule.spot.high / rule.spot.low, random.uniform());
@@ -171,6 +184,7 @@ ListedName list_name(const World& world, std::int64_t number, Kind kind) {
   // The bases are for a spot of 100.
   listed.spread.base *= std::clamp(spot / 100, 0.5, 40.0);
   if (kind == Kind::event) listed.event = event_of(world.as_of, random);
+  if (kind == Kind::payer) listed.dividends = dividends_of(world.as_of, listed.name.spot, random);
   for (const Expiry& expiry : expiries_of(world.as_of, kind, rule.expiries.whole(random)))
     listed.slices.push_back({expiry, rule.strikes.whole(random)});
   return listed;
@@ -242,6 +256,21 @@ std::vector<ListedName> list_universe(const World& world, std::int64_t underlyin
             [](const auto& a, const auto& b) { return a.name.code < b.name.code; });
   fit_strikes(names, pairs);
   return names;
+}
+
+double carry_to(const ListedName& listed, const AsOf& as_of, const RateCurve& rates,
+                const Expiry& expiry) {
+  const double spot = static_cast<double>(listed.name.spot);
+  double left = spot;
+  for (const CashDividend& dividend : listed.dividends) {
+    if (dividend.ex > expiry.date) break;
+    // Ex at the start of the day.
+    const double t =
+        static_cast<double>((chrono::sys_days{dividend.ex} - as_of.date).count()) / 365 -
+        static_cast<double>(as_of.time_of_day.count()) / (365.0 * 86400);
+    left -= static_cast<double>(dividend.amount) * std::exp(-rates.zero_rate(t) * t);
+  }
+  return listed.name.carry - std::log(left / spot) / year_fraction(as_of, expiry);
 }
 
 double total_variance(const ListedName& listed, const AsOf& as_of, const Expiry& expiry,

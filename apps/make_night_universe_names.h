@@ -17,7 +17,7 @@ enum class Kind : std::uint8_t {
   large,  // the rest is American
   medium,
   small,
-  payer,           // pays a yield for which calls are exercised early
+  payer,           // pays cash every quarter, for which calls are exercised early
   hard_to_borrow,  // carry of 8 to 40 % a year
   event,           // an event ahead that moves the price by a known size, up or down
   dead,            // offered, never bid for
@@ -31,6 +31,11 @@ struct EventJump {
   double up, down, chance;
 };
 
+struct CashDividend {
+  Date ex;
+  Cents amount;
+};
+
 struct ListedSlice {
   Expiry expiry;
   std::int64_t strikes;  // how many
@@ -41,13 +46,19 @@ struct ListedName {
   Name name;
   SpreadRule spread;
   std::optional<EventJump> event;
-  std::vector<ListedSlice> slices;  // by date
+  std::vector<CashDividend> dividends;  // by date
+  std::vector<ListedSlice> slices;      // by date
 };
 
 // All names, with so many strikes that there are `pairs` of call and put in all: exactly, unless
 // every slice is at its least number of strikes. Codes differ.
 std::vector<ListedName> list_universe(const World& world, std::int64_t underlyings,
                                       std::int64_t pairs);
+
+// The continuous yield that gives the forward to an expiry: the name's own carry, and its dividends
+// to there, the spot falling by their present values.
+double carry_to(const ListedName& listed, const AsOf& as_of, const RateCurve& rates,
+                const Expiry& expiry);
 
 // Total variance at a strike.
 double total_variance(const ListedName& listed, const AsOf& as_of, const Expiry& expiry,
