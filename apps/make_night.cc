@@ -1,14 +1,17 @@
 // make_night: invents, from a seed, a night of option quotes of an exchange that does
-// not exist. Same seed and as-of, same quotes, on any machine.
+// not exist. Same seed and as-of, same quotes, on any machine: the demo night, or with
+// --underlyings a universe of any size.
 #include <fmt/format.h>
 
 #include <CLI/CLI.hpp>
 #include <cstdio>
 #include <filesystem>
+#include <optional>
 #include <string>
 #include <system_error>
 
 #include "make_night_scenario.h"
+#include "make_night_universe.h"
 
 namespace {
 
@@ -24,9 +27,6 @@ int fail(int status, const std::string& text) {
 }
 
 int write_night(const std::filesystem::path& folder, const World& world) {
-  std::error_code error;
-  std::filesystem::create_directories(folder, error);
-  if (error) return fail(kCannotCreate, folder.string() + ": " + error.message());
   for (const NightFile& file : demo_night(world)) {
     if (!store(folder, file)) {
       return fail(kCannotCreate, (folder / file.name).string() + ": cannot be written");
@@ -34,6 +34,16 @@ int write_night(const std::filesystem::path& folder, const World& world) {
     fmt::print(stderr, "{:<20} {:>8} bytes before packing\n", file.name, file.text.size());
   }
   return 0;
+}
+
+int write(const std::filesystem::path& folder, const World& world,
+          const std::optional<UniverseSize>& size) {
+  std::error_code error;
+  std::filesystem::create_directories(folder, error);
+  if (error) return fail(kCannotCreate, folder.string() + ": " + error.message());
+  if (!size) return write_night(folder, world);
+  const std::string problem = write_universe(folder, world, *size);
+  return problem.empty() ? 0 : fail(kCannotCreate, problem);
 }
 
 }  // namespace
@@ -50,7 +60,19 @@ int main(int argc, char** argv) {
   bool next = false;
   app.add_flag("--next-night", next,
                "The night after it instead, with changes planted;\nchanges.tsv lists them");
-  app.footer("Example: make_night --out data/demo_night");
+  UniverseSize size;
+  auto* underlyings =
+      app.add_option("--underlyings", size.underlyings,
+                     "In place of the demo night, a universe of so many\nunderlyings and its truth")
+          ->check(CLI::Range(1, 1'000'000));
+  app.add_option("--quotes", size.quotes, "So many contracts in that universe")
+      ->needs(underlyings)
+      ->check(CLI::Range(1, 100'000'000))
+      ->capture_default_str();
+  app.footer(
+      "Examples:\n"
+      "  make_night --out data/demo_night\n"
+      "  make_night --underlyings 6000 --quotes 1500000 --out universe");
   try {
     app.parse(argc, argv);
   } catch (const CLI::ParseError& error) {
@@ -62,5 +84,5 @@ int main(int argc, char** argv) {
   }
   world.listed = *instant;
   world.as_of = next ? next_business_day(*instant) : *instant;
-  return write_night(out, world);
+  return write(out, world, underlyings->count() > 0 ? std::optional(size) : std::nullopt);
 }

@@ -1,8 +1,8 @@
 # The stages, in the order of the data. Each links only stages listed above it.
 add_stage(quotes
   SOURCES chain.cc clean.cc columns.cc instants.cc ledger.cc load.cc osi.cc quote.cc
-    bytes.cc cells.cc contracts.cc encoding.cc memo.cc paths.cc rows.cc spellings.cc
-  PRIVATE_NEEDS Boost::iostreams date::date-tz fmt::fmt Threads::Threads)
+    blocks.cc bytes.cc cells.cc contracts.cc digest.cc encoding.cc memo.cc paths.cc rows.cc spellings.cc
+  PRIVATE_NEEDS Boost::iostreams OpenSSL::Crypto TBB::tbb date::date-tz fmt::fmt Threads::Threads)
 
 add_stage(market
   SOURCES curve.cc dates.cc day_count.cc dividend_file.cc dividends.cc parity.cc
@@ -26,11 +26,11 @@ add_stage(arbitrage
   NEEDS duskgrid::surface PRIVATE_NEEDS fmt::fmt)
 
 add_stage(publish
-  SOURCES compare.cc digest.cc grid.cc grid_file.cc history.cc output_lock.cc past_run.cc
-    points_file.cc run_audit.cc run_folder.cc run_record.cc surface_json.cc table_file.cc tables.cc
-    text.cc values.cc
+  SOURCES compare.cc grid.cc grid_file.cc history.cc output_lock.cc past_run.cc points_file.cc
+    run_audit.cc run_folder.cc run_record.cc surface_json.cc sync_files.cc table_file.cc tables.cc
+    tables_parallel.cc text.cc values.cc
   NEEDS duskgrid::arbitrage
-  PRIVATE_NEEDS Boost::boost Boost::iostreams OpenSSL::Crypto SQLite::SQLite3 fmt::fmt
+  PRIVATE_NEEDS Boost::boost Boost::iostreams SQLite::SQLite3 TBB::tbb Threads::Threads fmt::fmt
     nlohmann_json::nlohmann_json)
 
 add_stage(night

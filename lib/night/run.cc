@@ -2,6 +2,7 @@
 
 #include <sys/resource.h>
 #include <tbb/global_control.h>
+#include <tbb/parallel_for.h>
 #include <tbb/parallel_for_each.h>
 
 #include <algorithm>
@@ -10,6 +11,7 @@
 #include <mutex>
 #include <numeric>
 #include <optional>
+#include <span>
 #include <thread>
 
 #include "night/carry.h"
@@ -19,6 +21,7 @@
 #include "publish/run_folder.h"
 #include "publish/surface_json.h"
 #include "publish/tables.h"
+#include "publish/tables_parallel.h"
 #include "publish/text.h"
 
 namespace duskgrid::night {
@@ -73,11 +76,9 @@ class Stages {
 
 Result<std::vector<publish::InputRecord>> record_inputs(
     const std::vector<quotes::FileSummary>& files, const ResolvedNight& night) {
-  std::vector<std::pair<std::string, std::int64_t>> read;
-  for (const auto& file : files) read.emplace_back(file.file, file.rows);
-  read.insert(read.end(), night.dividend_rows.begin(), night.dividend_rows.end());
   std::vector<publish::InputRecord> inputs;
-  for (const auto& [file, rows] : read) {
+  for (const auto& file : files) inputs.push_back({file.file, file.sha256, file.bytes, file.rows});
+  for (const auto& [file, rows] : night.dividend_rows) {
     auto digest = publish::digest_file(file);
     if (!digest) return digest.failure();
     inputs.push_back({file, digest->sha256, digest->bytes, rows});
@@ -120,26 +121,59 @@ std::vector<MarkedUnderlying> mark_all(quotes::QuoteTable& table, const NightCon
 using publish::RunFile;
 using publish::RunFolder;
 
+void write_grid(RunFile& file, const std::vector<MarkedUnderlying>& marked, publish::Axis axis,
+                const ResolvedNight& night) {
+  constexpr std::size_t kAtATime = 16;
+  file.write(publish::kGridHeader);
+  publish::write_lines(file, marked.size(), kAtATime, night.as_of.clock,
+                       [&](std::size_t first, std::size_t last, std::string& out, auto& instants) {
+                         for (const auto& m : std::span(marked).subspan(first, last - first))
+                           for (const auto& node : m.grid)
+                             out += publish::grid_line(node, axis, m.record.name,
+                                                       night.as_of.instant, instants);
+                       });
+}
+
+void write_ledger(RunFile& file, const quotes::QuoteTable& table, const quotes::Clock& clock) {
+  constexpr std::size_t kAtATime = 2048;
+  file.write(publish::kLedgerHeader);
+  publish::write_lines(file, table.quotes.size(), kAtATime, clock,
+                       [&](std::size_t first, std::size_t last, std::string& out, auto& instants) {
+                         for (std::size_t i = first; i < last; ++i)
+                           out += publish::ledger_line(table.quotes[i], table, instants);
+                       });
+}
+
+// Some surfaces are made into text at once, and their files written one after the other.
+Result<bool> write_surfaces(RunFolder& folder, const std::vector<MarkedUnderlying>& marked,
+                            const ResolvedNight& night) {
+  constexpr std::size_t kAtATime = 256;
+  for (std::size_t first = 0; first < marked.size(); first += kAtATime) {
+    const auto some = std::span(marked).subspan(first, std::min(kAtATime, marked.size() - first));
+    std::vector<std::string> texts(some.size());
+    tbb::parallel_for(std::size_t{0}, some.size(), [&](std::size_t i) {
+      if (some[i].surface) texts[i] = publish::surface_to_json({night.as_of, *some[i].surface});
+    });
+    for (std::size_t i = 0; i < some.size(); ++i) {
+      if (!some[i].surface) continue;
+      auto written =
+          folder.add("surfaces/" + publish::encode_file_name(some[i].record.name) + ".json",
+                     [&](RunFile& file) { file.write(texts[i]); });
+      if (!written) return written;
+    }
+  }
+  return true;
+}
+
 // Everything a run folder holds but run.json and timings.json.
 Result<bool> write_tables(RunFolder& folder, const quotes::QuoteTable& table,
                           const std::vector<MarkedUnderlying>& marked, const NightConfig& config,
                           const ResolvedNight& night) {
   const auto& clock = night.as_of.clock;
-  publish::InstantTexts instants(clock);
-  auto written = folder.add("grid.csv", [&](RunFile& file) {
-    file.write(publish::kGridHeader);
-    for (const auto& m : marked)
-      for (const auto& node : m.grid)
-        if (!file.write(publish::grid_line(node, config.grid.axis, m.record.name,
-                                           night.as_of.instant, instants)))
-          return;
-  });
+  auto written = folder.add(
+      "grid.csv", [&](RunFile& file) { write_grid(file, marked, config.grid.axis, night); });
   if (written)
-    written = folder.add("ledger.csv", [&](RunFile& file) {
-      file.write(publish::kLedgerHeader);
-      for (const auto& q : table.quotes)
-        if (!file.write(publish::ledger_line(q, table, instants))) return;
-    });
+    written = folder.add("ledger.csv", [&](RunFile& file) { write_ledger(file, table, clock); });
   if (written)
     written = folder.add("forwards.csv", [&](RunFile& file) {
       file.write(publish::kForwardsHeader);
@@ -164,18 +198,12 @@ Result<bool> write_tables(RunFolder& folder, const quotes::QuoteTable& table,
   if (written)
     written = folder.add("expiries.csv", [&](RunFile& file) {
       file.write(publish::kExpiriesHeader);
+      publish::InstantTexts instants(clock);
       for (const auto& m : marked)
         for (const auto& row : m.expiries)
           file.write(publish::expiries_line(row, m.record.name, instants));
     });
-  for (const auto& m : marked) {
-    if (!written || !m.surface) continue;
-    written = folder.add("surfaces/" + publish::encode_file_name(m.record.name) + ".json",
-                         [&](RunFile& file) {
-                           file.write(publish::surface_to_json({night.as_of, *m.surface}));
-                         });
-  }
-  return written;
+  return written ? write_surfaces(folder, marked, night) : written;
 }
 
 // Names configured that no file has: a slip of the pen, or a name that is gone.

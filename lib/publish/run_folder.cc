@@ -12,6 +12,8 @@
 #include <utility>
 #include <vector>
 
+#include "publish/sync_files.h"
+
 namespace duskgrid::publish {
 namespace {
 
@@ -46,14 +48,6 @@ std::vector<std::string> names_in(const fs::path& folder, std::error_code& error
   for (fs::directory_iterator at(folder, error), end; !error && at != end; at.increment(error))
     names.push_back(at->path().filename());
   return names;
-}
-
-// Every folder under `folder` and itself: what a rename must not outrun.
-bool sync_folders(const std::string& folder, std::error_code& error) {
-  using Walk = fs::recursive_directory_iterator;
-  for (Walk at(folder, error), end; !error && at != end; at.increment(error))
-    if (at->is_directory(error) && !sync_path(at->path())) return false;
-  return !error && sync_path(folder);
 }
 
 std::string aside_of(const std::string& name) {
@@ -189,7 +183,6 @@ Result<bool> RunFolder::open(RunFile& file, const std::string& path) {
 Result<bool> RunFolder::close(RunFile& file, const std::string& path) {
   file.flush();
   const bool stopped = stop_.stop_requested();
-  if (!stopped && file.error_.empty() && ::fsync(file.descriptor_) != 0) file.error_ = last_error();
   if (::close(file.descriptor_) != 0 && file.error_.empty()) file.error_ = last_error();
   if (stopped) return unpublished(Fault::stopped, "", "stopped while writing");
   if (!file.error_.empty())
@@ -200,10 +193,14 @@ Result<bool> RunFolder::close(RunFile& file, const std::string& path) {
 
 Result<bool> RunFolder::ready() const {
   std::error_code error;
-  const bool synced = sync_folders(partial_, error);
+  std::vector<std::string> paths{partial_};
+  for (fs::recursive_directory_iterator at(partial_, error), end; !error && at != end;
+       at.increment(error))
+    paths.push_back(at->path());
+  if (error) return unpublished(Fault::cannot_create, final_, error.message());
+  const auto failed = sync_files(paths);
   if (stop_.stop_requested()) return unpublished(Fault::stopped, "", "stopped while writing");
-  if (!synced)
-    return unpublished(Fault::cannot_create, final_, error ? error.message() : last_error());
+  if (!failed.empty()) return unpublished(Fault::cannot_create, failed, last_error());
   return true;
 }
 

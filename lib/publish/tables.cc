@@ -3,6 +3,7 @@
 #include <fmt/format.h>
 
 #include <array>
+#include <iterator>
 
 #include "publish/text.h"
 
@@ -12,9 +13,21 @@ namespace {
 // One line of cells. Text is quoted and guarded, numbers are shortest round trip.
 class Line {
  public:
-  Line& text(std::string_view cell) { return raw(csv_text(cell)); }
-  Line& number(double cell) { return raw(csv_number(cell)); }
-  Line& count(std::int64_t cell) { return raw(fmt::format("{}", cell)); }
+  Line() { out_.reserve(kUsualSize); }
+  Line& text(std::string_view cell) {
+    // Most need neither quotes nor a guard, and no copy then.
+    return csv_plain(cell) ? raw(cell) : raw(csv_text(cell));
+  }
+  Line& number(double cell) {
+    raw("");
+    add_csv_number(cell, out_);
+    return *this;
+  }
+  Line& count(std::int64_t cell) {
+    raw("");
+    fmt::format_to(std::back_inserter(out_), "{}", cell);
+    return *this;
+  }
   // Words and instants of our own: nothing in them to quote.
   Line& raw(std::string_view cell) {
     if (!first_) out_ += ',';
@@ -29,6 +42,7 @@ class Line {
   std::string end() { return std::move(out_) + '\n'; }
 
  private:
+  static constexpr std::size_t kUsualSize = 256;
   std::string out_;
   bool first_ = true;
 };

@@ -5,6 +5,7 @@
 #include <algorithm>
 #include <charconv>
 #include <cmath>
+#include <iterator>
 
 namespace duskgrid::publish {
 namespace {
@@ -44,9 +45,19 @@ std::string unguarded(std::string_view cell) {
   return std::string(guarded ? cell.substr(1) : cell);
 }
 
+bool csv_plain(std::string_view text) {
+  return text.find_first_of(",\"\r\n") == std::string_view::npos && !needs_guard(text);
+}
+
 std::string csv_number(double value) {
+  std::string text;
+  add_csv_number(value, text);
+  return text;
+}
+
+void add_csv_number(double value, std::string& to) {
   // Adding zero turns a negative zero into zero.
-  return std::isfinite(value) ? fmt::format("{}", value + 0.0) : std::string();
+  if (std::isfinite(value)) fmt::format_to(std::back_inserter(to), "{}", value + 0.0);
 }
 
 std::string encode_file_name(std::string_view name) {

@@ -14,9 +14,13 @@ namespace duskgrid::publish {
 std::string csv_text(std::string_view text);
 // The text of such a cell once unquoted: the guarding apostrophe taken off again.
 std::string unguarded(std::string_view cell);
+// True where csv_text() would only copy.
+bool csv_plain(std::string_view text);
 // Shortest decimal that reads back to the same double; empty for what is not finite; no
 // negative zero.
 std::string csv_number(double value);
+// The same at the end of a text.
+void add_csv_number(double value, std::string& to);
 
 // A name as a file name, and back: letters, digits, _ and - stay, and a dot inside; every
 // other byte is %XX in upper-case hexadecimal. Empty gives "%". Never "." or "..", never longer

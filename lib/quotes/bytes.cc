@@ -10,6 +10,7 @@
 #include <filesystem>
 #include <utility>
 
+#include "quotes/digest.h"
 #include "quotes/encoding.h"
 
 namespace duskgrid::quotes {
@@ -40,12 +41,14 @@ struct StoredBytes {
   std::string behind;  // given after them
   std::size_t behind_given = 0;
   std::int64_t count = 0;
+  Sha256 sum;           // of the bytes counted
   bool broken = false;  // the system refused to read on
 
   std::size_t from_file(char* to, std::size_t size) {
     const std::size_t got = std::fread(to, 1, size, file.get());
     broken = broken || std::ferror(file.get()) != 0;
     count += static_cast<std::int64_t>(got);
+    sum.add({to, got});
     return got;
   }
 
@@ -173,6 +176,7 @@ class CheckedText final : public TextSource {
   const std::optional<Failure>& failure() const override { return failure_; }
   const std::string& compression() const override { return word_; }
   std::int64_t stored_bytes() const override { return stored_.count; }
+  std::string sha256() override { return stored_.sum.hex(); }
 
  private:
   // All of `size` unless the text ends, which shows only when there is room left.

@@ -28,6 +28,8 @@ class TextSource {
   virtual const std::optional<Failure>& failure() const = 0;
   virtual const std::string& compression() const = 0;  // "none", "gzip", "zstd"
   virtual std::int64_t stored_bytes() const = 0;       // read from the file so far
+  // SHA-256 of the stored bytes read so far, as lower-case hexadecimal; ends the sum, call once.
+  virtual std::string sha256() = 0;
 };
 
 }  // namespace duskgrid::quotes

@@ -3,6 +3,7 @@
 #include <algorithm>
 #include <charconv>
 #include <cmath>
+#include <cstdint>
 
 namespace duskgrid::quotes {
 namespace {
@@ -13,8 +14,33 @@ constexpr std::size_t kLongestName = 80;
 constexpr std::size_t kLongestRewritten = 64;
 
 bool is_digit(char c) { return c >= '0' && c <= '9'; }
+bool is_blank(char c) { return c == ' ' || c == '\t'; }
 char to_lower(char c) { return c >= 'A' && c <= 'Z' ? static_cast<char>(c - 'A' + 'a') : c; }
 char to_upper(char c) { return c >= 'a' && c <= 'z' ? static_cast<char>(c - 'a' + 'A') : c; }
+
+// Digits with a point among them or none, as nearly all cells are: a whole number below 2^53 over a
+// power of ten up to 10^22 is two exact doubles, and their quotient correctly rounded (W. Clinger,
+// PLDI 1990).
+std::optional<double> short_number(std::string_view text) {
+  constexpr std::size_t kMostDigits = 15;
+  constexpr std::array<double, kMostDigits + 1> kPowers{
+      1e0, 1e1, 1e2, 1e3, 1e4, 1e5, 1e6, 1e7, 1e8, 1e9, 1e10, 1e11, 1e12, 1e13, 1e14, 1e15};
+  if (text.empty() || text.size() > kMostDigits) return std::nullopt;
+  std::int64_t whole = 0;
+  std::size_t point = text.size();
+  for (std::size_t i = 0; i < text.size(); ++i) {
+    if (is_digit(text[i])) {
+      whole = 10 * whole + (text[i] - '0');
+    } else if (text[i] == '.' && point == text.size()) {
+      point = i;
+    } else {
+      return std::nullopt;
+    }
+  }
+  if (text.size() == 1 && point == 0) return std::nullopt;
+  const auto value = static_cast<double>(whole);
+  return point == text.size() ? value : value / kPowers[text.size() - point - 1];
+}
 
 // A plain number, '.' for the decimal, no groups. from_chars takes inf and nan too,
 // which never start with a digit or point, and no leading plus.
@@ -85,6 +111,7 @@ bool CellRules::is_null(std::string_view cell) const {
 std::optional<double> CellRules::number(std::string_view cell) const {
   // Nearly every cell is plain; with a decimal comma a point would be a separator.
   if (decimal_ == '.') {
+    if (const auto value = short_number(cell)) return value;
     if (const auto value = plain_number(cell)) return value;
   }
   if (cell.size() > kLongestRewritten) return std::nullopt;
@@ -106,11 +133,14 @@ std::optional<double> CellRules::number(std::string_view cell) const {
   return plain_number({text.data(), size});
 }
 
+bool is_blank(std::string_view text) {
+  return std::all_of(text.begin(), text.end(), [](char c) { return is_blank(c); });
+}
+
 std::string_view trim(std::string_view text) {
-  constexpr std::string_view kBlank = " \t";
-  const std::size_t first = text.find_first_not_of(kBlank);
-  if (first == std::string_view::npos) return {};
-  return text.substr(first, text.find_last_not_of(kBlank) - first + 1);
+  while (!text.empty() && is_blank(text.front())) text.remove_prefix(1);
+  while (!text.empty() && is_blank(text.back())) text.remove_suffix(1);
+  return text;
 }
 
 std::string lower(std::string_view text) {

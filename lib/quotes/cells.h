@@ -39,6 +39,8 @@ class CellRules {
   std::array<bool, 256> opens_null_{};  // first bytes of null words, both cases
 };
 
+// Nothing but spaces and tabs.
+bool is_blank(std::string_view text);
 // Without spaces and tabs at either end.
 std::string_view trim(std::string_view text);
 // ASCII lower case.

@@ -48,6 +48,8 @@ constexpr std::array<std::string_view, kNoteCount> kTexts{
 // its notes then say less.
 constexpr std::size_t kCellCountNotes = 32;
 
+std::int32_t number_of(Note note) { return static_cast<std::int32_t>(note); }
+
 double zero_if_absent(double value) { return std::isnan(value) ? 0 : value; }
 
 std::map<std::string, std::chrono::seconds> folded(
@@ -70,11 +72,8 @@ std::string compact_date(std::chrono::year_month_day date) {
 std::string_view text(Note note) { return kTexts[static_cast<std::size_t>(note)]; }
 
 ContractReader::ContractReader(const SourceOptions& options, const TimeRules& rules,
-                               const ColumnMap& columns, std::size_t header_cells,
-                               QuoteTable& table, NameIndex& names)
+                               const ColumnMap& columns, std::size_t header_cells)
     : options_(options),
-      table_(table),
-      names_(names),
       rules_(options.decimal,
              options.thousands != 0   ? options.thousands
              : options.decimal == ',' ? '.'
@@ -88,7 +87,6 @@ ContractReader::ContractReader(const SourceOptions& options, const TimeRules& ru
       plain_dates_(rules.clock, {}),
       header_cells_(header_cells),
       contracts_per_row_(columns.layout == Layout::call_put_per_row ? 2 : 1) {
-  note_numbers_.fill(-1);
   for (const auto& [word, value] : options.fixed) fixed_.push_back(trim(value));
   const bool pairs = contracts_per_row_ == 2;
   sides_[0] = side_columns(columns, pairs ? Side::call : Side::both);
@@ -160,23 +158,6 @@ std::optional<Failure> ContractReader::problem() const {
                  "half_spread_relative = 0.02"};
 }
 
-std::int32_t ContractReader::note_number(Note note) {
-  std::int32_t& number = note_numbers_[static_cast<std::size_t>(note)];
-  if (number < 0) number = table_.note_index(std::string(text(note)));
-  return number;
-}
-
-std::int32_t ContractReader::cell_count_note(std::size_t cells) {
-  const auto known = cell_count_notes_.find(cells);
-  if (known != cell_count_notes_.end()) return known->second;
-  if (cell_count_notes_.size() >= kCellCountNotes) return note_number(Note::cell_count);
-  const std::int32_t number =
-      table_.note_index(std::to_string(cells) + (cells == 1 ? " cell" : " cells") +
-                        ", header has " + std::to_string(header_cells_));
-  cell_count_notes_.emplace(cells, number);
-  return number;
-}
-
 // Of an unreadable contract only where it stood is kept: part of a contract would
 // read like a whole one.
 void ContractReader::mark_unreadable(Quote& quote, std::int32_t note) const {
@@ -188,36 +169,47 @@ void ContractReader::mark_unreadable(Quote& quote, std::int32_t note) const {
   quote = unreadable;
 }
 
-int ContractReader::add_unreadable(Note note, std::int32_t file, std::int64_t line) {
+void ContractReader::add_unreadable(Note note, std::int32_t file, std::int64_t line) {
   for (int i = 0; i < contracts_per_row_; ++i) {
-    Quote& quote = table_.quotes.emplace_back();
+    Quote& quote = batch_.quotes.emplace_back();
     quote.file = file;
     quote.line = line;
-    mark_unreadable(quote, note_number(note));
+    mark_unreadable(quote, number_of(note));
   }
-  return contracts_per_row_;
+  ++batch_.rows;
+  batch_.unreadable += contracts_per_row_;
 }
 
-int ContractReader::add_row(std::vector<std::string_view>& cells, std::int32_t file,
-                            std::int64_t line) {
+void ContractReader::add_row(std::vector<std::string_view>& cells, std::int32_t file,
+                             std::int64_t line) {
   const std::size_t own_cells = cells.size();
   const bool sound = own_cells == header_cells_;
+  if (!names_) names_.emplace();
   cells.insert(cells.end(), fixed_.begin(), fixed_.end());
   cells_ = &cells;
-  int unreadable = 0;
   for (int i = 0; i < contracts_per_row_; ++i) {
     side_ = &sides_[static_cast<std::size_t>(i)];
-    Quote& quote = table_.quotes.emplace_back();
+    Quote& quote = batch_.quotes.emplace_back();
     quote.file = file;
     quote.line = line;
     quote.put_call = i == 0 ? PutCall::call : PutCall::put;
     const Note note = sound ? read_contract(quote) : Note::cell_count;
     if (note == Note::none) continue;
-    mark_unreadable(quote, sound ? note_number(note) : cell_count_note(own_cells));
-    ++unreadable;
+    mark_unreadable(quote,
+                    sound ? number_of(note) : static_cast<std::int32_t>(kNoteCount + own_cells));
+    ++batch_.unreadable;
   }
+  ++batch_.rows;
   cells.resize(own_cells);
-  return unreadable;
+}
+
+ContractBatch ContractReader::take() {
+  if (names_) batch_.names = std::move(names_->names);
+  names_.reset();
+  ContractBatch taken = std::exchange(batch_, {});
+  // The next batch is about as large, and growing to that size costs more than reading a row.
+  batch_.quotes.reserve(taken.quotes.size() + taken.quotes.size() / 8);
+  return taken;
 }
 
 Note ContractReader::read_contract(Quote& quote) {
@@ -265,7 +257,7 @@ Note ContractReader::read_underlying(Quote& quote) {
   const std::string_view name = own ? cell(Field::underlying) : underlying_of(*symbol_);
   if (name.empty()) return Note::no_underlying;
   if (!is_name(name)) return Note::bad_underlying;
-  quote.underlying = names_.index_of(name);
+  quote.underlying = names_->index.index_of(name);
   quote.adjusted = symbol_ && symbol_->adjusted;
   return Note::none;
 }
@@ -316,7 +308,7 @@ Note ContractReader::read_expiry(Quote& quote) {
   TimeOfDay time;
   const Note note = read_time_of_day(time);
   if (note == Note::bad_expiry_time) return note;
-  if (note != Note::none) quote.note = note_number(note);
+  if (note != Note::none) quote.note = number_of(note);
   std::optional<Instant> instant;
   if (side_->has(Field::expiry)) {
     const std::string_view date = cell(Field::expiry);
@@ -382,7 +374,7 @@ void ContractReader::read_extras(Quote& quote) {
   // A format stated for expiries need not be that of quote times.
   if (!instant && !options_.date_format.empty()) instant = plain_dates_.instant(time, of_day);
   quote.quote_time = instant.value_or(kNoInstant);
-  if (!instant && !rules_.is_null(time)) quote.note = note_number(Note::bad_quote_time);
+  if (!instant && !rules_.is_null(time)) quote.note = number_of(Note::bad_quote_time);
 }
 
 double ContractReader::read_underlying_price() const {
@@ -392,6 +384,41 @@ double ContractReader::read_underlying_price() const {
             0.5 * optional_number(Field::underlying_ask, options_.price_scale);
   }
   return price > 0 ? price : kAbsent;
+}
+
+BatchMerger::BatchMerger(QuoteTable& table, NameIndex& names, std::size_t header_cells)
+    : table_(table), names_(names), header_cells_(header_cells) {
+  notes_.fill(-1);
+}
+
+void BatchMerger::merge(const ContractBatch& batch) {
+  batch_names_.clear();
+  for (const std::string& name : batch.names) batch_names_.push_back(names_.index_of(name));
+  for (const Quote& read : batch.quotes) {
+    Quote& quote = table_.quotes.emplace_back(read);
+    if (quote.underlying >= 0)
+      quote.underlying = batch_names_[static_cast<std::size_t>(quote.underlying)];
+    if (quote.note >= 0) quote.note = note_number(quote.note);
+  }
+}
+
+std::int32_t BatchMerger::numbered(Note note) {
+  std::int32_t& number = notes_[static_cast<std::size_t>(note)];
+  if (number < 0) number = table_.note_index(std::string(text(note)));
+  return number;
+}
+
+std::int32_t BatchMerger::note_number(std::int32_t note) {
+  if (note < static_cast<std::int32_t>(kNoteCount)) return numbered(static_cast<Note>(note));
+  const std::size_t cells = static_cast<std::size_t>(note) - kNoteCount;
+  const auto known = cell_counts_.find(cells);
+  if (known != cell_counts_.end()) return known->second;
+  if (cell_counts_.size() >= kCellCountNotes) return numbered(Note::cell_count);
+  const std::int32_t number =
+      table_.note_index(std::to_string(cells) + (cells == 1 ? " cell" : " cells") +
+                        ", header has " + std::to_string(header_cells_));
+  cell_counts_.emplace(cells, number);
+  return number;
 }
 
 }  // namespace duskgrid::quotes

@@ -48,11 +48,20 @@ enum class Note : std::uint8_t {
 inline constexpr std::size_t kNoteCount = 22;
 std::string_view text(Note note);
 
-// Reads the rows of one file. `names` and `table` are shared by all files of a load.
+// Quotes on their way into a table: their names and notes are numbered among themselves. A note is
+// a Note, or kNoteCount and the number of cells of a row that has not as many as the header.
+struct ContractBatch {
+  std::vector<Quote> quotes;
+  std::vector<std::string> names;
+  std::int64_t rows = 0;
+  std::int64_t unreadable = 0;  // contracts
+};
+
+// Reads rows of one file. Several readers may read parts of one file at the same time.
 class ContractReader {
  public:
   ContractReader(const SourceOptions& options, const TimeRules& rules, const ColumnMap& columns,
-                 std::size_t header_cells, QuoteTable& table, NameIndex& names);
+                 std::size_t header_cells);
 
   // A fixed value that no row could use, or a price column without a half-spread.
   std::optional<Failure> problem() const;
@@ -60,11 +69,13 @@ class ContractReader {
   // Quotes that each row becomes.
   int contracts_per_row() const { return contracts_per_row_; }
 
-  // Adds the quotes of a row. Returns how many of them are unreadable. `cells` is
-  // changed and restored.
-  int add_row(std::vector<std::string_view>& cells, std::int32_t file, std::int64_t line);
-  // Adds quotes for a row that could not be split. Returns how many.
-  int add_unreadable(Note note, std::int32_t file, std::int64_t line);
+  // Adds the quotes of a row. `cells` is changed and restored.
+  void add_row(std::vector<std::string_view>& cells, std::int32_t file, std::int64_t line);
+  // Adds quotes for a row that could not be split.
+  void add_unreadable(Note note, std::int32_t file, std::int64_t line);
+
+  // What was added since the last call.
+  ContractBatch take();
 
  private:
   // Where the fields of one side stand in a row, -1 for those absent. Fixed values
@@ -97,12 +108,14 @@ class ContractReader {
   void read_extras(Quote& quote);
   double read_underlying_price() const;
   void mark_unreadable(Quote& quote, std::int32_t note) const;
-  std::int32_t note_number(Note note);
-  std::int32_t cell_count_note(std::size_t cells);
 
   const SourceOptions& options_;
-  QuoteTable& table_;
-  NameIndex& names_;
+  ContractBatch batch_;
+  struct Names {
+    std::vector<std::string> names;
+    NameIndex index{names};
+  };
+  std::optional<Names> names_;  // of the batch
   CellRules rules_;
   std::map<std::string, std::chrono::seconds> settlement_times_;
   std::chrono::seconds default_time_;
@@ -112,13 +125,30 @@ class ContractReader {
   int contracts_per_row_;
   std::vector<std::string_view> fixed_;
   std::array<SideColumns, 2> sides_;  // the second for the put of a call-put row
-  std::array<std::int32_t, kNoteCount> note_numbers_;
-  std::map<std::size_t, std::int32_t> cell_count_notes_;
 
   // The row being read.
   const std::vector<std::string_view>* cells_ = nullptr;
   const SideColumns* side_ = nullptr;
   std::optional<OsiSymbol> symbol_;
+};
+
+// Puts the batches of one file into the table, in the order of the file: then names and notes are
+// numbered in the order they are met there.
+class BatchMerger {
+ public:
+  BatchMerger(QuoteTable& table, NameIndex& names, std::size_t header_cells);
+  void merge(const ContractBatch& batch);
+
+ private:
+  std::int32_t note_number(std::int32_t note);
+  std::int32_t numbered(Note note);
+
+  QuoteTable& table_;
+  NameIndex& names_;
+  std::size_t header_cells_;
+  std::array<std::int32_t, kNoteCount> notes_;
+  std::map<std::size_t, std::int32_t> cell_counts_;
+  std::vector<std::int32_t> batch_names_;  // number in the table by number in the batch
 };
 
 }  // namespace duskgrid::quotes

@@ -2,17 +2,22 @@
 
 #include <fmt/format.h>
 #include <sys/mman.h>
+#include <tbb/enumerable_thread_specific.h>
+#include <tbb/global_control.h>
+#include <tbb/parallel_pipeline.h>
 
 #include <algorithm>
 #include <array>
 #include <cmath>
 #include <exception>
 #include <filesystem>
+#include <limits>
 #include <new>
 #include <set>
 #include <stdexcept>
 #include <utility>
 
+#include "quotes/blocks.h"
 #include "quotes/bytes.h"
 #include "quotes/contracts.h"
 #include "quotes/memo.h"
@@ -75,28 +80,33 @@ class FileLoad {
       : options_(options), rules_(rules), path_(path), loaded_(loaded), names_(names) {}
 
   std::optional<Failure> run() {
+    summary_.file = path_;
+    if (auto failure = read_opening()) return failure;
     auto source = TextSource::open(path_);
     if (!source) return source.failure();
-    RowReader rows(std::move(source.value()));
-    summary_.file = path_;
-    auto failure = read_rows(rows);
-    // What stopped the text explains more than what the rows before it looked like.
-    if (auto stopped = rows.failure(path_)) return stopped;
-    if (failure) return failure;
-    summary_.bytes = rows.source().stored_bytes();
-    summary_.compression = rows.source().compression();
+    BlockReader blocks(std::move(source.value()));
+    loaded_.table.files.push_back(path_);
+    if (auto failure = read_body(blocks)) return failure;
     loaded_.files.push_back(std::move(summary_));
     return std::nullopt;
   }
 
  private:
-  std::optional<Failure> read_rows(RowReader& rows) {
+  // How all rows are read. The file is opened apart for it, and again for its body.
+  std::optional<Failure> read_opening() {
+    auto source = TextSource::open(path_);
+    if (!source) return source.failure();
+    RowReader rows(std::move(source.value()));
+    auto failure = read_header(rows);
+    // What stopped the text explains more than what the rows before it looked like.
+    if (auto stopped = rows.failure(path_)) return stopped;
+    return failure;
+  }
+
+  std::optional<Failure> read_header(RowReader& rows) {
     Row row;
     // An empty file is a night without quotes, not a broken one.
-    if (!rows.next(row)) {
-      loaded_.table.files.push_back(path_);
-      return std::nullopt;
-    }
+    if (!rows.next(row)) return std::nullopt;
     if (row.open_quote) {
       return not_quotes(path_, "a quotation mark in the header row is never closed");
     }
@@ -106,18 +116,89 @@ class FileLoad {
     opening.first_sound = more && !row.open_quote;
     if (auto failure = map_header(opening)) return failure;
 
-    loaded_.table.files.push_back(path_);
-    SourceOptions found = options_;
-    found.delimiter = summary_.delimiter;
-    ContractReader contracts(found, rules_, summary_.columns, header_cells_, loaded_.table, names_);
+    options_.delimiter = summary_.delimiter;
+    const ContractReader contracts = reader();
     if (auto failure = contracts.problem()) {
       failure->where = path_ + ": " + failure->where;
       return failure;
     }
-    if (more) make_room(contracts.contracts_per_row(), opening.first.size());
-    for (bool is_row = more; is_row; is_row = rows.next(row)) add(rows, row, contracts);
+    contracts_per_row_ = contracts.contracts_per_row();
+    if (!more) return std::nullopt;
+    first_line_ = row.line;
+    make_room(contracts_per_row_, opening.first.size());
     return std::nullopt;
   }
+
+  ContractReader reader() const { return {options_, rules_, summary_.columns, header_cells_}; }
+
+  std::optional<Failure> read_body(BlockReader& blocks) {
+    BatchMerger merger(loaded_.table, names_, header_cells_);
+    read_blocks(blocks, merger);
+    RowReader rows = std::move(blocks).rest();
+    read_rows(rows, merger);
+    if (auto stopped = rows.failure(path_)) return stopped;
+    summary_.contracts = summary_.rows * contracts_per_row_;
+    summary_.bytes = rows.source().stored_bytes();
+    summary_.compression = rows.source().compression();
+    summary_.sha256 = rows.source().sha256();
+    return std::nullopt;
+  }
+
+  struct ThreadReader {
+    ContractReader contracts;
+    std::vector<std::string_view> cells;
+  };
+
+  // Blocks are read one after the other, their rows side by side, and joined in order.
+  void read_blocks(BlockReader& blocks, BatchMerger& merger) {
+    constexpr std::size_t kBlocksAThread = 3;
+    tbb::enumerable_thread_specific<ThreadReader> readers([&] {
+      return ThreadReader{reader(), {}};
+    });
+    const auto next = [&](tbb::flow_control& flow) {
+      TextBlock block;
+      if (!blocks.next(block)) flow.stop();
+      return block;
+    };
+    const auto read = [&](TextBlock block) { return read_block(block, readers.local()); };
+    const auto join = [&](const ContractBatch& batch) { add(batch, merger); };
+    tbb::parallel_pipeline(
+        kBlocksAThread *
+            tbb::global_control::active_value(tbb::global_control::max_allowed_parallelism),
+        tbb::make_filter<void, TextBlock>(tbb::filter_mode::serial_in_order, next) &
+            tbb::make_filter<TextBlock, ContractBatch>(tbb::filter_mode::parallel, read) &
+            tbb::make_filter<ContractBatch, void>(tbb::filter_mode::serial_in_order, join));
+  }
+
+  ContractBatch read_block(TextBlock& block, ThreadReader& reader) const {
+    BlockRows rows(block, first_line_);
+    for (Row row; rows.next(row);) {
+      split_row(row, summary_.delimiter, reader.cells);
+      reader.contracts.add_row(reader.cells, file(), row.line);
+    }
+    return reader.contracts.take();
+  }
+
+  // The rest of the text, whatever is in it.
+  void read_rows(RowReader& rows, BatchMerger& merger) {
+    constexpr std::int64_t kRowsABatch = 4096;
+    ContractReader contracts = reader();
+    std::int64_t count = 0;
+    for (Row row; rows.next(row);) {
+      if (row.line < first_line_) continue;
+      add_row(rows, row, contracts);
+      if (++count % kRowsABatch == 0) add(contracts.take(), merger);
+    }
+    add(contracts.take(), merger);
+  }
+
+  void add(const ContractBatch& batch, BatchMerger& merger) {
+    merger.merge(batch);
+    summary_.rows += batch.rows;
+    summary_.unreadable += batch.unreadable;
+  }
+
+  std::int32_t file() const { return static_cast<std::int32_t>(loaded_.table.files.size() - 1); }
 
   std::optional<Failure> map_header(const Opening& opening) {
     if (opening.header.find('\r') != std::string::npos) {
@@ -181,8 +262,7 @@ class FileLoad {
     return delimiters >= lines * static_cast<std::ptrdiff_t>(header_cells_ - 1);
   }
 
-  void add(RowReader& rows, const Row& row, ContractReader& contracts) {
-    const auto file = static_cast<std::int32_t>(loaded_.table.files.size() - 1);
+  void add_row(RowReader& rows, const Row& row, ContractReader& contracts) {
     bool open_quote = row.open_quote;
     if (row.joined && hides_rows(row)) {
       rows.split_joined();
@@ -195,20 +275,22 @@ class FileLoad {
         open_quote = true;
       }
     }
-    const int unreadable = open_quote ? contracts.add_unreadable(Note::open_quote, file, row.line)
-                                      : contracts.add_row(cells_, file, row.line);
-    ++summary_.rows;
-    summary_.contracts += contracts.contracts_per_row();
-    summary_.unreadable += unreadable;
+    if (open_quote)
+      contracts.add_unreadable(Note::open_quote, file(), row.line);
+    else
+      contracts.add_row(cells_, file(), row.line);
   }
 
-  const SourceOptions& options_;
+  SourceOptions options_;  // with the delimiter that the file has
   const TimeRules& rules_;
   const std::string& path_;
   LoadedQuotes& loaded_;
   NameIndex& names_;
   FileSummary summary_;
   std::size_t header_cells_ = 0;
+  int contracts_per_row_ = 1;
+  // Of the first row after the header; beyond all where there is none.
+  std::int64_t first_line_ = std::numeric_limits<std::int64_t>::max();
   std::vector<std::string_view> cells_;
 };
 

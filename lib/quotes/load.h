@@ -34,9 +34,9 @@ struct SourceOptions {
   // For files with one `price`: bid and ask are price -+ half_spread, where
   // half_spread = half_spread_absolute + half_spread_relative * price. Both >= 0 and
   // one stated, else a file with only a price is refused.
-  double half_spread_absolute = kAbsent;   // quote currency
-  double half_spread_relative = kAbsent;   // fraction of the price
-  std::optional<Exercise> exercise;  // where no column says; european without it
+  double half_spread_absolute = kAbsent;  // quote currency
+  double half_spread_relative = kAbsent;  // fraction of the price
+  std::optional<Exercise> exercise;       // where no column says; european without it
   std::optional<std::string> problem() const;
 };
 
@@ -52,6 +52,7 @@ struct TimeRules {
 struct FileSummary {
   std::string file;
   std::int64_t bytes = 0;   // as stored
+  std::string sha256;       // of the stored bytes, taken as they were read
   std::string compression;  // "none", "gzip", "zstd"
   char delimiter = ',';
   ColumnMap columns;
@@ -66,8 +67,9 @@ struct LoadedQuotes {
 };
 
 // Reads all sources in order (globs sorted by name, a file named twice read once).
-// fast-cpp-csv-parser splits lines and cells; a quoted cell may hold line feeds, and the quote
-// keeps the first line's number. Compression is known by content. UTF-8 with or without a
+// The rows of a file are read by several threads, as many as tbb::global_control allows; the result
+// does not depend on that. fast-cpp-csv-parser splits cells; a quoted cell may hold line feeds, and
+// the quote keeps the first line's number. Compression is known by content. UTF-8 with or without a
 // byte-order mark, LF or CRLF. An empty file has no rows. Failures: no_input for a missing or
 // unreadable file, a folder, or a glob that matches nothing; not_quotes for text that is no CSV,
 // other encodings (named), NUL bytes, damaged compression, lines past 1 MiB; configuration for bad

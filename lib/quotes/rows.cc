@@ -58,11 +58,6 @@ void split_at(const Row& row, std::vector<std::string_view>& cells) {
   }
 }
 
-bool is_blank(const Row& row) {
-  const char first = row.text[0];
-  return (first == '\0' || first == ' ' || first == '\t') && trim({row.text, row.size}).empty();
-}
-
 bool balanced(std::string_view text) {
   return std::count(text.begin(), text.end(), kQuote) % 2 == 0;
 }
@@ -85,8 +80,10 @@ struct RowReader::Lines {
   explicit Lines(TextSource& source) : reader("", std::make_unique<Feed>(source)) {}
 };
 
-RowReader::RowReader(std::unique_ptr<TextSource> source)
-    : source_(std::move(source)), lines_(std::make_unique<Lines>(*source_)) {}
+RowReader::RowReader(std::unique_ptr<TextSource> source, std::int64_t first_line)
+    : source_(std::move(source)),
+      lines_(std::make_unique<Lines>(*source_)),
+      number_(first_line - 1) {}
 
 RowReader::~RowReader() = default;
 
@@ -119,7 +116,7 @@ bool RowReader::next(Row& row) {
   followers_.clear();
   do {
     if (!next_line(row)) return false;
-  } while (is_blank(row));
+  } while (is_blank({row.text, row.size}));
   row.quoted = std::memchr(row.text, kQuote, row.size) != nullptr;
   row.joined = false;
   row.open_quote = false;

@@ -31,7 +31,8 @@ struct Row {
 // nowhere within kLongestRow, the first line alone is the row, with open_quote set.
 class RowReader {
  public:
-  explicit RowReader(std::unique_ptr<TextSource> source);
+  // `first_line` is the number of the first line of the source.
+  explicit RowReader(std::unique_ptr<TextSource> source, std::int64_t first_line = 1);
   ~RowReader();
 
   // False at the end of the text and after a failure. The row stays valid to the next call.
@@ -44,7 +45,7 @@ class RowReader {
 
   // A line longer than kLongestRow or a failure of the source, to be asked after the last row.
   std::optional<Failure> failure(const std::string& file) const;
-  const TextSource& source() const { return *source_; }
+  TextSource& source() { return *source_; }
 
  private:
   struct Lines;
@@ -58,7 +59,7 @@ class RowReader {
 
   std::unique_ptr<TextSource> source_;
   std::unique_ptr<Lines> lines_;
-  std::int64_t number_ = 0;  // physical lines taken from lines_
+  std::int64_t number_;  // of the physical line last taken from lines_
   bool too_long_ = false;
   std::deque<Line> waiting_;     // lines looked at and put back
   std::vector<Line> followers_;  // lines joined to the current row

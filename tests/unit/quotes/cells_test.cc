@@ -2,6 +2,8 @@
 
 #include <gtest/gtest.h>
 
+#include <cstdlib>
+#include <random>
 #include <string>
 
 namespace duskgrid::quotes {
@@ -60,6 +62,21 @@ TEST(CellRules, WithoutASeparatorNoGroupsAreRead) {
   const CellRules rules('.', 0, {});
   EXPECT_EQ(rules.number("1234"), 1234.0);
   EXPECT_EQ(rules.number("1,234"), std::nullopt);
+}
+
+// What is short is read apart, digits over a power of ten.
+TEST(CellRules, ShortNumbersAreThoseOfTheStandardLibrary) {
+  std::mt19937_64 random(3);
+  for (int i = 0; i < 20000; ++i) {
+    std::string digits;
+    for (std::uint64_t n = 1 + random() % 17; n > 0; --n)
+      digits += static_cast<char>('0' + random() % 10);
+    digits.insert(random() % (digits.size() + 1), ".");
+    EXPECT_EQ(ordinary().number(digits), std::strtod(digits.c_str(), nullptr)) << digits;
+  }
+  for (const char* cell : {".", "1..2", "1.2.3", "..", "1.2x", "x"})
+    EXPECT_EQ(ordinary().number(cell), std::nullopt) << cell;
+  EXPECT_EQ(ordinary().number("7."), 7.0);
 }
 
 TEST(CellRules, EndlessDigitsAreReadOrRefusedButNeverOverrun) {

@@ -1,4 +1,4 @@
-#include "publish/digest.h"
+#include "quotes/digest.h"
 
 #include <fmt/format.h>
 #include <openssl/evp.h>
@@ -6,7 +6,7 @@
 #include <array>
 #include <cstdio>
 
-namespace duskgrid::publish {
+namespace duskgrid::quotes {
 namespace {
 
 EVP_MD_CTX* as_context(void* p) { return static_cast<EVP_MD_CTX*>(p); }
@@ -47,4 +47,4 @@ Result<FileDigest> digest_file(const std::string& path) {
   return FileDigest{sum.hex(), bytes};
 }
 
-}  // namespace duskgrid::publish
+}  // namespace duskgrid::quotes
