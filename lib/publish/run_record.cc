@@ -106,6 +106,9 @@ RunRecord record_from_json(const ordered_json& in) {
   for (const auto& i : in.at("inputs"))
     run.inputs.push_back(
         {text_at(i, "file"), text_at(i, "sha256"), count_of(i, "bytes"), count_of(i, "rows")});
+  if (const auto& previous = in.at("previous"); !previous.is_null())
+    run.previous = PreviousRecord{text_at(previous, "folder"), text_at(previous, "as_of"),
+                                  text_at(previous, "sha256")};
   for (const auto& o : in.at("outputs")) run.outputs[text_at(o, "file")] = text_at(o, "sha256");
   run.rows = counts_from_json(in);
   for (const auto& [name, u] : in.at("underlyings").items())

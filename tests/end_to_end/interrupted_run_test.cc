@@ -69,12 +69,14 @@ class Running {
   pid_t child_ = 0;
 };
 
-// Every file under a folder but the one that differs between equal runs; links by where they lead.
+// Every file under a folder but those that differ between equal runs, the history's pages among
+// them; links by where they lead.
 Files files_in(const fs::path& folder) {
   Files files;
   for (const auto& entry : fs::recursive_directory_iterator(folder)) {
     const auto name = fs::relative(entry.path().parent_path(), folder) / entry.path().filename();
-    if (entry.path().filename() == "timings.json" || entry.path().filename() == ".lock") continue;
+    const std::string file = entry.path().filename();
+    if (file == "timings.json" || file == ".lock" || file.starts_with("history.sqlite")) continue;
     if (entry.is_symlink())
       files[name.lexically_normal()] = "-> " + fs::read_symlink(entry.path()).string();
     else if (entry.is_regular_file())
@@ -118,6 +120,12 @@ class InterruptedRun : public testing::Test {
   }
   fs::path out() const { return scratch_ / "out"; }
   fs::path folder() const { return out() / kDate; }
+  // What the history says of one name.
+  std::string series() const {
+    const auto ran = duskgrid({"history", "QNOR", "--out", out().string()});
+    EXPECT_EQ(ran.status, 0) << ran.err;
+    return ran.out;
+  }
   void publish_good() { ASSERT_EQ(duskgrid(good()).status, kSomeRefused); }
   // What the run at work says of itself once it holds the lock.
   std::string wait_for_holder() const {
@@ -149,12 +157,15 @@ TEST_F(InterruptedRun, KilledAtAnyInstantLeavesACompleteRunAndTheNextIsClean) {
   std::mt19937_64 random(kSeed);
   publish_good();
   const Files first = files_in(folder());
+  const std::string first_series = series();
   const auto begin = SteadyClock::now();
   const auto arguments = other();
   ASSERT_EQ(duskgrid(arguments).status, kSomeRefused);
   const std::chrono::duration<double> whole = SteadyClock::now() - begin;
   const Files second = files_in(folder());
   ASSERT_NE(first, second);
+  // The grids differ, not the surfaces: the history says the same of both, whole, at any instant.
+  ASSERT_EQ(series(), first_series);
   publish_good();
 
   int killed = 0, writing = 0, replaced = 0;
@@ -183,6 +194,7 @@ TEST_F(InterruptedRun, KilledAtAnyInstantLeavesACompleteRunAndTheNextIsClean) {
     ASSERT_EQ(checked.status, 0) << checked.out << checked.err;
     ASSERT_EQ(fs::read_symlink(out() / "latest"), kDate);
     ASSERT_TRUE(fs::exists(out() / "latest" / "run.json"));
+    ASSERT_EQ(series(), first_series);
   }
   std::printf("%d of %d runs killed, %d left a partial folder, %d had replaced the earlier run\n",
               killed, kills_asked(), writing, replaced);

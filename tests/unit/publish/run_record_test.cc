@@ -24,6 +24,7 @@ RunRecord made_record() {
   run.underlyings = {
       {"HALYRD", Status::flagged, true, 3, 2, 1, 4, "2031-03-13T16:00:00-05:00", "why"},
       {"=KELPWK", Status::refused, false, 0, 0, 0, 0, "", "no usable quote"}};
+  run.previous = {"2031-03-13", "2031-03-13T16:00:00-05:00", "99"};
   return run;
 }
 
