@@ -4,6 +4,7 @@
 #include <charconv>
 #include <cmath>
 #include <csignal>
+#include <nlohmann/json.hpp>
 
 #include "commands.h"
 #include "console.h"
@@ -25,6 +26,7 @@ struct BuildArguments {
   int threads = 0;
   double wait_seconds = 0;
   bool quiet = false;
+  bool json = false;
   bool slices = false;
   bool list_options = false;
 };
@@ -63,6 +65,14 @@ std::vector<const MarkedUnderlying*> by_concern(const std::vector<MarkedUnderlyi
   return order;
 }
 
+console::Colour colour_of(Status status) {
+  switch (status) {
+    case Status::published: return console::Colour::good;
+    case Status::refused: return console::Colour::bad;
+    default: return console::Colour::look;
+  }
+}
+
 void print_underlyings(const night::NightOutcome& outcome) {
   constexpr std::size_t kMostRows = 40;
   console::Table table(
@@ -75,6 +85,7 @@ void print_underlyings(const night::NightOutcome& outcome) {
                r.slices == 0 ? ""
                : r.certified ? "yes"
                              : "no"});
+    table.tint(1, colour_of(r.status));
     table.remark(console::wrapped(r.message, 78, 2));
   }
   if (!order.empty()) fmt::print(stderr, "{}", table.text());
@@ -128,6 +139,33 @@ int status_of(const night::NightOutcome& outcome) {
   return worst == Status::published ? console::kDone : console::kFlagged;
 }
 
+// One line for the program that started this one.
+void print_json(const night::NightOutcome& outcome, int status) {
+  using nlohmann::ordered_json;
+  const auto& record = outcome.record;
+  ordered_json statuses = ordered_json::object(), reasons = ordered_json::object();
+  for (const auto s : {Status::published, Status::flagged, Status::carried, Status::refused})
+    statuses[std::string(publish::word(s))] =
+        std::count_if(record.underlyings.begin(), record.underlyings.end(),
+                      [&](const auto& u) { return u.status == s; });
+  for (const auto& entry : quotes::reasons())
+    if (const auto n = record.rows.by_reason[static_cast<std::size_t>(entry.reason)];
+        n > 0 && !entry.word.empty())
+      reasons[std::string(entry.word)] = n;
+  ordered_json out;
+  out["folder"] = outcome.folder;
+  out["as_of"] = quotes::format_instant(record.as_of.clock, record.as_of.instant);
+  out["exit_status"] = status;
+  out["underlyings"] = statuses;
+  out["rows"] = {{"read", record.rows.read},
+                 {"used", record.rows.used},
+                 {"spare", record.rows.spare},
+                 {"dropped", record.rows.dropped}};
+  out["reasons"] = reasons;
+  out["remarks"] = outcome.remarks;
+  fmt::print("{}\n", out.dump(-1, ' ', false, ordered_json::error_handler_t::replace));
+}
+
 void print_options() {
   std::string table = "-";
   for (const auto& option : night::options()) {
@@ -160,8 +198,12 @@ int build(const BuildArguments& args) {
     return outcome.failure().fault == Fault::stopped ? signals.report(outcome.failure())
                                                      : console::report(outcome.failure());
   if (!args.quiet) print_summary(*outcome, args.slices);
-  fmt::print("{}\n", outcome->folder);
-  return status_of(*outcome);
+  const int status = status_of(*outcome);
+  if (args.json)
+    print_json(*outcome, status);
+  else
+    fmt::print("{}\n", outcome->folder);
+  return status;
 }
 
 }  // namespace
@@ -191,6 +233,9 @@ void add_build(CLI::App& program, int& status) {
       ->check(CLI::Range(0, 1024))
       ->capture_default_str();
   command->add_flag("--slices", args->slices, "Show how well each expiry is met");
+  command->add_flag("--json", args->json,
+                    "Print one line of JSON in place of the\n"
+                    "folder: folder, exit status, counts");
   command->add_flag("--quiet", args->quiet, "No progress and no summary");
   command->add_flag_callback(
       "--options",

@@ -4,7 +4,10 @@
 #include <unistd.h>
 
 #include <algorithm>
+#include <array>
+#include <cctype>
 #include <cstdio>
+#include <cstdlib>
 
 namespace duskgrid::console {
 namespace {
@@ -40,12 +43,28 @@ int report(const Failure& failure) {
   return exit_status(failure.fault);
 }
 
+bool coloured() {
+  const char* forbidden = std::getenv("NO_COLOR");
+  return isatty(STDERR_FILENO) != 0 && (forbidden == nullptr || *forbidden == 0);
+}
+
+std::string in_colour(const std::string& text, Colour colour) {
+  constexpr std::array<const char*, 4> kCodes{"", "\033[36m", "\033[33m", "\033[35m"};
+  if (colour == Colour::plain || !coloured()) return text;
+  return kCodes[static_cast<std::size_t>(colour)] + text + "\033[0m";
+}
+
 ProgressLine::ProgressLine(bool quiet) : active_(!quiet && isatty(STDERR_FILENO) != 0) {}
 
 ProgressLine::~ProgressLine() { clear(); }
 
 void ProgressLine::show(std::string_view stage, std::int64_t done, std::int64_t total) {
   if (!active_) return;
+  if (stage != stage_) {
+    stage_ = stage;
+    began_ = std::chrono::steady_clock::now();
+    last_permille_ = -1;
+  }
   const int permille = total > 0 ? static_cast<int>(1000 * done / total) : -1;
   if (total > 0 && permille == last_permille_) return;
   last_permille_ = permille;
@@ -55,8 +74,9 @@ void ProgressLine::show(std::string_view stage, std::int64_t done, std::int64_t 
   } else {
     constexpr int kBar = 30;
     const int filled = static_cast<int>(kBar * done / total);
-    fmt::print(stderr, "\r\033[K{} {:=<{}}{:.<{}} {}/{}", stage, "", filled, "", kBar - filled,
-               grouped(done), grouped(total));
+    const std::chrono::duration<double> spent = std::chrono::steady_clock::now() - began_;
+    fmt::print(stderr, "\r\033[K{} {:=<{}}{:.<{}} {}/{}  {}", stage, "", filled, "", kBar - filled,
+               grouped(done), grouped(total), pace(done, total, spent.count()));
   }
   std::fflush(stderr);
 }
@@ -74,6 +94,10 @@ Table::Table(std::vector<std::string> headers) : headers_(std::move(headers)) {
 }
 
 void Table::add(std::vector<std::string> cells) { rows_.push_back({std::move(cells), ""}); }
+void Table::tint(std::size_t column, Colour colour) {
+  rows_.back().tinted = column;
+  rows_.back().colour = colour;
+}
 void Table::remark(std::string text) { rows_.back().remark = std::move(text); }
 
 std::string Table::text() const {
@@ -82,17 +106,18 @@ std::string Table::text() const {
     widths.push_back(width_of(headers_[c]));
     for (const auto& row : rows_) widths[c] = std::max(widths[c], width_of(row.cells[c]));
   }
-  const auto line = [&](const std::vector<std::string>& cells) {
+  const auto line = [&](const std::vector<std::string>& cells, std::size_t tinted, Colour colour) {
     std::string out;
     for (std::size_t c = 0; c < cells.size(); ++c) {
       if (c > 0) out += "  ";
-      out += padded(cells[c], widths[c], to_the_right_[c]);
+      const auto cell = padded(cells[c], widths[c], to_the_right_[c]);
+      out += c == tinted ? in_colour(cell, colour) : cell;
     }
     out.erase(out.find_last_not_of(' ') + 1);
     return out + '\n';
   };
-  std::string out = line(headers_);
-  for (const auto& row : rows_) out += line(row.cells) + row.remark;
+  std::string out = line(headers_, 0, Colour::plain);
+  for (const auto& row : rows_) out += line(row.cells, row.tinted, row.colour) + row.remark;
   return out;
 }
 
@@ -101,6 +126,35 @@ std::string grouped(std::int64_t n) {
   for (int i = static_cast<int>(digits.size()) - 3; i > 0; i -= 3)
     digits.insert(static_cast<std::size_t>(i), ",");
   return n < 0 ? "-" + digits : digits;
+}
+
+std::string clock_text(double seconds) {
+  const auto whole = static_cast<std::int64_t>(seconds + 0.5);
+  if (whole >= 3600)
+    return fmt::format("{}:{:02}:{:02}", whole / 3600, whole / 60 % 60, whole % 60);
+  return fmt::format("{}:{:02}", whole / 60, whole % 60);
+}
+
+std::string pace(std::int64_t done, std::int64_t total, double seconds) {
+  constexpr double kTooSoon = 0.2;  // seconds
+  if (done <= 0 || seconds < kTooSoon) return "";
+  const double rate = static_cast<double>(done) / seconds;
+  return fmt::format(
+      "{}/s  {} left",
+      rate < 10 ? fmt::format("{:.1f}", rate) : grouped(static_cast<std::int64_t>(rate)),
+      clock_text(static_cast<double>(total - done) / rate));
+}
+
+bool writes_utf8() {
+  for (const char* name : {"LC_ALL", "LC_CTYPE", "LANG"}) {
+    const char* value = std::getenv(name);
+    if (value == nullptr || *value == 0) continue;  // the first that is set decides (POSIX)
+    std::string folded;
+    for (const char* c = value; *c != 0; ++c)
+      if (*c != '-') folded += static_cast<char>(std::tolower(static_cast<unsigned char>(*c)));
+    return folded.find("utf8") != std::string::npos;
+  }
+  return false;
 }
 
 std::string shortened(std::string_view text, std::size_t width) {

@@ -1,6 +1,6 @@
 #!/usr/bin/env bash
-# Installs what the build needs from Debian's packages. Quiet when all is present;
-# without root it says what to install and stops.
+# Installs what the build needs from Debian's packages, and packages named as arguments. Quiet when
+# all is present; without root it says what to install and stops.
 set -euo pipefail
 
 needs=(
@@ -8,6 +8,8 @@ needs=(
   libeigen3-dev libboost-dev libboost-iostreams-dev libfccp-dev libcli11-dev
   libtomlplusplus-dev nlohmann-json3-dev libfmt-dev libtbb-dev libhwy-dev
   libhowardhinnant-date-dev libssl-dev libsqlite3-dev libgtest-dev libbenchmark-dev tzdata
+  node-d3
+  "$@"
 )
 missing=()
 for package in "${needs[@]}"; do

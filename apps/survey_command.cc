@@ -4,6 +4,7 @@
 #include <map>
 #include <set>
 
+#include "chain_picture.h"
 #include "commands.h"
 #include "console.h"
 #include "input_arguments.h"
@@ -92,6 +93,15 @@ void print_chains(const quotes::QuoteTable& table, const quotes::Clock& clock) {
   if (american > 0) fmt::print("{} quotes are american\n", grouped(american));
 }
 
+// Of the underlying with the most contracts.
+void print_picture(const quotes::QuoteTable& table, const quotes::Clock& clock) {
+  const auto chains = quotes::group_chains(table);
+  const auto most = std::max_element(chains.begin(), chains.end(),
+                                     [](const auto& a, const auto& b) { return a.read < b.read; });
+  if (most == chains.end() || most->slices.empty()) return;
+  fmt::print("\n{}\n", chain_picture(table, *most, clock, console::writes_utf8()));
+}
+
 // What the as-of has to be close to.
 void print_times(const quotes::QuoteTable& table, const quotes::Clock& clock) {
   auto first = quotes::kNoInstant, last = quotes::kNoInstant;
@@ -151,6 +161,7 @@ int survey(const InputArguments& args) {
   if (!loaded) return console::report(loaded.failure());
   for (const auto& file : loaded->files) print_file(file);
   print_chains(loaded->table, night->as_of.clock);
+  print_picture(loaded->table, night->as_of.clock);
   print_times(loaded->table, night->as_of.clock);
   print_exercise(loaded->files);
   print_remarks(loaded->table);

@@ -27,6 +27,7 @@ cat <<END
 
 exit status $status: 0 all published, 3 some flagged, 4 some not published
 Where to look:
+  out/2031-03-14/report/index.html  the night as pages for a browser
   out/2031-03-14/grid.csv         the volatilities, by underlying, expiry and moneyness
   out/2031-03-14/ledger.csv       what became of every quote, and why
   out/2031-03-14/forwards.csv     forwards and discount factors, and where they come from

@@ -27,14 +27,33 @@ add_stage(arbitrage
 
 add_stage(publish
   SOURCES compare.cc grid.cc grid_file.cc history.cc output_lock.cc past_run.cc points_file.cc
-    run_audit.cc run_folder.cc run_record.cc surface_json.cc sync_files.cc table_file.cc tables.cc
-    tables_parallel.cc text.cc values.cc
+    report.cc report_page.cc report_text.cc run_audit.cc run_folder.cc run_record.cc surface_json.cc
+    sync_files.cc table_file.cc tables.cc tables_parallel.cc text.cc values.cc
   NEEDS duskgrid::arbitrage
   PRIVATE_NEEDS Boost::boost Boost::iostreams SQLite::SQLite3 TBB::tbb Threads::Threads fmt::fmt
     nlohmann_json::nlohmann_json)
 
+# The pages of the report, and D3 as Debian packs it, become bytes of the library.
+find_file(DUSKGRID_D3 d3.min.js REQUIRED
+  PATHS /usr/share/nodejs/d3/dist /usr/share/javascript/d3 /usr/lib/nodejs/d3/dist
+  NO_CMAKE_FIND_ROOT_PATH)
+set(report ${CMAKE_CURRENT_SOURCE_DIR}/lib/publish/report)
+set(report_files d3=${DUSKGRID_D3} d3_licence=${report}/d3_licence.txt
+  index_page=${report}/index.html underlying_page=${report}/underlying.html
+  style=${report}/style.css common=${report}/common.js index_script=${report}/index.js
+  frame=${report}/frame.js smile=${report}/smile.js surface=${report}/surface.js
+  forward=${report}/forward.js ledger=${report}/ledger.js changes=${report}/changes.js
+  page_script=${report}/page.js)
+list(TRANSFORM report_files REPLACE "^[^=]*=" "" OUTPUT_VARIABLE report_paths)
+set(embedded ${CMAKE_CURRENT_BINARY_DIR}/report_files.cc)
+add_custom_command(OUTPUT ${embedded}
+  COMMAND ${CMAKE_COMMAND} -DOUT=${embedded} "-DFILES=${report_files}" -P ${report}/embed.cmake
+  DEPENDS ${report_paths} ${report}/embed.cmake VERBATIM)
+target_sources(duskgrid_publish PRIVATE ${embedded})
+
 add_stage(night
-  SOURCES carry.cc changes.cc config.cc expiries.cc mark.cc previous.cc run.cc slice_market.cc
+  SOURCES carry.cc changes.cc config.cc expiries.cc mark.cc previous.cc report_pages.cc run.cc
+    slice_market.cc
   NEEDS duskgrid::publish
   PRIVATE_NEEDS TBB::tbb fmt::fmt nlohmann_json::nlohmann_json tomlplusplus::tomlplusplus)
 target_compile_definitions(duskgrid_night PRIVATE DUSKGRID_VERSION="${PROJECT_VERSION}")

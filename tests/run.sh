@@ -6,7 +6,8 @@
 #   bash tests/run.sh release    the release build alone (or: asan-ubsan, debug, tsan)
 set -euo pipefail
 cd "$(dirname "$0")/.."
-bash apps/needs.sh
+# A browser and what drives it, for the tests of the report.
+bash apps/needs.sh chromium fonts-dejavu-core nodejs
 
 jobs=$(nproc)
 if command -v ccache >/dev/null; then

@@ -111,7 +111,7 @@ std::map<std::string, TermNights> past_terms(const std::string& out, const std::
 
 Result<bool> write_changes(publish::RunFolder& folder, std::vector<MarkedUnderlying>& marked,
                            const ComparedNights& nights, const NightConfig& config,
-                           const ResolvedNight& night) {
+                           const ResolvedNight& night, const SeenChange& seen) {
   // So many at a time: all lines of a large night would not fit in memory.
   constexpr std::size_t kAtOnce = 256;
   const auto& clock = night.as_of.clock;
@@ -128,6 +128,7 @@ Result<bool> write_changes(publish::RunFolder& folder, std::vector<MarkedUnderly
         const auto change = change_of(name, pair, nights, config, night);
         lines[i - begin] = publish::changes_lines(change, config.grid.axis, clock);
         if (pair.now) flag_changes(pair.now->record, change, nights.previous->as_of, clock);
+        if (pair.now && seen) seen(*pair.now, change);
       });
       for (const auto& text : lines) file.write(text);
     }

@@ -2,11 +2,13 @@
 // are compared: publish/compare.h.
 #pragma once
 
+#include <functional>
 #include <map>
 #include <string>
 #include <vector>
 
 #include "night/mark.h"
+#include "publish/compare.h"
 #include "publish/history.h"
 #include "publish/past_run.h"
 #include "publish/run_folder.h"
@@ -28,9 +30,12 @@ std::map<std::string, publish::TermNights> past_terms(const std::string& out,
 // Writes changes.csv, a header alone without a night before. Underlyings with nodes to sign off,
 // expiries that vanished, or the quotes of the night before get a message, and are flagged where
 // they were published without.
+// `seen`, where there is one, is shown what was found of every name of tonight, flags and all, from
+// several threads at once.
+using SeenChange = std::function<void(const MarkedUnderlying&, const publish::UnderlyingChange&)>;
 Result<bool> write_changes(publish::RunFolder& folder, std::vector<MarkedUnderlying>& marked,
                            const ComparedNights& nights, const NightConfig& config,
-                           const ResolvedNight& night);
+                           const ResolvedNight& night, const SeenChange& seen = {});
 
 // Two nights of run folders, `now`'s nodes being those of its configuration; by name.
 std::vector<publish::UnderlyingChange> compare_runs(

@@ -88,6 +88,15 @@ const std::vector<Field<NightConfig>>& night_fields() {
                          "CSV with columns underlying, ex_date, amount and perhaps kind (cash, or "
                          "proportional: a share of the spot), beside the configuration",
                          DUSKGRID_AT(dividend_files), to_texts),
+      {"report", "automatic, all, flagged or none",
+       "which underlyings have a page in report/: all; those flagged, carried, refused or changed "
+       "by more than is usual; automatic is all of fewer than 200, else flagged; none is no report",
+       [](NightConfig& c, const toml::node& node) {
+         const auto scope = publish::parse_report_scope(to_text(node).value_or(""));
+         if (scope) c.report = *scope;
+         return scope.has_value();
+       },
+       [](const NightConfig& c) { return ordered_json(publish::word(c.report)); }},
   };
   return fields;
 }

@@ -16,6 +16,7 @@
 #include "pricing/selection.h"
 #include "publish/compare.h"
 #include "publish/grid.h"
+#include "publish/report.h"
 #include "quotes/clean.h"
 #include "quotes/load.h"
 #include "surface/fit.h"
@@ -73,6 +74,7 @@ struct NightConfig {
   publish::CompareOptions compare;
   CarryOptions carry;
   HistoryOptions history;
+  publish::ReportScope report = publish::ReportScope::automatic;
 };
 
 // What must be known before a night can run, worked out of its configuration.

@@ -17,6 +17,7 @@
 #include "night/carry.h"
 #include "night/changes.h"
 #include "night/previous.h"
+#include "night/report_pages.h"
 #include "publish/digest.h"
 #include "publish/run_folder.h"
 #include "publish/surface_json.h"
@@ -306,9 +307,17 @@ Result<NightOutcome> run_night(const NightConfig& config, const RunOptions& opti
   const auto date = quotes::format_date(night->as_of.clock, night->as_of.instant);
   const ComparedNights nights{previous ? &*previous : nullptr,
                               past_terms(options.out, date, config.compare, outcome.remarks)};
-  if (auto changes = write_changes(folder, marked, nights, config, *night); !changes)
+  ReportChanges report(marked, config, *night);
+  const auto taker = previous ? report.taker(previous->as_of.instant) : SeenChange{};
+  if (auto changes = write_changes(folder, marked, nights, config, *night, taker); !changes)
     return changes.failure();
   for (const auto& m : marked) outcome.record.underlyings.push_back(m.record);
+  remark_unmatched(config, table, outcome.remarks);
+  stages.begin("report");
+  if (auto written = write_report(folder, table, marked, report.extras(), config, *night,
+                                  outcome.record, outcome.remarks);
+      !written)
+    return written.failure();
   outcome.record.outputs = folder.digests();
   auto written = folder.add(
       "run.json", [&](RunFile& file) { file.write(publish::run_to_json(outcome.record)); });
@@ -320,7 +329,6 @@ Result<NightOutcome> run_night(const NightConfig& config, const RunOptions& opti
   if (!written) return written.failure();
   outcome.folder = folder.final_path();
   outcome.run_sha256 = folder.digests().at("run.json");
-  remark_unmatched(config, table, outcome.remarks);
   if (folder.replaced()) outcome.remarks.push_back("replaced the earlier run of that date");
   outcome.remarks.insert(outcome.remarks.end(), folder.remarks().begin(), folder.remarks().end());
   for (const auto& file : loaded->files)

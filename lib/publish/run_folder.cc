@@ -187,6 +187,7 @@ Result<bool> RunFolder::close(RunFile& file, const std::string& path) {
   if (stopped) return unpublished(Fault::stopped, "", "stopped while writing");
   if (!file.error_.empty())
     return unpublished(Fault::cannot_create, final_ + "/" + path, file.error_);
+  const std::lock_guard lock(adding_);
   digests_[path] = file.sum_.hex();
   return true;
 }

@@ -5,6 +5,7 @@
 #include <cstdio>
 #include <map>
 #include <memory>
+#include <mutex>
 #include <stop_token>
 #include <string>
 #include <string_view>
@@ -46,7 +47,7 @@ class RunFolder {
   RunFolder& operator=(const RunFolder&) = delete;
 
   // Writes one file through `fill`; `path` is relative and may name a subfolder. Files written are
-  // in digests() by path.
+  // in digests() by path. May be called from several threads at once, for different paths.
   template <class Fill>
   Result<bool> add(const std::string& path, Fill fill) {
     RunFile file;
@@ -80,6 +81,7 @@ class RunFolder {
   OutputLock lock_;
   std::stop_token stop_;
   bool replaced_ = false;
+  std::mutex adding_;
   std::map<std::string, std::string> digests_;
   std::vector<std::string> remarks_;
 };

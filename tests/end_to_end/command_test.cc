@@ -274,6 +274,34 @@ TEST_F(Command, SurveyNamesColumnsReadAndChainsFound) {
   EXPECT_NE(ran.out.find("put_call"), std::string::npos);
 }
 
+TEST_F(Command, SurveyDrawsTheLargestChainInEightyColumnsOfTheLocalesLetters) {
+  spill(scratch_ / "quotes.csv", kHeader + sound_chain("SANDPR"));
+  const std::string quotes = (scratch_ / "quotes.csv").string();
+  const auto in_locale = [&](const std::string& locale) {
+    return run("/usr/bin/env", {"LC_ALL=" + locale, DUSKGRID_PROGRAM, "survey", quotes}).out;
+  };
+  const auto plain = in_locale("C");
+  EXPECT_NE(plain.find("SANDPR: expiries down, strikes across"), std::string::npos) << plain;
+  EXPECT_TRUE(std::all_of(plain.begin(), plain.end(), [](char c) { return (c & 0x80) == 0; }));
+  EXPECT_NE(in_locale("C.UTF-8").find("\u2588"), std::string::npos);
+}
+
+TEST_F(Command, BuildPrintsOneLineOfJsonWhenAsked) {
+  spill(scratch_ / "quotes.csv", kHeader + sound_chain("SANDPR"));
+  const auto ran = duskgrid({"build", (scratch_ / "quotes.csv").string(), "--as-of", kAsOf, "--out",
+                             out().string(), "--json"});
+  const auto summary = nlohmann::json::parse(ran.out);
+  EXPECT_EQ(std::count(ran.out.begin(), ran.out.end(), '\n'), 1);
+  EXPECT_EQ(summary.at("exit_status"), ran.status);
+  EXPECT_EQ(summary.at("folder"), folder().string());
+  EXPECT_EQ(summary.at("underlyings").at("published"), 1);
+  EXPECT_EQ(summary.at("rows").at("read"), summary.at("rows").at("used").get<int>() +
+                                               summary.at("rows").at("spare").get<int>() +
+                                               summary.at("rows").at("dropped").get<int>());
+  // Not a terminal: no colour and no progress.
+  EXPECT_EQ(ran.err.find('\033'), std::string::npos);
+}
+
 TEST_F(Command, NamesThatASpreadsheetWouldRunAreGuardedInCsvAndPlainInJson) {
   ASSERT_EQ(build(kHeader + sound_chain("=1+1") + sound_chain("../up")).status, 0);
   bool guarded = false;

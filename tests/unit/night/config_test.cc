@@ -53,6 +53,7 @@ const std::vector<Stated>& stated() {
       {"", "exercise", "'american'", "\"american\""},
       {"", "holidays", "['2031-12-25', 2032-01-01]", R"(["2031-12-25","2032-01-01"])"},
       {"", "dividend_files", "['/d.csv']", R"(["/d.csv"])"},
+      {"", "report", "'flagged'", "\"flagged\""},
       {"source", "files", "['/a.csv', '/b*.csv']", R"(["/a.csv","/b*.csv"])"},
       {"source", "layout", "'call-put-per-row'", "\"call-put-per-row\""},
       {"source", "delimiter", "';'", "\";\""},

@@ -112,6 +112,40 @@ TEST_F(RunNightTest, FolderOfTheLocalDateHoldsEveryFile) {
   EXPECT_EQ(outcome.underlyings.size(), 3U);
 }
 
+TEST_F(RunNightTest, ReportHasThePagesThatItsScopeAsksFor) {
+  rows_.push_back("SANDPR,2031-06-20,100,C,0,1,100\n");  // nothing to fit: refused
+  write(joined(rows_));
+  const auto pages = [&](const std::string& scope) {
+    const auto config = parse_config(
+        "as_of = '2031-03-14'\nreport = '" + scope + "'\n[[source]]\nfiles = 'quotes.csv'\n",
+        "night.toml", folder_);
+    const auto outcome = run_night(*config, {folder_ + "/" + scope, 2, {}});
+    std::vector<std::string> names;
+    if (outcome && fs::exists(outcome->folder + "/report"))
+      for (const auto& entry : fs::directory_iterator(outcome->folder + "/report"))
+        names.push_back(entry.path().filename());
+    std::sort(names.begin(), names.end());
+    return names;
+  };
+  using Names = std::vector<std::string>;
+  const Names all{"%3DNORLUX.html", "HALYRD.html", "KELPWK.html", "SANDPR.html",
+                  "duskgrid.css",   "duskgrid.js", "index.html"};
+  EXPECT_EQ(pages("all"), all);
+  EXPECT_EQ(pages("automatic"), all);
+  EXPECT_EQ(pages("flagged"), (Names{"SANDPR.html", "duskgrid.css", "duskgrid.js", "index.html"}));
+  EXPECT_EQ(pages("none"), Names{});
+}
+
+TEST_F(RunNightTest, ReportShowsWhatMovedSinceTheNightBefore) {
+  write(joined(rows_));
+  ASSERT_TRUE(attempt("out", 1, "2031-03-14").ok());
+  const auto second = attempt("out", 2, "2031-03-17");
+  ASSERT_TRUE(second.ok());
+  const auto page = content_of(second->folder + "/report/HALYRD.html");
+  EXPECT_NE(page.find("\"previous\":\"2031-03-14"), std::string::npos);
+  EXPECT_NE(page.find("\"changes\":[["), std::string::npos);
+}
+
 TEST_F(RunNightTest, OneAndTwoThreadsGiveTheSameBytes) {
   write(joined(rows_));
   const auto one = files_of(run("one", 1).folder), two = files_of(run("two", 2).folder);
@@ -129,7 +163,8 @@ TEST_F(RunNightTest, OrderOfRowsChangesNothingButTheLedger) {
   write(joined(rows_));
   const auto shuffled = files_of(run("shuffled").folder);
   for (const auto& [file, text] : sorted) {
-    if (file == "ledger.csv" || file == "run.json") continue;
+    // The report names lines too.
+    if (file == "ledger.csv" || file == "run.json" || file.starts_with("report/")) continue;
     EXPECT_TRUE(text == shuffled.at(file)) << file << ", seed " << kSeed;
   }
   const auto lines = [](const std::string& text) {
@@ -297,7 +332,8 @@ TEST_F(RunNightTest, ProgressTellsEveryStageAndEveryUnderlyingOnce) {
     marked.push_back(done);
   };
   ASSERT_TRUE(run_night(*config, {folder_ + "/out", 2, progress}).ok());
-  EXPECT_EQ(stages, (std::vector<std::string>{"read", "clean", "mark", "carry", "publish"}));
+  EXPECT_EQ(stages,
+            (std::vector<std::string>{"read", "clean", "mark", "carry", "publish", "report"}));
   EXPECT_EQ(marked, (std::vector<std::int64_t>{1, 2, 3}));
   const json timings = json::parse(content_of(folder_ + "/out/2031-03-14/timings.json"));
   ASSERT_EQ(timings["stages"].size(), stages.size());

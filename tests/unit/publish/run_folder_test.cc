@@ -9,6 +9,9 @@
 #include <fstream>
 #include <iterator>
 #include <map>
+#include <string>
+#include <thread>
+#include <vector>
 
 namespace duskgrid::publish {
 namespace {
@@ -342,6 +345,23 @@ TEST_F(RunFolderTest, ReadOnlyFolderIsCannotCreate) {
   fs::permissions(out_, fs::perms::owner_all);
   ASSERT_FALSE(folder.ok());
   EXPECT_EQ(folder.failure().fault, Fault::cannot_create);
+}
+
+TEST_F(RunFolderTest, FilesOfSeveralThreadsAreAllThere) {
+  constexpr int kThreads = 4, kFiles = 50;
+  const auto run = created();
+  std::vector<std::thread> threads;
+  for (int t = 0; t < kThreads; ++t)
+    threads.emplace_back([&, t] {
+      for (int i = 0; i < kFiles; ++i) {
+        const auto name = std::to_string(t) + "-" + std::to_string(i);
+        EXPECT_TRUE(run->add("pages/" + name, [&](RunFile& file) { file.write(name); }).ok());
+      }
+    });
+  for (auto& thread : threads) thread.join();
+  EXPECT_EQ(run->digests().size(), std::size_t{kThreads * kFiles});
+  ASSERT_TRUE(run->commit().ok());
+  EXPECT_EQ(content_of(run->final_path() + "/pages/3-49"), "3-49");
 }
 
 }  // namespace
