@@ -286,6 +286,17 @@ bool may_mount(const fs::path& place) {
   return in_own_mounts("mount -t tmpfs none " + place.string()) == 0;
 }
 
+// Kilobytes that a folder takes on a disk of 4 kB blocks.
+int kilobytes_of(const fs::path& folder) {
+  constexpr int kBlock = 4;
+  int total = 0;
+  for (const auto& entry : fs::recursive_directory_iterator(folder)) {
+    const auto bytes = entry.is_regular_file() ? entry.file_size() : 1;
+    total += kBlock * static_cast<int>((bytes + kBlock * 1024 - 1) / (kBlock * 1024));
+  }
+  return total;
+}
+
 // A disk of any size that does not hold the second run: from too small for its first file to
 // almost large enough.
 TEST_F(InterruptedRun, FullDiskLeavesTheEarlierRunAndSaysSo) {
@@ -296,8 +307,16 @@ TEST_F(InterruptedRun, FullDiskLeavesTheEarlierRunAndSaysSo) {
         "HALYRD,2031-06-20,95,P,1.9,2.0,100\nHALYRD,2031-06-20,100,C,3.9,4.0,100\n"
         "HALYRD,2031-06-20,100,P,3.8,3.9,100\nHALYRD,2031-06-20,105,C,1.9,2.0,100\n");
   const std::string program = DUSKGRID_PROGRAM, few = (scratch_ / "few.csv").string();
+  // What both take, with room for the journal of the history.
+  constexpr int kJournal = 200;
+  const fs::path trial = scratch_ / "trial";
+  ASSERT_LT(duskgrid({"build", few, "--as-of", "2031-03-14", "--out", trial.string()}).status, 5);
+  const int small = kilobytes_of(trial) + kJournal;
+  publish_good();
+  const int large = kilobytes_of(folder());
   int full = 0;
-  for (const int kilobytes : {120, 160, 300, 480, 700, 900}) {
+  for (const double share : {0.03, 0.1, 0.3, 0.5, 0.8, 0.95}) {
+    const int kilobytes = small + static_cast<int>(share * large);
     SCOPED_TRACE(kilobytes);
     fs::remove_all(saved);
     const int status = in_own_mounts(

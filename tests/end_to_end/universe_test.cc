@@ -45,12 +45,13 @@ class Universe : public testing::Test {
   static fs::path folder(const std::string& out = "out") { return *scratch_ / out / "2031-03-14"; }
   static nlohmann::json account() { return nlohmann::json::parse(slurp(folder() / "run.json")); }
 
-  // Every file of both runs but those named.
+  // Every file of both runs but those named; a folder is named with its slash.
   static void expect_same(const std::string& other, const std::set<std::string>& but) {
     std::size_t files = 0;
     for (const auto& entry : fs::recursive_directory_iterator(folder())) {
       const auto name = fs::relative(entry.path(), folder());
       if (!entry.is_regular_file() || but.count(name.string()) > 0) continue;
+      if (but.count(name.parent_path().string() + "/") > 0) continue;
       EXPECT_TRUE(slurp(entry.path()) == slurp(folder(other) / name)) << name << " differs";
       ++files;
     }
@@ -153,7 +154,7 @@ TEST_F(Universe, AnyNumberOfThreadsGivesTheSameBytes) {
 }
 
 // The ledger is by line, and run.json has the sums of both.
-TEST_F(Universe, ShuffledRowsGiveTheSameBytesInAllButLedgerAndAccount) {
+TEST_F(Universe, ShuffledRowsGiveTheSameBytesWhereNoLineIsNamed) {
   const fs::path shuffled = *scratch_ / "shuffled-night";
   std::ifstream file(night_ / "quotes.csv");
   std::string line, text;
@@ -166,7 +167,8 @@ TEST_F(Universe, ShuffledRowsGiveTheSameBytesInAllButLedgerAndAccount) {
   spill(shuffled / "quotes.csv", text);
   spill(shuffled / "night.toml", slurp(night_ / "night.toml"));
   build(shuffled, "shuffled", "2");
-  expect_same("shuffled", {"timings.json", "run.json", "ledger.csv"});
+  // The ledger, and the pages that tell of it, name lines of the file.
+  expect_same("shuffled", {"timings.json", "run.json", "ledger.csv", "report/"});
 }
 
 }  // namespace
