@@ -5,6 +5,7 @@
 #include <cstdio>
 #include <cstring>
 #include <exception>
+#include <string_view>
 
 #include "commands.h"
 #include "console.h"
@@ -18,6 +19,17 @@ int flushed(int status) {
   fmt::print(stderr, "duskgrid: standard output cannot be written: {}; what it shows is cut off\n",
              std::strerror(errno));
   return kCannotCreate;
+}
+
+// Arguments that are too many and look like an option: no list with spaces in it.
+bool names_option(std::string_view what) { return what.find(" -") != what.npos; }
+
+int unknown_command(const char* word) {
+  fmt::print(stderr,
+             "duskgrid: {} is no command; there are build, survey, check, value, compare and "
+             "history\n",
+             word);
+  return duskgrid::console::kUsage;
 }
 
 }  // namespace
@@ -44,8 +56,13 @@ int main(int argc, char** argv) {
     program.parse(argc, argv);
   } catch (const CLI::ExtrasError& error) {
     program.exit(error);
-    fmt::print(stderr, "Several values of one option have commas between: --strike 90,100,110\n");
+    if (!names_option(error.what()))
+      fmt::print(stderr, "Several values of one option have commas between: --strike 90,100,110\n");
     return console::kUsage;
+  } catch (const CLI::RequiredError& error) {
+    if (argc > 1 && argv[1][0] != '-' && program.get_subcommands().empty())
+      return unknown_command(argv[1]);
+    return program.exit(error), console::kUsage;
   } catch (const CLI::ParseError& error) {
     return program.exit(error) == 0 ? console::kDone : console::kUsage;
   } catch (const std::exception& error) {

@@ -115,12 +115,13 @@ void print_times(const quotes::QuoteTable& table, const quotes::Clock& clock) {
              quotes::format_instant(clock, last));
 }
 
-// The style is an assumption where no column and no configuration says it.
 void print_exercise(const std::vector<quotes::FileSummary>& files) {
   for (const auto& file : files)
     if (file.columns.find(quotes::Field::exercise) < 0 && file.rows > 0)
-      fmt::print("exercise style of {}: no column says, so the configured or default one\n",
-                 file.file);
+      fmt::print("exercise style of {}: no column says; {}\n", file.file,
+                 !file.exercise ? "nothing is stated, so it is taken as european"
+                 : *file.exercise == quotes::Exercise::european ? "european, as stated"
+                                                                : "american, as stated");
 }
 
 // Remarks on rows that were read all the same.

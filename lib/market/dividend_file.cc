@@ -2,6 +2,7 @@
 
 #include <fmt/format.h>
 
+#include <algorithm>
 #include <array>
 #include <charconv>
 #include <cmath>
@@ -78,7 +79,12 @@ void take(const Header& header, const Cells& cells, const quotes::Clock& clock,
         fmt::format("kind is '{}', must be cash or proportional", header.cell(cells, kKind))};
   const double amount = amount_of(header.cell(cells, kAmount));
   if (const auto problem = amount_problem(*kind, amount)) throw Unusable{*problem};
-  table[std::string(name)].push_back({ex_instant(*date, clock), *kind, amount});
+  const DatedDividend read{ex_instant(*date, clock), *kind, amount};
+  auto& known = table[std::string(name)];
+  // Twice the same, a row sent twice, would move every forward behind it.
+  if (std::find(known.begin(), known.end(), read) != known.end())
+    throw Unusable{"the same dividend stands twice"};
+  known.push_back(read);
 }
 
 }  // namespace

@@ -19,6 +19,7 @@ struct DatedDividend {
   quotes::Instant ex;
   DividendKind kind;
   double amount;  // quote currency a share, >= 0; or a share of the spot, in [0, 1)
+  bool operator==(const DatedDividend&) const = default;
 };
 
 // The same as seen from an as-of.

@@ -331,10 +331,15 @@ class Marker {
     if (two_boundaries_ > 0)
       flag(fmt::format("some taken as european, exercise between two boundaries: {} of {} expiries",
                        two_boundaries_, slices_.size()));
+    flag_expiries("no rates given and none to be read off the quotes, taken as 0",
+                  [](const OpenSlice& s) {
+                    return s.forward && s.financing.rate_origin == publish::Origin::assumed;
+                  });
     // Early exercise hides the rate in the quotes, so it has to be given.
-    if (!night_.curve)
-      flag_expiries("american without rates, discounted at the rate of the european expiries or 0",
-                    [](const OpenSlice& s) { return s.american; });
+    flag_expiries("american without rates, discounted as the european expiries are",
+                  [](const OpenSlice& s) {
+                    return s.american && s.financing.rate_origin == publish::Origin::inferred;
+                  });
     record.status = record.message.empty() ? publish::Status::published : publish::Status::flagged;
   }
 

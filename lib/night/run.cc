@@ -1,5 +1,6 @@
 #include "night/run.h"
 
+#include <fmt/format.h>
 #include <sys/resource.h>
 #include <tbb/global_control.h>
 #include <tbb/parallel_for.h>
@@ -11,6 +12,7 @@
 #include <mutex>
 #include <numeric>
 #include <optional>
+#include <set>
 #include <span>
 #include <thread>
 
@@ -208,16 +210,37 @@ Result<bool> write_tables(RunFolder& folder, const quotes::QuoteTable& table,
 }
 
 // Names configured that no file has: a slip of the pen, or a name that is gone.
-void remark_unmatched(const NightConfig& config, const quotes::QuoteTable& table,
-                      std::vector<std::string>& remarks) {
-  for (const auto& [name, facts] : config.underlyings) {
-    if (std::find(table.underlyings.begin(), table.underlyings.end(), name) !=
-        table.underlyings.end())
-      continue;
-    const auto near = nearest(name, table.underlyings);
-    remarks.push_back("no file has the underlying " + name +
-                      (near.empty() ? "" : "; the nearest name is " + near));
-  }
+void remark_unmatched(const NightConfig& config, const ResolvedNight& night,
+                      const quotes::QuoteTable& table, std::vector<std::string>& remarks) {
+  const std::set<std::string_view> known(table.underlyings.begin(), table.underlyings.end());
+  const auto near = [&](const std::string& name) {
+    const auto found = nearest(name, table.underlyings);
+    return found.empty() ? "" : "; the nearest name is " + found;
+  };
+  for (const auto& [name, facts] : config.underlyings)
+    if (!known.contains(name)) remarks.push_back("no file has the underlying " + name + near(name));
+  // A file of dividends may know the whole market: the first few names do.
+  std::vector<std::string> idle;
+  for (const auto& [name, dividends] : night.dividends)
+    if (!known.contains(name) && !config.underlyings.contains(name)) idle.push_back(name);
+  constexpr std::size_t kTold = 3;
+  for (std::size_t i = 0; i < std::min(idle.size(), kTold); ++i)
+    remarks.push_back("no file has " + idle[i] + ", which has dividends" + near(idle[i]));
+  if (idle.size() > kTold)
+    remarks.push_back(fmt::format("nor {} more names that have dividends", idle.size() - kTold));
+}
+
+// A style that nobody says moves every mark of an American name, so it is said.
+void remark_exercise(const std::vector<quotes::FileSummary>& files,
+                     std::vector<std::string>& remarks) {
+  std::vector<std::string> silent;
+  for (const auto& file : files)
+    if (file.rows > 0 && !file.exercise && file.columns.find(quotes::Field::exercise) < 0)
+      silent.push_back(file.file);
+  if (silent.empty()) return;
+  remarks.push_back(
+      fmt::format("{}{}: exercise style is stated nowhere and taken as european", silent[0],
+                  silent.size() > 1 ? fmt::format(" and {} more", silent.size() - 1) : ""));
 }
 
 Failure stopped() { return {Fault::stopped, "", "stopped before anything was written"}; }
@@ -312,7 +335,8 @@ Result<NightOutcome> run_night(const NightConfig& config, const RunOptions& opti
   if (auto changes = write_changes(folder, marked, nights, config, *night, taker); !changes)
     return changes.failure();
   for (const auto& m : marked) outcome.record.underlyings.push_back(m.record);
-  remark_unmatched(config, table, outcome.remarks);
+  remark_unmatched(config, *night, table, outcome.remarks);
+  remark_exercise(loaded->files, outcome.remarks);
   stages.begin("report");
   if (auto written = write_report(folder, table, marked, report.extras(), config, *night,
                                   outcome.record, outcome.remarks);
@@ -333,6 +357,8 @@ Result<NightOutcome> run_night(const NightConfig& config, const RunOptions& opti
   outcome.remarks.insert(outcome.remarks.end(), folder.remarks().begin(), folder.remarks().end());
   for (const auto& file : loaded->files)
     if (file.rows == 0) outcome.remarks.push_back(file.file + " holds no rows");
+  for (const auto& [file, rows] : night->dividend_rows)
+    if (rows == 0) outcome.remarks.push_back(file + " holds no rows");
   for (auto& m : marked) m.grid.clear();
   outcome.underlyings = std::move(marked);
   outcome.files = std::move(loaded->files);

@@ -194,9 +194,9 @@ class MarketFinder {
   }
 
   Origin borrow_origin(const ForwardEstimate& estimate) const {
-    if (facts_.borrow || facts_.carry || estimate.source == ForwardSource::given)
-      return Origin::given;
-    return estimate.source == ForwardSource::curve ? Origin::near : Origin::inferred;
+    if (estimate.source == ForwardSource::parity) return Origin::inferred;
+    if (estimate.source == ForwardSource::given) return Origin::given;
+    return facts_.borrow || facts_.carry ? Origin::given : Origin::near;
   }
 
   void account(OpenSlice& slice) const {

@@ -2,6 +2,7 @@
 
 #include <fmt/format.h>
 #include <sqlite3.h>
+#include <unistd.h>
 
 #include <array>
 #include <boost/iostreams/device/array.hpp>
@@ -352,6 +353,26 @@ struct History::Database {
   }
 };
 
+namespace {
+
+std::string folder_of(const std::string& path) {
+  const auto folder = std::filesystem::path(path).parent_path().string();
+  return folder.empty() ? "." : folder;
+}
+
+// As the address of a file that nobody changes (SQLite, "URI Filenames").
+std::string as_unchanging(const std::string& path) {
+  std::error_code error;
+  std::string out = "file:";
+  for (const unsigned char c : std::filesystem::absolute(path, error).string())
+    out += std::isalnum(c) || c == '/' || c == '.' || c == '_' || c == '-'
+               ? std::string(1, static_cast<char>(c))
+               : fmt::format("%{:02X}", c);
+  return out + "?immutable=1";
+}
+
+}  // namespace
+
 History::History(std::unique_ptr<Database> database) : database_(std::move(database)) {}
 History::~History() = default;
 
@@ -365,7 +386,12 @@ Result<std::unique_ptr<History>> History::open(const std::string& path, Access a
     return Failure{Fault::no_input, path, "there is no history: it begins with the first build"};
   const int flags =
       access == Access::read ? SQLITE_OPEN_READONLY : SQLITE_OPEN_READWRITE | SQLITE_OPEN_CREATE;
-  const int code = sqlite3_open_v2(path.c_str(), &database->handle, flags, nullptr);
+  // Who may not write beside the file cannot join its journal: a reader then takes the file as it
+  // stands. The last writer to close it leaves no journal.
+  const bool alone = access == Access::read && ::access(folder_of(path).c_str(), W_OK) != 0;
+  const std::string name = alone ? as_unchanging(path) : path;
+  const int code = sqlite3_open_v2(name.c_str(), &database->handle,
+                                   flags | (alone ? SQLITE_OPEN_URI : 0), nullptr);
   if (code != SQLITE_OK) return Failure{database->fault, path, words_for(database->handle, code)};
   sqlite3* handle = database->handle;
   sqlite3_extended_result_codes(handle, 1);

@@ -142,6 +142,11 @@ class Mapper {
     return fields()[static_cast<std::size_t>(slot.first)].sided == (slot.second != Side::both);
   }
 
+  // Who has written nothing about the file yet has no table for it either.
+  std::string_view heading() const {
+    return stated_.empty() && given_.empty() ? "[[source]]\n" : "";
+  }
+
   std::optional<Failure> refuse_slots_of_other_layout() const {
     for (const auto* stated : {&stated_slots_, &given_}) {
       for (const Slot& slot : *stated) {
@@ -191,12 +196,13 @@ class Mapper {
       for (const int i : indices) fitting.push_back(headers_[i]);
       const std::string& first = headers_[indices.front()];
       const bool same = std::count(headers_.begin(), headers_.end(), first) > 1;
-      return Failure{fault(), field,
-                     fmt::format("{} columns fit: {}; columns found: {}; {}write which is meant\n"
-                                 "[source.columns]\n{} = {}",
-                                 indices.size(), list_headers(fitting), list_headers(headers_),
-                                 same ? "give each its own header, or " : "", field,
-                                 same ? "\"<header>\"" : toml_quoted(first))};
+      return Failure{
+          fault(), field,
+          fmt::format("{} columns fit: {}; columns found: {}; {}write which is meant into "
+                      "a configuration\n{}[source.columns]\n{} = {}",
+                      indices.size(), list_headers(fitting), list_headers(headers_),
+                      same ? "give each its own header, or " : "", heading(), field,
+                      same ? "\"<header>\"" : toml_quoted(first))};
     }
     return std::nullopt;
   }
@@ -245,9 +251,9 @@ class Mapper {
       fixed_lines = "\nor, for what the file lacks,\n[source.fixed]" + fixed_lines;
     }
     return Failure{fault(), "columns",
-                   fmt::format("no column for {}; columns found: {}; write which is meant\n"
-                               "[source.columns]{}{}",
-                               names, list_headers(headers_), lines, fixed_lines)};
+                   fmt::format("no column for {}; columns found: {}; write which is meant into a "
+                               "configuration\n{}[source.columns]{}{}",
+                               names, list_headers(headers_), heading(), lines, fixed_lines)};
   }
 
   // A file that maps by itself or not at all is judged as a file; once a configuration

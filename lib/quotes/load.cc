@@ -81,6 +81,7 @@ class FileLoad {
 
   std::optional<Failure> run() {
     summary_.file = path_;
+    summary_.exercise = options_.exercise;
     if (auto failure = read_opening()) return failure;
     auto source = TextSource::open(path_);
     if (!source) return source.failure();

@@ -56,6 +56,8 @@ struct FileSummary {
   std::string compression;  // "none", "gzip", "zstd"
   char delimiter = ',';
   ColumnMap columns;
+  // Of rows whose style no column says, where the source states it; european without it.
+  std::optional<Exercise> exercise;
   std::int64_t rows = 0;        // data rows
   std::int64_t contracts = 0;   // rows, or twice that for call-put rows
   std::int64_t unreadable = 0;  // contracts

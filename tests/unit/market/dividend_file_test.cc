@@ -55,6 +55,8 @@ TEST_F(ReadDividends, WhatIsNotSuchAFileIsRefusedWithItsLine) {
   expect_refused("underlying,ex_date,amount,kind\nA,2031-05-02,1,special\n", "kind is 'special'");
   expect_refused("underlying,ex_date,amount,kind\nA,2031-05-02,1,proportional\n", "below 1");
   expect_refused("underlying,ex_date,amount\nA,\"2031-05-02,1\n", "never closed");
+  expect_refused("underlying,ex_date,amount\nA,2031-05-02,1\nA,20310502,1.0\n",
+                 "line 3: the same dividend stands twice");
   expect_refused("", "holds no text");
 }
 
