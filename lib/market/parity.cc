@@ -253,8 +253,8 @@ std::optional<std::string> ParityOptions::problem() const {
 }
 
 std::vector<ParityPair> near_pairs(const ExpiryPairs& expiry, double discount_factor,
-                                   const ParityOptions& options) {
-  const double rough = rough_forward(expiry.pairs, discount_factor);
+                                   const ParityOptions& options, std::optional<double> around) {
+  const double rough = around ? *around : rough_forward(expiry.pairs, discount_factor);
   std::vector<ParityPair> sorted(expiry.pairs.begin(), expiry.pairs.end());
   std::sort(sorted.begin(), sorted.end(), [&](const auto& a, const auto& b) {
     return std::pair(std::abs(a.strike - rough), a.strike) <
@@ -274,6 +274,11 @@ std::vector<ParityPair> near_pairs(const ExpiryPairs& expiry, double discount_fa
     ++count;
   sorted.resize(count);
   return sorted;
+}
+
+bool any_rate_readable(std::span<const ExpiryPairs> expiries) {
+  return std::any_of(expiries.begin(), expiries.end(),
+                     [](const ExpiryPairs& e) { return std::isfinite(regress_rate(e).error); });
 }
 
 void place_forward(std::span<const ParityPair> near, ForwardEstimate& estimate) {

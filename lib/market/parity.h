@@ -87,9 +87,12 @@ void fill_from_carry(std::span<const ExpiryPairs> expiries, const KnownMarket& k
 ForwardEstimates estimate_forwards(std::span<const ExpiryPairs> expiries, const KnownMarket& known,
                                    const ParityOptions& options);
 
-// The pairs near the money by which the forward is placed, nearest first.
+// The pairs near the money by which the forward is placed, nearest first. The money is where the
+// pairs put it, or at `around`.
 std::vector<ParityPair> near_pairs(const ExpiryPairs& expiry, double discount_factor,
-                                   const ParityOptions& options);
+                                   const ParityOptions& options, std::optional<double> around = {});
+// Whether the rate of some expiry can be read off its pairs.
+bool any_rate_readable(std::span<const ExpiryPairs> expiries);
 // Places the forward, and what goes with it, by near pairs (at least one) and the estimate's
 // discount factor.
 void place_forward(std::span<const ParityPair> near, ForwardEstimate& estimate);

@@ -10,6 +10,7 @@
 #include "market/dates.h"
 #include "market/day_count.h"
 #include "market/dividends.h"
+#include "night/slice_market.h"
 #include "surface/carry.h"
 
 namespace duskgrid::night {
@@ -79,28 +80,30 @@ class Carrier {
     return &*found;
   }
 
-  std::optional<double> stated_forward(quotes::Instant expiry) const {
-    const auto& clock = night_.as_of.clock;
-    for (const auto& [key, forward] : facts_.forwards) {
-      const auto cell = quotes::parse_date_cell(key);
-      if (!cell) continue;
-      const auto instant = quotes::resolve(*cell, clock, night_.times.default_time);
-      const bool dated = cell->date && !cell->time_of_day;
-      if (instant == expiry ||
-          (dated && quotes::format_date(clock, instant) == quotes::format_date(clock, expiry)))
-        return forward;
-    }
-    return std::nullopt;
+  // As seen from an instant; a stated carry is the whole yield, dividends included.
+  std::vector<market::Dividend> dividends_after(quotes::Instant instant) const {
+    const auto dated = night_.dividends.find(out_.record.name);
+    if (dated == night_.dividends.end() || facts_.carry) return {};
+    return market::dividends_after(instant, dated->second);
   }
 
-  // From tonight's spot, rate and dividends, where a borrow or carry is stated; else not above 0.
-  double financed_forward(double rate, double t) const {
-    const auto borrow = facts_.borrow ? facts_.borrow : facts_.carry;
+  // The yield on top of the dividends that the old surface's forward had, where dividends are
+  // known: the ratio of its forwards would take off once more what has gone ex since.
+  std::optional<double> old_borrow(const surface::Slice& old) const {
+    const auto then = dividends_after(past_.stored->as_of.instant);
+    if (then.empty() || !old_.spot) return std::nullopt;
+    const double rate = -std::log(old.discount_factor) / old.year_fraction;
+    return market::borrow_of(old.forward, {*old_.spot, rate, 0, old.year_fraction}, then);
+  }
+
+  // From tonight's spot, rate and dividends, where a borrow or carry is stated or the dividends are
+  // known; else not above 0.
+  double financed_forward(const surface::Slice& old, double rate, double t) const {
+    const auto stated = facts_.borrow ? facts_.borrow : facts_.carry;
+    const auto borrow = stated ? stated : old_borrow(old);
     if (!spot_ || !borrow) return 0;
-    std::vector<market::Dividend> dividends;
-    if (const auto dated = night_.dividends.find(out_.record.name); dated != night_.dividends.end())
-      dividends = market::dividends_after(night_.as_of.instant, dated->second);
-    const double forward = market::forward_of({*spot_, rate, *borrow, t}, dividends);
+    const double forward =
+        market::forward_of({*spot_, rate, *borrow, t}, dividends_after(night_.as_of.instant));
     return std::isfinite(forward) ? forward : 0;
   }
 
@@ -116,12 +119,12 @@ class Carrier {
     out.zero_rate = -std::log(out.discount_factor) / t;
     out.lowest_forward = out.highest_forward = quotes::kAbsent;
     out.source = ForwardSource::carried;
-    if (const auto stated = stated_forward(old.expiry)) {
+    if (const auto stated = given_forward(facts_, night_, old.expiry)) {
       out.forward = *stated;
       out.source = ForwardSource::given;
-    } else if (const double financed = financed_forward(out.zero_rate, t); financed > 0) {
+    } else if (const double financed = financed_forward(old, out.zero_rate, t); financed > 0) {
       out.forward = financed;
-      out.source = ForwardSource::curve;
+      if (facts_.borrow || facts_.carry) out.source = ForwardSource::curve;
     } else {
       // Growth from the spot on; a forward is today's mean of itself where no spot is known.
       out.forward = spot_ && then.forward > 0 ? *spot_ * old.forward / then.forward : old.forward;
@@ -146,7 +149,7 @@ class Carrier {
   bool put(CarryRule rule) {
     auto surface = surface::carry_surface(old_, expiries_, rule);
     if (!surface) return false;
-    if (spot_) surface->spot = spot_;
+    surface->spot = spot_;  // that of the old night is no spot of this one
     surface = arbitrage::with_proved_rules(std::move(*surface));
     if (!arbitrage::certify(*surface).certified) return false;
     out_.surface = std::move(surface);

@@ -308,6 +308,19 @@ class Marker {
     return "no usable quote" + (list.empty() ? list : ": " + list);
   }
 
+  // Single quotes are stale; a good part of an expiry is told by a wrong spot or forward.
+  bool beyond_reason(const OpenSlice& s) {
+    constexpr std::size_t kFew = 3, kPart = 5;
+    std::size_t sound = 0, beyond = 0;
+    for (const auto row : s.rows->rows) {
+      const Reason reason = quote(row).reason;
+      const bool out = reason == Reason::below_intrinsic || reason == Reason::above_bound;
+      beyond += out;
+      sound += out || quotes::state_of(reason) != quotes::State::dropped;
+    }
+    return beyond >= kFew && kPart * beyond > sound;
+  }
+
   void conclude() {
     auto& record = out_.record;
     record.violations = static_cast<std::int64_t>(out_.violations.size());
@@ -323,6 +336,8 @@ class Marker {
     });
     flag_expiries("call-put parity broken near the money",
                   [](const OpenSlice& s) { return s.forward && s.forward->breaks > 0; });
+    flag_expiries("many quotes below intrinsic or above every price, is spot or forward right",
+                  [&](const OpenSlice& s) { return s.forward && beyond_reason(s); });
     flag_expiries("american fitted as european", [](const OpenSlice& s) {
       return s.forward && s.financing.exercise == publish::ExerciseTaken::american_as_european;
     });

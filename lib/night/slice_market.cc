@@ -25,7 +25,9 @@ class MarketFinder {
     const auto& name = table.underlyings[chain.underlying];
     if (const auto found = config.underlyings.find(name); found != config.underlyings.end())
       facts_ = found->second;
-    if (const auto found = night.dividends.find(name); found != night.dividends.end())
+    // A stated carry is the whole yield, dividends included.
+    const auto found = night.dividends.find(name);
+    if (found != night.dividends.end() && !facts_.carry)
       dividends_ = market::dividends_after(night.as_of.instant, found->second);
   }
 
@@ -55,6 +57,12 @@ class MarketFinder {
     }
   }
 
+  // Rows of another day, or of another contract, tell of another spot.
+  static bool tells_spot(const Quote& q) {
+    return q.underlying_price > 0 && q.reason != Reason::expired && q.reason != Reason::stale &&
+           q.reason != Reason::non_standard;
+  }
+
   // As stated, else the middle of what the rows say, else the night's.
   void find_spot() {
     out_.spot = facts_.spot;
@@ -63,7 +71,7 @@ class MarketFinder {
     std::vector<double> prices;
     for (const auto& slice : chain_.slices)
       for (const auto row : slice.rows)
-        if (quote(row).underlying_price > 0) prices.push_back(quote(row).underlying_price);
+        if (tells_spot(quote(row))) prices.push_back(quote(row).underlying_price);
     if (prices.empty()) {
       out_.spot = config_.spot;
       if (!out_.spot) out_.spot_origin = Origin::none;
@@ -98,38 +106,24 @@ class MarketFinder {
     return pairs;
   }
 
-  // A forward given for the very instant, or else for the local date of the expiry.
-  std::optional<double> given_forward(quotes::Instant expiry) const {
-    const auto date = quotes::format_date(night_.as_of.clock, expiry);
-    std::optional<double> of_date;
-    for (const auto& [key, forward] : facts_.forwards) {
-      const auto cell = quotes::parse_date_cell(key);
-      if (!cell) continue;
-      const auto instant = quotes::resolve(*cell, night_.as_of.clock, night_.times.default_time);
-      if (instant == expiry) return forward;
-      const bool dated = cell->date && !cell->time_of_day;
-      if (dated && quotes::format_date(night_.as_of.clock, instant) == date) of_date = forward;
-    }
-    return of_date;
-  }
-
   void find_forwards() {
     std::vector<market::ExpiryPairs> pairs;
     std::vector<std::vector<pricing::ExercisePair>> exercise_pairs;
     for (const auto& s : out_.slices) {
       exercise_pairs.push_back(pairs_of(*s.rows));
-      pairs.push_back({s.year_fraction, {}, given_forward(s.rows->expiry), s.american});
+      pairs.push_back(
+          {s.year_fraction, {}, given_forward(facts_, night_, s.rows->expiry), s.american});
       for (const auto& pair : exercise_pairs.back()) pairs.back().pairs.push_back(pair.quoted);
-      rates_read_ = rates_read_ || (!s.american && pairs.back().pairs.size() > 2);
     }
     market::KnownMarket known{out_.spot, facts_.borrow ? facts_.borrow : facts_.carry, night_.curve,
                               dividends_};
+    rates_read_ = !night_.curve && market::any_rate_readable(pairs);
     auto found = market::parity_forwards(pairs, known, config_.parity);
-    infer_spot(found);
+    if (!out_.spot) infer_spot(pairs, exercise_pairs, found);
     known.spot = out_.spot;
     for (std::size_t i = 0; i < found.size(); ++i)
       if (out_.slices[i].american && out_.spot && found[i])
-        settle(out_.slices[i], pairs[i], exercise_pairs[i], *found[i]);
+        settle(out_.slices[i], pairs[i], exercise_pairs[i], found[i]);
     market::fill_from_carry(pairs, known, config_.parity, found);
     for (std::size_t i = 0; i < found.size(); ++i) {
       if (found[i] && out_.spot)
@@ -139,51 +133,114 @@ class MarketFinder {
     }
   }
 
-  // Exercise compares with the spot: where nobody says it, the nearest forward does.
-  void infer_spot(const market::ForwardEstimates& found) {
+  double stated_yield() const {
+    return facts_.borrow ? *facts_.borrow : facts_.carry.value_or(0.0);
+  }
+
+  // The spot that has a forward at the stated yield; the forward is linear in it.
+  std::optional<double> spot_of(const ForwardEstimate& estimate, double t) const {
+    const auto forward = [&](double spot) {
+      return market::forward_of({spot, estimate.zero_rate, stated_yield(), t}, dividends_);
+    };
+    const double slope = forward(2) - forward(1);
+    const double spot = (estimate.forward - (forward(1) - slope)) / slope;
+    return spot > 0 && std::isfinite(spot) ? std::optional(spot) : std::nullopt;
+  }
+
+  // Exercise compares with the spot: where nobody says it, the first forward does, a European one
+  // where there is one. Of an American expiry the forward and the spot are found in turn.
+  void infer_spot(const std::vector<market::ExpiryPairs>& pairs,
+                  const std::vector<std::vector<pricing::ExercisePair>>& exercise_pairs,
+                  const market::ForwardEstimates& found) {
     const bool any_american = std::any_of(out_.slices.begin(), out_.slices.end(),
                                           [](const OpenSlice& s) { return s.american; });
-    if (out_.spot || !any_american) return;
-    for (std::size_t i = 0; i < found.size(); ++i) {
-      if (!found[i]) continue;
-      // The forward is linear in the spot.
-      const auto forward = [&](double spot) {
-        return market::forward_of(
-            {spot, found[i]->zero_rate, facts_.borrow.value_or(0.0), out_.slices[i].year_fraction},
-            dividends_);
-      };
-      const double slope = forward(2) - forward(1);
-      const double spot = (found[i]->forward - (forward(1) - slope)) / slope;
-      if (!(spot > 0 && std::isfinite(spot))) continue;
-      out_.spot = spot;
-      out_.spot_origin = Origin::inferred;
-      return;
-    }
+    if (!any_american) return;
+    for (const bool american : {false, true})
+      for (std::size_t i = 0; i < found.size() && !out_.spot; ++i) {
+        if (!found[i] || out_.slices[i].american != american) continue;
+        const double t = out_.slices[i].year_fraction;
+        out_.spot = spot_of(*found[i], t);
+        if (!out_.spot) continue;
+        out_.spot_origin = Origin::inferred;
+        constexpr int kTurns = 5;
+        for (int turn = 0; american && turn < kTurns; ++turn) {
+          auto estimate = found[i];
+          OpenSlice slice = out_.slices[i];
+          settle_by_parity(slice, pairs[i], exercise_pairs[i], *estimate);
+          const auto spot = slice.settled ? spot_of(*estimate, t) : std::nullopt;
+          if (!spot) break;
+          out_.spot = spot;
+        }
+      }
   }
 
   pricing::ExerciseTerms terms_of(const OpenSlice& s, double rate, double borrow) const {
     return {{*out_.spot, rate, borrow, s.year_fraction}, dividends_};
   }
 
-  // From parity of the quoted prices to that of their European equivalents.
-  void settle(OpenSlice& slice, const market::ExpiryPairs& pairs,
-              const std::vector<pricing::ExercisePair>& exercise_pairs, ForwardEstimate& estimate) {
-    if (estimate.source == ForwardSource::given || pairs.pairs.empty()) return;
+  static std::vector<pricing::ExercisePair> near_of(const market::ExpiryPairs& pairs,
+                                                    const std::vector<pricing::ExercisePair>& all,
+                                                    const ForwardEstimate& estimate,
+                                                    const market::ParityOptions& options) {
     std::vector<pricing::ExercisePair> near;
-    for (const auto& chosen : market::near_pairs(pairs, estimate.discount_factor, config_.parity))
-      near.push_back(
-          *std::find_if(exercise_pairs.begin(), exercise_pairs.end(),
-                        [&](const auto& pair) { return pair.quoted.strike == chosen.strike; }));
-    const auto terms = terms_of(slice, estimate.zero_rate, facts_.borrow.value_or(0.0));
-    if (!facts_.borrow) {
+    for (const auto& chosen :
+         market::near_pairs(pairs, estimate.discount_factor, options, estimate.forward))
+      near.push_back(*std::find_if(all.begin(), all.end(), [&](const auto& pair) {
+        return pair.quoted.strike == chosen.strike;
+      }));
+    return near;
+  }
+
+  // From parity of the quoted prices to that of their European equivalents. Before an ex-date pairs
+  // between the spot and the spot without the dividend say nothing of the forward, and quoted
+  // parity starts among them: the dividends do better.
+  void settle_by_parity(OpenSlice& slice, const market::ExpiryPairs& pairs,
+                        const std::vector<pricing::ExercisePair>& exercise_pairs,
+                        ForwardEstimate& estimate) const {
+    const auto terms = terms_of(slice, estimate.zero_rate, borrow_before_);
+    if (market::count_before(dividends_, slice.year_fraction) > 0) {
+      const double financed = market::forward_of(terms.financing, dividends_);
+      if (financed > 0) estimate.forward = financed;
+    }
+    // The pairs near the money are those near the forward that is found.
+    for (int round = 0; round < 2; ++round) {
+      const auto near = near_of(pairs, exercise_pairs, estimate, config_.parity);
       slice.settled = pricing::settle_forward(night_.american, terms, near, estimate).settled;
+      if (!slice.settled) return;
+    }
+  }
+
+  void settle(OpenSlice& slice, const market::ExpiryPairs& pairs,
+              const std::vector<pricing::ExercisePair>& exercise_pairs,
+              std::optional<ForwardEstimate>& estimate) {
+    if (pairs.pairs.empty()) return;
+    const bool given = estimate->source == ForwardSource::given;
+    if (!given && !facts_.borrow) {
+      settle_by_parity(slice, pairs, exercise_pairs, *estimate);
+      const auto terms = terms_of(slice, estimate->zero_rate, 0);
+      if (slice.settled) {
+        const auto own = market::borrow_of(estimate->forward, terms.financing, dividends_);
+        borrow_before_ = own.value_or(borrow_before_);
+        return;
+      }
+    }
+    auto terms = terms_of(slice, estimate->zero_rate, facts_.borrow.value_or(borrow_before_));
+    if (given) {
+      const auto own = market::borrow_of(estimate->forward, terms.financing, dividends_);
+      if (!own) return;
+      terms.financing.borrow = *own;
+    } else {
+      estimate->forward = market::forward_of(terms.financing, dividends_);
+      estimate->source = ForwardSource::curve;
+    }
+    if (!(estimate->forward > 0)) {
+      estimate.reset();
       return;
     }
-    estimate.forward = market::forward_of(terms.financing, dividends_);
-    estimate.source = ForwardSource::curve;
-    estimate.pairs = 0;
-    estimate.breaks =
-        market::count_breaks(pricing::european_pairs(night_.american, terms, near), estimate);
+    estimate->pairs = 0;
+    estimate->breaks =
+        pricing::count_breaks(night_.american, terms,
+                              near_of(pairs, exercise_pairs, *estimate, config_.parity), *estimate);
   }
 
   void set_exercise(OpenSlice& slice) const {
@@ -229,7 +286,8 @@ class MarketFinder {
   const ResolvedNight& night_;
   UnderlyingFacts facts_;
   std::vector<market::Dividend> dividends_;
-  bool rates_read_ = false;  // some European expiry has pairs to read a rate from
+  bool rates_read_ = false;   // some European expiry has pairs to read a rate from
+  double borrow_before_ = 0;  // of the last expiry whose forward settled
   ChainMarket out_;
 };
 
@@ -238,6 +296,22 @@ class MarketFinder {
 ChainMarket find_market(const quotes::QuoteTable& table, const quotes::Chain& chain,
                         const NightConfig& config, const ResolvedNight& night) {
   return MarketFinder(table, chain, config, night).run();
+}
+
+std::optional<double> given_forward(const UnderlyingFacts& facts, const ResolvedNight& night,
+                                    quotes::Instant expiry) {
+  const auto& clock = night.as_of.clock;
+  const auto date = quotes::format_date(clock, expiry);
+  std::optional<double> of_date;
+  for (const auto& [key, forward] : facts.forwards) {
+    const auto cell = quotes::parse_date_cell(key);
+    if (!cell) continue;
+    const auto instant = quotes::resolve(*cell, clock, night.times.default_time);
+    if (instant == expiry) return forward;
+    const bool dated = cell->date && !cell->time_of_day;
+    if (dated && quotes::format_date(clock, instant) == date) of_date = forward;
+  }
+  return of_date;
 }
 
 }  // namespace duskgrid::night

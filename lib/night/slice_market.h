@@ -38,4 +38,8 @@ struct ChainMarket {
 ChainMarket find_market(const quotes::QuoteTable& table, const quotes::Chain& chain,
                         const NightConfig& config, const ResolvedNight& night);
 
+// A forward stated for the very instant of an expiry, or else for its local date.
+std::optional<double> given_forward(const UnderlyingFacts& facts, const ResolvedNight& night,
+                                    quotes::Instant expiry);
+
 }  // namespace duskgrid::night

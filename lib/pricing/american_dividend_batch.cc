@@ -175,11 +175,12 @@ class Searcher {
     return true;
   }
 
-  // Newton's method with Black's slope, then the secant, between bounds.
+  // Newton's method with Black's slope, then the secant, between bounds; halves them where that is
+  // slow: in the money before an ex-date the price hardly moves with the volatility at first.
   AmericanVolStatus run(double guess, double most, double& s, Priced& at) {
-    constexpr int kSteps = 60;
+    constexpr int kSteps = 160, kPatience = 4;
     constexpr double kPinned = 1e-10;
-    double low = kLeastTotalVol, high = most, last_s = 0, last_miss = 0, slope = 0;
+    double low = kLeastTotalVol, high = most, last_s = 0, last_miss = 0, width = high - low;
     s = std::clamp(guess, low, high);
     bool above = false, below = false, has_last = false;
     for (int step = 0; step < kSteps; ++step) {
@@ -193,17 +194,22 @@ class Searcher {
       if (!at.exercised && std::abs(miss) <= q_.met) return AmericanVolStatus::ok;
       (miss < 0 ? low : high) = s;
       (miss < 0 ? below : above) = true;
-      if (high - low <= kPinned * high) break;
+      if (high - low <= kPinned * high) {
+        if (above || high >= kMostTotalVol) break;
+        high = kMostTotalVol;  // the bound was a guess
+      }
       double moved = 0;
       if (!at.exercised) {
         const double secant = has_last ? (miss - last_miss) / (s - last_s) : 0;
         const double vega = q_.scale * normalised_vega(-std::abs(q_.log_forward), s);
-        slope = secant > 0.2 * vega ? secant : vega;
-        moved = s - miss / slope;
+        moved = s - miss / (secant > 0.2 * vega ? secant : vega);
         last_s = s, last_miss = miss, has_last = true;
       }
-      s = moved > low && moved < high ? moved : 0.5 * (low + high);
+      const bool slow = step % kPatience == kPatience - 1 && high - low > 0.5 * width;
+      if (step % kPatience == kPatience - 1) width = high - low;
+      s = moved > low && moved < high && !slow ? moved : 0.5 * (low + high);
     }
+    if (!(high - low <= kPinned * high)) return AmericanVolStatus::not_converged;
     if (above && below) return AmericanVolStatus::ok;  // pinned between two tables
     return above ? AmericanVolStatus::below_intrinsic
                  : (below ? AmericanVolStatus::above_bound : AmericanVolStatus::not_converged);

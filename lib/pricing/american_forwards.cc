@@ -3,11 +3,13 @@
 #include <algorithm>
 #include <cmath>
 #include <limits>
+#include <set>
 
 namespace duskgrid::pricing {
 namespace {
 
 using market::ParityPair;
+using quotes::PutCall;
 
 // One step of the iteration: the forward that parity of the European equivalents gives, with the
 // premiums at another.
@@ -23,10 +25,13 @@ class ForwardMap {
     const auto borrow = market::borrow_of(forward, terms_.financing, terms_.dividends);
     if (!borrow) return std::nullopt;
     terms_.financing.borrow = *borrow;
-    const auto pairs = european_pairs(inverter_, terms_, near_);
+    const auto [pairs, contradicting] = european_pairs(inverter_, terms_, near_);
     if (pairs.empty()) return std::nullopt;
     keep(pairs);
+    contradicting_ += contradicting;
     market::place_forward(pairs, estimate_);
+    estimate_.pairs += contradicting_;
+    estimate_.breaks += contradicting_;
     return estimate_.forward > 0 ? std::optional(estimate_.forward) : std::nullopt;
   }
   const market::ForwardEstimate& estimate() const { return estimate_; }
@@ -46,6 +51,7 @@ class ForwardMap {
   ExerciseTerms terms_;
   std::vector<ExercisePair> near_;
   market::ForwardEstimate estimate_;
+  int contradicting_ = 0;  // pairs dropped for it so far
   int rounds_ = 0;
 };
 
@@ -58,11 +64,46 @@ ExerciseTerms with_one_boundary(ExerciseTerms terms) {
   return terms;
 }
 
+// A side of a near pair whose mid has no volatility.
+struct Doubtful {
+  std::size_t pair;
+  PutCall side;
+  AmericanVolStatus status;
+};
+
+// Of those the pairs that no price within the spreads of both sides makes possible: next to what
+// exercise pays a mid may lie on either side of it.
+int count_impossible(const DividendInverter& inverter, const ExerciseTerms& terms,
+                     std::span<const ExercisePair> near, std::span<const Doubtful> doubtful) {
+  std::vector<double> strikes, prices;
+  std::vector<PutCall> sides;
+  std::vector<std::size_t> pairs;
+  for (const Doubtful& d : doubtful) {
+    const bool low = d.status == AmericanVolStatus::below_intrinsic;
+    if (!low && d.status != AmericanVolStatus::above_bound) continue;
+    const ExercisePair& p = near[d.pair];
+    const double spread = 0.5 * (p.quoted.high - p.quoted.low);
+    strikes.push_back(p.quoted.strike);
+    sides.push_back(d.side);
+    prices.push_back((d.side == PutCall::call ? p.call_mid : p.put_mid) + (low ? spread : -spread));
+    pairs.push_back(d.pair);
+  }
+  if (pairs.empty()) return 0;
+  std::vector<double> vols(prices.size()), europeans(prices.size());
+  std::vector<AmericanVolStatus> statuses(prices.size());
+  invert_american(inverter, terms, {strikes, sides, prices}, {vols, europeans, statuses});
+  std::set<std::size_t> impossible;
+  for (std::size_t i = 0; i < pairs.size(); ++i)
+    if (statuses[i] == AmericanVolStatus::below_intrinsic ||
+        statuses[i] == AmericanVolStatus::above_bound)
+      impossible.insert(pairs[i]);
+  return static_cast<int>(impossible.size());
+}
+
 }  // namespace
 
-std::vector<ParityPair> european_pairs(const DividendInverter& inverter, const ExerciseTerms& terms,
-                                       std::span<const ExercisePair> near) {
-  using quotes::PutCall;
+EuropeanPairs european_pairs(const DividendInverter& inverter, const ExerciseTerms& terms,
+                             std::span<const ExercisePair> near) {
   std::vector<double> strikes, prices;
   std::vector<PutCall> sides;
   for (const ExercisePair& p : near)
@@ -75,7 +116,8 @@ std::vector<ParityPair> european_pairs(const DividendInverter& inverter, const E
   std::vector<AmericanVolStatus> statuses(prices.size());
   invert_american(inverter, with_one_boundary(terms), {strikes, sides, prices},
                   {vols, europeans, statuses});
-  std::vector<ParityPair> out;
+  EuropeanPairs out;
+  std::vector<Doubtful> doubtful;
   for (std::size_t i = 0; i < near.size(); ++i) {
     const auto premium = [&](std::size_t at, bool american) -> std::optional<double> {
       if (!american) return 0.0;
@@ -84,13 +126,22 @@ std::vector<ParityPair> european_pairs(const DividendInverter& inverter, const E
     };
     const auto call = premium(2 * i, near[i].call_american);
     const auto put = premium(2 * i + 1, near[i].put_american);
+    if (!call) doubtful.push_back({i, PutCall::call, statuses[2 * i]});
+    if (!put) doubtful.push_back({i, PutCall::put, statuses[2 * i + 1]});
     if (!call || !put) continue;
     ParityPair pair = near[i].quoted;
     pair.low -= *call - *put;
     pair.high -= *call - *put;
-    out.push_back(pair);
+    out.pairs.push_back(pair);
   }
+  out.contradicting = count_impossible(inverter, terms, near, doubtful);
   return out;
+}
+
+int count_breaks(const DividendInverter& inverter, const ExerciseTerms& terms,
+                 std::span<const ExercisePair> near, const market::ForwardEstimate& estimate) {
+  const auto [pairs, contradicting] = european_pairs(inverter, terms, near);
+  return contradicting + market::count_breaks(pairs, estimate);
 }
 
 AmericanForward settle_forward(const DividendInverter& inverter, const ExerciseTerms& terms,
@@ -111,6 +162,7 @@ AmericanForward settle_forward(const DividendInverter& inverter, const ExerciseT
     if (std::abs(miss) <= kForwardTolerance * at || high - low <= kForwardTolerance * at) {
       // The premiums are those at `at`, the forward is what parity makes of them.
       estimate = map.estimate();
+      if (std::abs(miss) > kForwardTolerance * at) estimate.forward = at;
       return {true, map.rounds(), map.borrow()};
     }
     double next = *mapped;

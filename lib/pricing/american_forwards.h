@@ -29,17 +29,25 @@ inline constexpr double kForwardTolerance = 1e-7;
 // Moves the estimate's forward, with pairs, breaks and bounds, from where parity of the quoted
 // prices put it to where that of the European equivalents does. `near` are the pairs used, at least
 // one; `terms` has spot, rate, time and dividends, its borrow is not looked at. A pair whose prices
-// have no volatility drops out. Unsettled, and the estimate as it was, where none is left, where
-// no borrow gives the forward, or where 40 rounds do not agree. A contraction in the forward, by
-// the share of the spot's moves that premiums take part in: the secant rule takes 2 to 5 rounds;
-// bisection follows where pairs contradict one another.
+// have no volatility drops out, and is a break where they contradict the forward. Unsettled, and
+// the estimate as it was, where none is left, where no borrow gives the forward, or where 40 rounds
+// do not agree. A contraction in the forward, by the share of the spot's moves that premiums take
+// part in: the secant rule takes 2 to 5 rounds; bisection follows where pairs contradict one
+// another.
 AmericanForward settle_forward(const DividendInverter& inverter, const ExerciseTerms& terms,
                                std::span<const ExercisePair> near,
                                market::ForwardEstimate& estimate);
 
 // The near pairs with the premiums at the terms' borrow taken off; those with a volatility only.
-std::vector<market::ParityPair> european_pairs(const DividendInverter& inverter,
-                                               const ExerciseTerms& terms,
-                                               std::span<const ExercisePair> near);
+struct EuropeanPairs {
+  std::vector<market::ParityPair> pairs;
+  int contradicting = 0;  // left out, one price being less or more than any volatility gives
+};
+EuropeanPairs european_pairs(const DividendInverter& inverter, const ExerciseTerms& terms,
+                             std::span<const ExercisePair> near);
+
+// How many of the near pairs contradict a forward that has the terms' borrow.
+int count_breaks(const DividendInverter& inverter, const ExerciseTerms& terms,
+                 std::span<const ExercisePair> near, const market::ForwardEstimate& estimate);
 
 }  // namespace duskgrid::pricing

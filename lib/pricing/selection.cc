@@ -72,7 +72,8 @@ void fill_vol(const Quote& q, double quoted, const EquivalentSide* side, double&
     vol = side->vol;
   else if (side->status == AmericanVolStatus::ok)
     pending.add(q, side->price, vol);
-  else if (side->status != AmericanVolStatus::above_bound && &vol == &q.vol_bid)
+  else if (&vol == &q.vol_bid && (side->status == AmericanVolStatus::below_intrinsic ||
+                                  side->status == AmericanVolStatus::immediate_exercise))
     vol = 0;
 }
 
@@ -106,6 +107,8 @@ void judge_exercise(Quote& q, const EquivalentQuote& equivalent) {
     q.reason = Reason::above_bound;
   else if (ask == AmericanVolStatus::below_intrinsic)
     q.reason = Reason::below_intrinsic;
+  else if (mid == AmericanVolStatus::not_converged || ask == AmericanVolStatus::not_converged)
+    q.reason = Reason::no_vol;
   else if (mid != AmericanVolStatus::ok || ask != AmericanVolStatus::ok)
     q.reason = Reason::immediate_exercise;
 }

@@ -31,12 +31,11 @@ struct SliceMarket {
 
 // Fills vol_bid, vol_mid and vol_ask of every sound quote of the slice (and of the firm sides
 // of one-sided and wide ones) and sets `reason`, first rule that applies, on those still
-// without one: above-bound, below-intrinsic, immediate-exercise, in-the-money, far-wing, outlier,
-// thinned. American quotes are judged by `equivalents`, one a row of the slice; without them, and
-// where the status is two_boundaries, they are taken as European.
-// What is left is used: at each strike the out-of-the-money side, or the other where
-// that one is not sound and this one's bid is above intrinsic. A quote in vol gets its prices' vols
-// as quoted.
+// without one: above-bound, below-intrinsic, no-vol, immediate-exercise, in-the-money, far-wing,
+// outlier, thinned. American quotes are judged by `equivalents`, one a row of the slice; without
+// them, and where the status is two_boundaries, they are taken as European. What is left is used:
+// at each strike the out-of-the-money side, or the other where that one is not sound and this one's
+// bid is above intrinsic. A quote in vol gets its prices' vols as quoted.
 void select_quotes(quotes::QuoteTable& table, const quotes::ChainSlice& slice,
                    const SliceMarket& market, const SelectionOptions& options,
                    std::span<const EquivalentQuote> equivalents = {});

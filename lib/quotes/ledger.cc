@@ -38,6 +38,8 @@ constexpr std::array<ReasonEntry, kReasonCount> kReasons{{
      "far outside its spread while its neighbours agree with one another"},
     {Reason::no_forward, State::dropped, "no-forward",
      "its expiry has no forward: none given, no spot, no usable call-put pair"},
+    {Reason::no_vol, State::dropped, "no-vol",
+     "american, and no volatility was found that explains its mid or its ask"},
 }};
 
 }  // namespace

@@ -32,8 +32,9 @@ enum class Reason : std::uint8_t {
   non_standard,
   outlier,
   no_forward,
+  no_vol,
 };
-inline constexpr std::size_t kReasonCount = 19;
+inline constexpr std::size_t kReasonCount = 20;
 
 struct ReasonEntry {
   Reason reason;

@@ -13,7 +13,7 @@ TEST(Reasons, EveryReasonStandsAtItsOwnPlace) {
   for (std::size_t i = 0; i < kReasonCount; ++i) {
     EXPECT_EQ(static_cast<std::size_t>(reasons()[i].reason), i);
   }
-  EXPECT_EQ(static_cast<std::size_t>(Reason::no_forward), kReasonCount - 1);
+  EXPECT_EQ(static_cast<std::size_t>(Reason::no_vol), kReasonCount - 1);
 }
 
 TEST(Reasons, WordsAreUniqueAndKebabCase) {
@@ -36,11 +36,26 @@ TEST(Reasons, OnlyNoReasonHasNoWordAndOnlyItIsUsed) {
 }
 
 TEST(Reasons, WordsAreTheClosedListOfTheManual) {
-  const std::set<std::string_view> kExpected{
-      "",          "in-the-money", "far-wing",        "thinned",     "unreadable", "expired",
-      "too-short", "no-bid",       "no-ask",          "crossed",     "wide",       "duplicate",
-      "stale",     "non-standard", "below-intrinsic", "above-bound", "outlier",    "no-forward",
-      "immediate-exercise"};
+  const std::set<std::string_view> kExpected{"",
+                                             "in-the-money",
+                                             "far-wing",
+                                             "thinned",
+                                             "unreadable",
+                                             "expired",
+                                             "too-short",
+                                             "no-bid",
+                                             "no-ask",
+                                             "crossed",
+                                             "wide",
+                                             "duplicate",
+                                             "stale",
+                                             "non-standard",
+                                             "below-intrinsic",
+                                             "above-bound",
+                                             "outlier",
+                                             "no-forward",
+                                             "immediate-exercise",
+                                             "no-vol"};
   std::set<std::string_view> words;
   for (const ReasonEntry& entry : reasons()) words.insert(word(entry.reason));
   EXPECT_EQ(words, kExpected);
@@ -55,7 +70,7 @@ TEST(StateOf, SpareReasonsAreThoseOfSoundQuotes) {
   const auto dropped = std::count_if(reasons().begin(), reasons().end(), [](const auto& entry) {
     return state_of(entry.reason) == State::dropped;
   });
-  EXPECT_EQ(dropped, 14);
+  EXPECT_EQ(dropped, 15);
   EXPECT_EQ(word(State::used), "used");
   EXPECT_EQ(word(State::spare), "spare");
   EXPECT_EQ(word(State::dropped), "dropped");
@@ -67,10 +82,10 @@ TEST(LedgerCounts, EveryReasonIsCountedUnderItsState) {
   LedgerCounts counts;
   for (const ReasonEntry& entry : reasons()) counts.add(entry.reason);
   counts.add(Reason::none);
-  EXPECT_EQ(counts.read, 20);
+  EXPECT_EQ(counts.read, 21);
   EXPECT_EQ(counts.used, 2);
   EXPECT_EQ(counts.spare, 4);
-  EXPECT_EQ(counts.dropped, 14);
+  EXPECT_EQ(counts.dropped, 15);
   EXPECT_EQ(counts.by_reason[static_cast<std::size_t>(Reason::none)], 2);
   EXPECT_EQ(counts.by_reason[static_cast<std::size_t>(Reason::wide)], 1);
   EXPECT_TRUE(counts.adds_up());
