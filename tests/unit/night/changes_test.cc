@@ -47,7 +47,8 @@ class NightsTest : public testing::Test {
     std::ofstream(folder_ + "/quotes.csv", std::ios::binary)
         << "underlying,expiry,strike,put_call,bid,ask,underlying_price\n" + rows;
     const auto config =
-        parse_config("as_of = '" + date + "'\n" + more + "\n[[source]]\nfiles = 'quotes.csv'\nexercise = 'european'\n",
+        parse_config("as_of = '" + date + "'\n" + more +
+                         "\n[[source]]\nfiles = 'quotes.csv'\nexercise = 'european'\n",
                      "night.toml", folder_);
     EXPECT_TRUE(config.ok());
     auto outcome = run_night(*config, {out(), 1, {}});
