@@ -203,11 +203,25 @@ class MarketFinder {
       if (financed > 0) estimate.forward = financed;
     }
     // The pairs near the money are those near the forward that is found.
-    for (int round = 0; round < 2; ++round) {
-      const auto near = near_of(pairs, exercise_pairs, estimate, config_.parity);
-      slice.settled = pricing::settle_forward(night_.american, terms, near, estimate).settled;
-      if (!slice.settled) return;
-    }
+    const auto near = near_of(pairs, exercise_pairs, estimate, config_.parity);
+    slice.settled = pricing::settle_forward(night_.american, terms, near, estimate).settled;
+    if (!slice.settled) return;
+    const auto nearer = near_of(pairs, exercise_pairs, estimate, config_.parity);
+    if (!same_strikes(near, nearer))
+      slice.settled = pricing::settle_forward(night_.american, terms, nearer, estimate).settled;
+  }
+
+  // In any order.
+  static bool same_strikes(std::vector<pricing::ExercisePair> a,
+                           std::vector<pricing::ExercisePair> b) {
+    const auto by_strike = [](const auto& x, const auto& y) {
+      return x.quoted.strike < y.quoted.strike;
+    };
+    std::sort(a.begin(), a.end(), by_strike);
+    std::sort(b.begin(), b.end(), by_strike);
+    return std::equal(a.begin(), a.end(), b.begin(), b.end(), [](const auto& x, const auto& y) {
+      return x.quoted.strike == y.quoted.strike;
+    });
   }
 
   void settle(OpenSlice& slice, const market::ExpiryPairs& pairs,
