@@ -130,7 +130,7 @@ await on(join(invented, planted), {height: 7000}, async (page) => {
   check(
       'says which expiry was carried and its age', says(carriedDate, 'carried', '3 days old'),
       looks);
-  check('says what changed', says(changedDate, 'large change'), looks);
+  check('says what changed', says(changedDate, 'node to sign off', 'beyond the tolerance'), looks);
   check('says which quote was dropped and why', says('outlier', 'put ' + outlierStrike), looks);
   check('says that there is an arbitrage', says('Arbitrage', '1 vertical'), looks);
 
