@@ -16,6 +16,8 @@ namespace {
 
 // Significant digits: vols to 0.001 of a vol point, prices of any chain to their tick.
 constexpr int kVolDigits = 5, kShapeDigits = 4, kPriceDigits = 7, kMissDigits = 3;
+// Moves, so that they round as they do elsewhere.
+constexpr int kMoveDigits = 7;
 // Points of a drawn smile. Closer at the money than in the wings, where smiles are straighter.
 constexpr int kCurvePoints = 69;
 
@@ -300,7 +302,7 @@ class PageWriter {
       for (const double vol : {c.vol_before, c.vol_after}) json_.number(vol, kVolDigits);
       for (const double part : {c.level, c.skew, c.curvature, c.forward, c.roll, c.rest})
         json_.number(part, kMissDigits);
-      json_.flag(c.sign_off != SignOff::none).number(c.move, kVolDigits).flag(c.near);
+      json_.flag(c.sign_off != SignOff::none).number(c.move, kMoveDigits).flag(c.near);
       json_.number(c.typical, kMissDigits).text(word(c.sign_off)).close(']');
     }
     json_.close(']');

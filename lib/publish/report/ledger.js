@@ -56,7 +56,7 @@ function ledgerSection() {
     {head: 'contract', width: '6.6rem', sort: (q) => q.strike, cell: (q) => contractName(q)},
     {
       head: 'expiry',
-      width: '6.6rem',
+      width: page.expiries.some((e) => e.label.length > 10) ? '8.6rem' : '6.6rem',
       sort: (q) => q.expiry ? q.expiry.t : null,
       cell: (q) => q.expiry ? el('button', {
         type: 'button',

@@ -426,7 +426,7 @@ function smilePanel() {
       });
   const keys = [
     keyMark('used', 'used'), keyMark('spare', 'spare'),
-    keyMark('dropped', 'dropped, with its reason'), keyMark('dropped ask', 'one side only'),
+    keyMark('dropped', 'dropped: pointing at it says why'), keyMark('dropped ask', 'one side only'),
     keyMark('leg', 'leg of an arbitrage'), keyMark('fit', 'smile'),
     keyMark('beyond', 'smile beyond the quotes')
   ];
