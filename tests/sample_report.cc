@@ -174,7 +174,8 @@ void SampleReport::add_changes() {
       const double level = 0.002, skew = -0.004 * k, rest = large ? 0.021 : 0.0001;
       subject.changes.push_back({slice.expiry, "", k, slice.forward * moneyness,
                                  vol - level - skew - rest, vol, level, skew, 0, 0, 0, rest,
-                                 large});
+                                 level + skew + rest, true, quotes::kAbsent,
+                                 large ? publish::SignOff::tolerance : publish::SignOff::none});
     }
 }
 

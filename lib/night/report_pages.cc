@@ -10,6 +10,7 @@
 #include <mutex>
 #include <numeric>
 
+#include "market/dates.h"
 #include "market/day_count.h"
 #include "pricing/invert.h"
 
@@ -32,19 +33,10 @@ bool pages_for_all(const NightConfig& config, std::size_t underlyings) {
 // At equal strike, to which the parts add up.
 publish::ReportChange shown(const publish::NodeChange& node) {
   const auto& parts = node.parts;
-  return {node.node.expiry,
-          node.node.tenor,
-          node.k,
-          node.node.strike,
-          node.vol_old_at_strike,
-          node.node.vol,
-          parts.level,
-          parts.skew,
-          parts.curvature,
-          parts.forward,
-          parts.roll_down,
-          parts.rest,
-          node.sign_off != publish::SignOff::none};
+  return {node.node.expiry, node.node.tenor, node.k,     node.node.strike, node.vol_old_at_strike,
+          node.node.vol,    parts.level,     parts.skew, parts.curvature,  parts.forward,
+          parts.roll_down,  parts.rest,      node.move,  node.near,        node.typical,
+          node.sign_off};
 }
 
 // The as-of that a record names, if it can be read.
@@ -97,7 +89,8 @@ std::vector<publish::ReportPair> pairs_of(const std::vector<const Quote*>& quote
 }
 
 // Volatilities of what was dropped before any were worked out, so that it can be seen where the
-// quote lies.
+// quote lies. None for American quotes: theirs are found by chains, with early exercise, and those
+// of a European formula would lie elsewhere.
 class Dropped {
  public:
   Dropped(const market::ForwardEstimate& forward, double year_fraction)
@@ -105,7 +98,8 @@ class Dropped {
 
   bool lacks_vols(const Quote& q) const {
     return quotes::state_of(q.reason) == quotes::State::dropped && q.quoted_in == QuotedIn::price &&
-           q.strike > 0 && !std::isfinite(q.vol_bid) && !std::isfinite(q.vol_ask);
+           q.exercise == quotes::Exercise::european && q.strike > 0 && !std::isfinite(q.vol_bid) &&
+           !std::isfinite(q.vol_ask);
   }
   Quote with_vols(Quote q) const {
     q.vol_bid = vol(q, q.bid);
@@ -127,23 +121,67 @@ std::string counted(std::size_t n, const char* what) {
   return fmt::format("{} {}{}", n, what, n == 1 ? "" : "s");
 }
 
+// The first few of a list, and how many more there are.
+std::string few(const std::vector<std::string>& items) {
+  constexpr std::size_t kFew = 8;
+  std::string text;
+  for (std::size_t i = 0; i < std::min(kFew, items.size()); ++i)
+    text += (i == 0 ? "" : ", ") + items[i];
+  return items.size() <= kFew ? text : text + fmt::format(" and {} more", items.size() - kFew);
+}
+
+// The points of a curve as they were written, by time.
+std::string points_of(const std::map<std::string, double>& stated, const char* what,
+                      const quotes::AsOf& as_of) {
+  std::vector<std::pair<quotes::Instant, std::string>> points;
+  for (const auto& [key, value] : stated) {
+    const auto tenor = market::parse_tenor(key);
+    const auto cell = tenor ? std::nullopt : quotes::parse_date_cell(key);
+    if (tenor) points.emplace_back(add_tenor(as_of.instant, *tenor, as_of.clock), key);
+    if (cell) points.emplace_back(quotes::resolve(*cell, as_of.clock, std::chrono::hours{16}), key);
+  }
+  std::sort(points.begin(), points.end());
+  std::vector<std::string> keys;
+  for (auto& point : points) keys.push_back(std::move(point.second));
+  return counted(keys.size(), what) + ": " + few(keys);
+}
+
+// The dividends that some expiry sees, by ex date.
+std::string dividends_of(const std::string& name, const ResolvedNight& night,
+                         quotes::Instant last_expiry) {
+  const auto found = night.dividends.find(name);
+  if (found == night.dividends.end()) return "";
+  std::vector<market::DatedDividend> dated;
+  for (const auto& d : found->second)
+    if (d.ex > night.as_of.instant && d.ex < last_expiry) dated.push_back(d);
+  std::stable_sort(dated.begin(), dated.end(),
+                   [](const auto& a, const auto& b) { return a.ex < b.ex; });
+  std::vector<std::string> texts;
+  for (const auto& d : dated)
+    texts.push_back(fmt::format("{} {} {}", quotes::format_date(night.as_of.clock, d.ex), d.amount,
+                                market::word(d.kind)));
+  return texts.empty() ? "" : counted(texts.size(), "dividend") + ": " + few(texts);
+}
+
 // What was stated for the night as a whole or for this name; what was worked out an expiry is in
 // the financing rows.
-std::vector<publish::ReportFact> facts_of(const std::string& name, const NightConfig& config) {
+std::vector<publish::ReportFact> facts_of(const std::string& name, const NightConfig& config,
+                                          const ResolvedNight& night, quotes::Instant last_expiry) {
   std::vector<publish::ReportFact> facts;
   const auto given = [&](const char* label, std::string value) {
-    facts.push_back({label, std::move(value), "given"});
+    if (!value.empty()) facts.push_back({label, std::move(value), "given"});
   };
-  if (const auto points = config.rates.size() + config.discount_factors.size(); points > 0)
-    given("Rates", "a curve of " + counted(points, "point"));
+  if (!config.rates.empty()) given("Rates", points_of(config.rates, "point", night.as_of));
+  if (!config.discount_factors.empty())
+    given("Discount factors", points_of(config.discount_factors, "point", night.as_of));
   const auto found = config.underlyings.find(name);
-  if (found == config.underlyings.end()) return facts;
-  const auto& stated = found->second;
-  if (stated.spot) given("Spot", fmt::format("{}", *stated.spot));
+  const UnderlyingFacts none;
+  const auto& stated = found == config.underlyings.end() ? none : found->second;
+  const auto spot = stated.spot ? stated.spot : config.spot;
+  if (spot) given("Spot", fmt::format("{}", *spot));
   if (stated.carry) given("Carry", fmt::format("{:.4g} % a year", 100 * *stated.carry));
   if (stated.borrow) given("Borrow", fmt::format("{:.4g} % a year", 100 * *stated.borrow));
-  if (const auto n = stated.dividends.size() + stated.proportional_dividends.size(); n > 0)
-    given("Dividends", counted(n, "dividend") + " of its own");
+  given("Dividends", dividends_of(name, night, last_expiry));
   if (!stated.forwards.empty()) given("Forwards", counted(stated.forwards.size(), "expiry date"));
   if (stated.exercise)
     given("Exercise", *stated.exercise == quotes::Exercise::american ? "american" : "european");
@@ -154,14 +192,15 @@ std::vector<publish::ReportFact> facts_of(const std::string& name, const NightCo
 class Subject {
  public:
   Subject(const MarkedUnderlying& marked, const std::vector<const Quote*>& rows,
-          const ReportExtras& extras, const NightConfig& config, quotes::Instant as_of) {
+          const ReportExtras& extras, const NightConfig& config, const ResolvedNight& night) {
     page_.record = &marked.record;
     page_.surface = marked.surface ? &*marked.surface : nullptr;
     page_.violations = marked.violations;
     page_.changes = extras.changes;
     page_.previous = extras.previous;
-    page_.facts = facts_of(marked.record.name, config);
-    place(marked, rows, as_of);
+    place(marked, rows, night.as_of.instant);
+    const auto last = page_.expiries.empty() ? night.as_of.instant : page_.expiries.back().expiry;
+    page_.facts = facts_of(marked.record.name, config, night, last);
     for (auto& e : page_.expiries) complete(e, extras);
   }
   publish::ReportSubject& page() { return page_; }
@@ -267,9 +306,8 @@ class ReportWriter {
         line.worst_miss = q->miss;
     }
     for (const auto& c : extras(i).changes) {
-      line.flagged_changes += c.flagged ? 1 : 0;
-      const double change = c.vol_after - c.vol_before;
-      if (!(std::abs(change) <= std::abs(line.largest_change))) line.largest_change = change;
+      line.flagged_changes += c.sign_off != publish::SignOff::none ? 1 : 0;
+      if (c.near && !(std::abs(c.move) <= std::abs(line.largest_move))) line.largest_move = c.move;
     }
     line.carried_expiries = static_cast<std::int64_t>(extras(i).carried.size());
     line.has_page = wanted(line);
@@ -282,7 +320,7 @@ class ReportWriter {
 
   std::string page_of(const std::vector<std::size_t>& paged, std::size_t at) const {
     const std::size_t i = paged[at];
-    Subject subject(marked_[i], rows_[i], extras(i), config_, night_.as_of.instant);
+    Subject subject(marked_[i], rows_[i], extras(i), config_, night_);
     const auto file = [&](std::size_t other) {
       return publish::report_file_name(marked_[paged[other]].record.name);
     };

@@ -63,7 +63,7 @@ void write_line(JsonText& json, const ReportLine& line) {
   json.open('[').text(u.name).count(static_cast<int>(u.status)).flag(u.certified);
   json.count(u.slices).count(u.used).count(u.inside).count(u.violations);
   json.number(line.worst_miss, 3).count(line.carried_expiries).count(line.flagged_changes);
-  json.number(line.largest_change, 3).text(u.message).text(u.carried_from);
+  json.number(line.largest_move, 7).text(u.message).text(u.carried_from);
   write_counts(json, line.rows);
   write_page(json, line);
   json.close(']');

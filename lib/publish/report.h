@@ -11,6 +11,7 @@
 #include <vector>
 
 #include "arbitrage/violation.h"
+#include "publish/compare.h"
 #include "publish/run_record.h"
 #include "publish/tables.h"
 #include "quotes/quote.h"
@@ -46,7 +47,11 @@ struct ReportChange {
   double vol_before, vol_after;   // decimals a year
   double level, skew, curvature;  // decimals of vol
   double forward, roll, rest;
-  bool flagged;
+  // What the sign-off judges, as in compare.h: the move of the surface itself.
+  double move;
+  bool near;       // close enough to the forward to be judged
+  double typical;  // decimals of vol, kAbsent where too few nights are known
+  SignOff sign_off;
 };
 
 // What one call and put say of the forward: an interval, quote currency.
@@ -94,7 +99,7 @@ struct ReportLine {
   double worst_miss = 0;  // half-spreads, the largest in size; 0 when all are inside
   std::int64_t carried_expiries = 0;
   std::int64_t flagged_changes = 0;
-  double largest_change = quotes::kAbsent;  // decimals of vol, signed
+  double largest_move = quotes::kAbsent;  // of the nodes that are judged; decimals of vol, signed
   bool has_page = false;
 };
 

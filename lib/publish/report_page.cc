@@ -16,6 +16,8 @@ namespace {
 
 // Significant digits: vols to 0.001 of a vol point, prices of any chain to their tick.
 constexpr int kVolDigits = 5, kShapeDigits = 4, kPriceDigits = 7, kMissDigits = 3;
+// Moves, so that they round as they do elsewhere.
+constexpr int kMoveDigits = 7;
 // Points of a drawn smile. Closer at the money than in the wings, where smiles are straighter.
 constexpr int kCurvePoints = 69;
 
@@ -171,7 +173,8 @@ class PageWriter {
     json_.close(']');
   }
 
-  // ln(K/F) at which a smile is drawn: all its quotes and the middle, and a little beyond.
+  // ln(K/F) at which a smile is drawn: all its quotes and the middle, and a little beyond; the ends
+  // of what rests on quotes are among them.
   static std::vector<double> places(const surface::Slice& slice, const ReportExpiry& e) {
     constexpr double kMiddle = 2.5, kBeyond = 0.12, kFurthest = 14;  // at-the-money deviations
     const double s = std::sqrt(surface::smile_of(slice, 0).w);
@@ -187,6 +190,9 @@ class PageWriter {
     std::vector<double> out;
     for (int i = 0; i < kCurvePoints; ++i)
       out.push_back(s * std::sinh(from + (to - from) * i / (kCurvePoints - 1)));
+    out.insert(out.end(), {slice.k_low, slice.k_high});
+    std::sort(out.begin(), out.end());
+    out.erase(std::unique(out.begin(), out.end()), out.end());
     return out;
   }
 
@@ -296,7 +302,8 @@ class PageWriter {
       for (const double vol : {c.vol_before, c.vol_after}) json_.number(vol, kVolDigits);
       for (const double part : {c.level, c.skew, c.curvature, c.forward, c.roll, c.rest})
         json_.number(part, kMissDigits);
-      json_.flag(c.flagged).close(']');
+      json_.flag(c.sign_off != SignOff::none).number(c.move, kMoveDigits).flag(c.near);
+      json_.number(c.typical, kMissDigits).text(word(c.sign_off)).close(']');
     }
     json_.close(']');
   }

@@ -130,7 +130,7 @@ await on(join(invented, planted), {height: 7000}, async (page) => {
   check(
       'says which expiry was carried and its age', says(carriedDate, 'carried', '3 days old'),
       looks);
-  check('says what changed', says(changedDate, 'large change'), looks);
+  check('says what changed', says(changedDate, 'node to sign off', 'beyond the tolerance'), looks);
   check('says which quote was dropped and why', says('outlier', 'put ' + outlierStrike), looks);
   check('says that there is an arbitrage', says('Arbitrage', '1 vertical'), looks);
 
@@ -199,6 +199,29 @@ for (const file of readdirSync(demo).filter((name) => name.endsWith('.html'))) {
   for (const [width, dark] of [[1440, false], [390, true]])
     await on(join(demo, file), {width, dark, height: 6000});
 }
+// Its many arbitrages: ten at first, all when asked for.
+await on(join(demo, 'DRYDOK.html'), {height: 6000}, async (page) => {
+  const seen =
+      '[...document.querySelectorAll(\'#arbitrage tbody tr\')].filter((r) => r.offsetHeight > 0).length';
+  const all = await page.ask('document.querySelectorAll(\'#arbitrage tbody tr\').length');
+  check('ten arbitrages are shown', all > 12 && await page.ask(seen) === 10, all);
+  check(
+      'and it says of how many',
+      (await page.ask(texts('#arbitrage output')))[0] === '10 of ' + all + ' shown');
+  await page.click('#arbitrage .of-all button');
+  check('all are when asked for', await page.ask(seen) === all);
+});
+for (const file of readdirSync(demo).filter((name) => name.endsWith('.html')))
+  await on(join(demo, file), {height: 6000}, async (page) => {
+    const meetings = await page.ask(`(() => {
+      const boxes = [...document.querySelectorAll('#smile-figure .why')].map(
+          (e) => e.getBoundingClientRect());
+      const meet = (a, b) => a.left < b.right && b.left < a.right &&
+          a.top + 3 < b.bottom - 3 && b.top + 3 < a.bottom - 3;
+      return boxes.filter((a, i) => boxes.some((b, j) => j > i && meet(a, b))).length;
+    })()`);
+    check('labels of ' + file + ' meet no other', meetings === 0, meetings);
+  });
 await on(join(demo, 'index.html'), {}, async (page) => {
   const links = await page.ask(
       '[...document.querySelectorAll(\'.space a\')].map((a) => a.getAttribute(\'href\'))');

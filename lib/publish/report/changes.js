@@ -1,6 +1,15 @@
-// Against the night before: how far each node moved, and what moved it.
+// Against the night before: how far the surface moved at each node, and what moved it. That move
+// is what the sign-off judges, of the nodes near the forward; the change of a volatility at its
+// strike has the forward and the roll-down in it besides.
 
 const PARTS = ['level', 'skew', 'curvature', 'forward', 'roll', 'rest'];
+const MOVES = ['level', 'skew', 'curvature', 'rest'];
+const WHYS = {
+  tolerance: 'beyond the tolerance',
+  history: 'more than usual',
+  both: 'beyond the tolerance, and more than usual'
+};
+const judged = page.changes.filter((c) => c.near);
 function changeRows() {
   const rows = new Map();
   for (const c of page.changes) {
@@ -14,17 +23,22 @@ function changeRows() {
   return list;
 }
 function changeScale() {
-  const most = d3.max(page.changes, (c) => Math.abs(c.change)) || 1;
+  const most = d3.max(judged, (c) => Math.abs(c.move)) || 1;
   // By the root, so that a large one does not pale the others.
-  return {most, step: (x) => 3 + Math.round(3 * Math.sign(x) * Math.sqrt(Math.abs(x) / most))};
+  const step = (x) => 3 + Math.round(3 * Math.sign(x) * Math.sqrt(Math.abs(x) / most));
+  return {most, step: (c) => c.near ? step(c.move) : 3};
 }
 function changeLines(c) {
   return [
-    ['before', vol(c.before)], ['now', vol(c.after)], ['change', points(c.change) + ' vol points']
+    ['move of the surface', points(c.move) + ' vol points'],
+    ['before, at this strike', vol(c.before)], ['now', vol(c.after)],
+    ['change at this strike', points(c.change)]
   ]
       .concat(
           PARTS.filter((p) => isNumber(c[p])).map((p) => [p, points(c[p])]),
-          c.flagged ? [['flagged', 'larger than usual']] : []);
+          isNumber(c.typical) ? [['usual move', fixed(100 * c.typical, 2)]] : [],
+          c.flagged ? [['to sign off', WHYS[c.why]]] : [],
+          c.near ? [] : [['not judged', 'too far from the forward']]);
 }
 function drawChanges(svg, width) {
   const rows = changeRows(),
@@ -44,7 +58,7 @@ function drawChanges(svg, width) {
         .attr('dominant-baseline', 'central')
         .text(row.name);
     row.nodes.forEach((c, i) => {
-      const x = m.left + i * cell, step = shade.step(c.change);
+      const x = m.left + i * cell, step = shade.step(c);
       svg.append('rect')
           .attr('class', 'cell c' + step)
           .attr('x', x)
@@ -52,13 +66,18 @@ function drawChanges(svg, width) {
           .attr('width', cell)
           .attr('height', tall);
       const dark = isDark(), strong = step === 0 || step === 6;
-      const sign = c.change > 0 ? '\u25b2 ' : c.change < 0 ? '\u25bc ' : '';
+      const sign = c.move > 0 ? '\u25b2 ' : c.move < 0 ? '\u25bc ' : '';
       if (cell > 46)
         svg.append('text')
-            .attr('class', 'cell-text ' + (strong !== dark ? 'light-text' : 'dark-text'))
+            .attr(
+                'class',
+                'cell-text ' +
+                    (!c.near             ? 'far-text' :
+                         strong !== dark ? 'light-text' :
+                                           'dark-text'))
             .attr('x', x + cell / 2)
             .attr('y', y + tall / 2)
-            .text(sign + fixed(Math.abs(100 * c.change), 2));
+            .text(sign + fixed(Math.abs(100 * c.move), 2));
       if (c.flagged)
         svg.append('rect')
             .attr('class', 'ring')
@@ -92,22 +111,39 @@ function drawChanges(svg, width) {
 }
 function changeTable() {
   const rows = page.changes.slice().sort(
-      (a, b) => b.flagged - a.flagged || Math.abs(b.change) - Math.abs(a.change));
+      (a, b) => b.near - a.near || b.flagged - a.flagged || Math.abs(b.move) - Math.abs(a.move));
   return {
-    head: ['expiry', 'tenor', '>k', '>strike', '>before', '>now', '>change'].concat(
-        PARTS.map((p) => '>' + p), ['flagged']),
+    head: ['expiry', 'tenor', '>k', '>strike', '>before', '>now', '>change', '>move'].concat(
+        PARTS.map((p) => '>' + p), ['sign-off']),
     rows: rows.map(
         (c) => [c.date, c.tenor, fixed(c.k, 3), price(c.strike), vol(c.before), vol(c.after),
-                points(c.change)]
-                   .concat(PARTS.map((p) => points(c[p])), [c.flagged ? 'yes' : '']))
+                points(c.change), points(c.move)]
+                   .concat(
+                       PARTS.map((p) => points(c[p])),
+                       [c.flagged  ? WHYS[c.why] :
+                            c.near ? '' :
+                                     'not judged']))
   };
 }
-// The part that moved a node most, in words.
+// The part of the surface's move that is largest, in words.
 function mainPart(c) {
-  const known = PARTS.filter((p) => isNumber(c[p]));
+  const known = MOVES.filter((p) => isNumber(c[p]));
   if (!known.length) return '';
   const part = known.reduce((a, b) => Math.abs(c[b]) > Math.abs(c[a]) ? b : a);
   return 'mostly ' + part + ' (' + points(c[part]) + ')';
+}
+const flaggedMoves = page.changes.filter((c) => c.flagged);
+function largerMove(a, b) {
+  return Math.abs(b.move) - Math.abs(a.move);
+}
+// What is beyond which bound. Without enough nights there is no usual move to speak of.
+function judgement() {
+  const by = (...whys) => flaggedMoves.filter((c) => whys.includes(c.why)).length;
+  const wide = by('tolerance', 'both'), odd = by('history', 'both');
+  const known = judged.some((c) => isNumber(c.typical));
+  const moves = (n) => counted(n, 'node moves', 'nodes move');
+  return (wide ? moves(wide) : 'No node moves') + ' beyond the tolerance' +
+      (known ? ', ' + (odd ? count(odd) : 'none') + ' by more than usual' : '');
 }
 function changesSection() {
   if (!page.changes.length)
@@ -117,30 +153,29 @@ function changesSection() {
             'No node can be compared with the night of ' + longDate(page.previous) + '.' :
             'There is no earlier night to compare with.');
   const rows = changeRows().length;
-  const flagged = page.changes.filter((c) => c.flagged),
-        list = (flagged.length ? flagged : page.changes)
-                   .slice()
-                   .sort((a, b) => Math.abs(b.change) - Math.abs(a.change))
-                   .slice(0, 5);
+  const list = (flaggedMoves.length ? flaggedMoves : judged).slice().sort(largerMove).slice(0, 5);
   const figure = new Figure({
     id: 'changes-figure',
     inset: true,
-    title: 'Change of each node, vol points',
-    note: '\u25b2 up, \u25bc down; framed: larger than usual.',
+    title: 'Move of the surface at each node, vol points',
+    note:
+        'At equal ln(K/F), less the roll-down. \u25b2 up, \u25bc down; framed: to sign off; grey: too far from the forward to be judged.',
     height: () => 8 + rows * 26 + 28,
     draw: drawChanges,
     table: changeTable
   });
   return section(
       'changes', 'Since the night before',
-      (flagged.length ? counted(flagged.length, 'change is', 'changes are') + ' larger than usual' :
-                        'No change is larger than usual') +
-          '; compared with ' + (page.previous ? longDate(page.previous) : 'the night before') + '.',
+      judgement() + '; compared with ' +
+          (page.previous ? longDate(page.previous) : 'the night before') + '.',
       plainTable(
-          ['largest', '>strike', '>before', '>now', '>change, vol points', 'what moved it'],
+          [
+            'expiry', '>strike', '>move of the surface, vol points', 'what moved it', '>before',
+            '>now', '>change at the strike'
+          ],
           list.map(
               (c) =>
-                  [(c.tenor || c.date), price(c.strike), vol(c.before), vol(c.after),
-                   points(c.change), mainPart(c)])),
+                  [(c.tenor || c.date), price(c.strike), points(c.move), mainPart(c), vol(c.before),
+                   vol(c.after), points(c.change)])),
       figure.node);
 }

@@ -246,6 +246,11 @@ class LongTable {
         },
            this.head, this.space, this.empty);
     this.node.style.setProperty('--columns', columns.map((c) => c.width).join(' '));
+    // No narrower than the least widths of its columns with the gaps between: below that it
+    // scrolls.
+    const least = (c) => parseFloat(c.width.replace('minmax(', ''));
+    this.node.style.setProperty(
+        '--least', columns.reduce((sum, c) => sum + least(c) + 0.7, 0.9) + 'rem');
     new ResizeObserver(() => this.draw(true)).observe(this.node);
     addEventListener('beforeprint', () => this.draw(true, true));
     addEventListener('afterprint', () => this.draw(true));

@@ -51,7 +51,7 @@ page.violations.forEach((v, at) => {
 });
 page.changes = page.changes.map(byFields([
   'expiry', 'date', 'tenor', 'k', 'strike', 'before', 'after', 'level', 'skew', 'curvature',
-  'forward', 'roll', 'rest', 'flagged'
+  'forward', 'roll', 'rest', 'flagged', 'move', 'near', 'typical', 'why'
 ]));
 page.changes.forEach((c) => {
   c.change = c.after - c.before;

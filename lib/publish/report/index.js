@@ -30,7 +30,7 @@ const ONLY = [
   ],
   ['missed', 'quotes missed', 'with used quotes outside their spreads', (l) => l.used > l.inside],
   [
-    'changed', 'large changes', 'with flagged changes since the night before',
+    'changed', 'moves to sign off', 'with nodes to sign off since the night before',
     (l) => l.flaggedChanges > 0
   ],
   [
@@ -131,7 +131,9 @@ const columns = [
     sort: (l) => isNumber(l.change) ? Math.abs(l.change) : null,
     down: true,
     narrow: 'away',
-    cell: (l) => el('span', {title: 'largest since the night before, vol points'}, points(l.change))
+    cell: (l) =>
+        el('span', {title: 'largest move of the surface since the night before, vol points'},
+           points(l.change))
   },
   {
     head: 'proved',
@@ -143,8 +145,9 @@ const columns = [
 ];
 
 // A night without an earlier one has no changes to show.
+const changeColumn = columns.find((c) => c.head === 'change');
 const shownColumns =
-    columns.filter((c) => c.head !== 'change' || lines.some((l) => isNumber(l.change)));
+    columns.filter((c) => c !== changeColumn || lines.some((l) => isNumber(l.change)));
 
 let table, shownText, field;
 // Who to look at first, in full.
@@ -156,7 +159,9 @@ function worst() {
           (l) =>
               el('li', {}, statusMark(l.status),
                  el('div', {}, l.href ? el('a', {href: l.href}, foreign(l.name)) : foreign(l.name),
-                    ' ', el('span', {}, l.message || counted(l.flaggedChanges, 'large change'))))));
+                    ' ',
+                    el('span', {},
+                       l.message || counted(l.flaggedChanges, 'node') + ' to sign off')))));
 }
 
 function update() {
@@ -326,6 +331,8 @@ function signOff() {
   const line = (text) => el('div', {class: 'pen'}, el('span', {}, text));
   return section(
       'sign-off', 'Sign-off', 'Marks need independent validation; nothing here is advice to trade.',
+      el('p', {}, 'Approve by the SHA-256 of run.json, which ', el('code', {}, 'duskgrid check'),
+         ' prints: it stands for every file of the night, these pages among them.'),
       el('div', {class: 'pens'}, line('marked by'), line('looked at by'), line('date and time')));
 }
 
@@ -346,7 +353,10 @@ document.body.append(
           contracts()),
        section(
            'underlyings', 'Underlyings, worst first',
-           'Columns sort; arrow keys walk the rows and Enter opens one. Inside: used quotes whose spread the surface meets. Worst miss in half-spreads; change in vol points.',
+           'Columns sort; arrow keys walk the rows and Enter opens one. Inside: used quotes whose spread the surface meets. Worst miss in half-spreads.' +
+               (shownColumns.includes(changeColumn) ?
+                    ' Change: the largest move of the surface since the night before, in vol points, of the nodes that the sign-off judges.' :
+                    ''),
            filters(), (table = new LongTable({
                          id: 'u',
                          label: 'Underlyings',

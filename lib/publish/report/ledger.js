@@ -45,10 +45,18 @@ function ledgerSection() {
   page.quotes.sort((a, b) => ledgerOrder(a) - ledgerOrder(b));
   const unit = (q, x) => q.inVol ? vol(x) : price(x);
   const columns = [
-    {head: 'contract', width: '7rem', sort: (q) => q.strike, cell: (q) => contractName(q)},
+    {
+      head: 'line',
+      width: '3.8rem',
+      number: true,
+      narrow: 'stays',
+      sort: (q) => q.line,
+      cell: (q) => String(q.line)
+    },
+    {head: 'contract', width: '6.6rem', sort: (q) => q.strike, cell: (q) => contractName(q)},
     {
       head: 'expiry',
-      width: '7.6rem',
+      width: page.expiries.some((e) => e.label.length > 10) ? '8.6rem' : '6.6rem',
       sort: (q) => q.expiry ? q.expiry.t : null,
       cell: (q) => q.expiry ? el('button', {
         type: 'button',
@@ -62,39 +70,39 @@ function ledgerSection() {
                                  q.expiry.label) :
                               ''
     },
-    {head: 'state', width: '5.4rem', sort: (q) => q.state, cell: (q) => q.state},
+    {head: 'state', width: '4.2rem', sort: (q) => q.state, cell: (q) => q.state},
     {
       head: 'reason',
       width: '7rem',
       sort: (q) => reasonWord(q.reason),
       cell: (q) => q.reason ? el('span', {title: REASONS[q.reason][2]}, reasonWord(q.reason)) : ''
     },
-    {head: 'bid', width: '4.8rem', number: true, sort: (q) => q.bid, cell: (q) => unit(q, q.bid)},
-    {head: 'ask', width: '4.8rem', number: true, sort: (q) => q.ask, cell: (q) => unit(q, q.ask)},
+    {head: 'bid', width: '4.3rem', number: true, sort: (q) => q.bid, cell: (q) => unit(q, q.bid)},
+    {head: 'ask', width: '4.3rem', number: true, sort: (q) => q.ask, cell: (q) => unit(q, q.ask)},
     {
       head: 'vol bid',
-      width: '4.8rem',
+      width: '4.3rem',
       number: true,
       sort: (q) => q.volBid,
       cell: (q) => vol(q.volBid)
     },
     {
       head: 'vol ask',
-      width: '4.8rem',
+      width: '4.3rem',
       number: true,
       sort: (q) => q.volAsk,
       cell: (q) => vol(q.volAsk)
     },
     {
       head: 'fitted',
-      width: '4.8rem',
+      width: '4.3rem',
       number: true,
       sort: (q) => q.volFit,
       cell: (q) => vol(q.volFit)
     },
     {
       head: 'miss',
-      width: '4.5rem',
+      width: '3.6rem',
       number: true,
       down: true,
       sort: (q) => isNumber(q.miss) ? Math.abs(q.miss) : null,
@@ -106,10 +114,9 @@ function ledgerSection() {
       sort: (q) => q.note < 0 ? '' : page.notes[q.note],
       cell: (q) => q.note < 0 ? '' : foreign(page.notes[q.note])
     },
-    {head: 'line', width: '4rem', number: true, sort: (q) => q.line, cell: (q) => String(q.line)},
     {
       head: 'file',
-      width: 'minmax(8rem, 1fr)',
+      width: 'minmax(6rem, 1fr)',
       sort: (q) => page.files[q.file],
       cell: (q) => el('span', {title: page.files[q.file]}, foreign(fileName(q)))
     },
@@ -158,6 +165,8 @@ function meanings(by) {
 
 // ---- Arbitrage ---------------------------------------------------------------------------------
 
+// So many rows are seen at first; on paper all are.
+const FEW_ARBITRAGES = 10;
 function violationSection() {
   if (!page.violations.length)
     return section('arbitrage', 'Arbitrage', 'None was found, among the quotes or in the surface.');
@@ -179,19 +188,30 @@ function violationSection() {
       fixed(v.points, 2), fixed(v.halfSpreads, 2), el('span', {class: 'legs'}, v.text)
     ];
   });
+  const all = rows.length, few = all > FEW_ARBITRAGES + 2;
   const table = plainTable(
       [
         '>no.', 'among', 'kind', 'expiry', 'with', 'strikes', '>locked in', '>vol points',
         '>half-spreads', 'legs: + buys at the ask, \u2212 sells at the bid'
       ],
       rows);
-  onChoose(
-      () => table.querySelectorAll('tbody tr')
-                .forEach(
-                    (row, i) =>
-                        row.classList.toggle('lit', page.violations[i] === chosen.violation)));
+  table.classList.add('entire');
+  const shown = el('output', {});
+  const more = el('button', {type: 'button', class: 'twin', onclick: () => show(!more.all)});
+  const show = (everything) => {
+    more.all = everything;
+    table.classList.toggle('few', !everything);
+    shown.textContent = (everything ? 'all ' : FEW_ARBITRAGES + ' of ') + count(all) + ' shown';
+    more.textContent = everything ? 'show the first ' + FEW_ARBITRAGES : 'show all ' + count(all);
+  };
+  if (few) show(false);
+  onChoose(() => {
+    if (few && chosen.violation && chosen.violation.place >= FEW_ARBITRAGES) show(true);
+    table.querySelectorAll('tbody tr')
+        .forEach((row, i) => row.classList.toggle('lit', page.violations[i] === chosen.violation));
+  });
   return section(
-      'arbitrage', counted(page.violations.length, 'arbitrage'),
+      'arbitrage', counted(all, 'arbitrage'),
       'What contradicts what, as trades. The expiry shows the legs in its smile, framed. Locked in: present value per unit of the legs, quote currency.',
-      table);
+      few ? el('div', {class: 'of-all'}, shown, more) : null, table);
 }

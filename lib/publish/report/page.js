@@ -13,13 +13,15 @@ function verdict() {
              page.used ? share(page.inside, page.used) + ' met inside' : null),
          entry(
              'dropped', count(dropped.length),
-             loud.length ? count(loud.length) + ' beside no-bid' : null),
+             dropped.length ? count(dropped.length - loud.length) + ' had no bid' : null),
          entry(
              'arbitrage', count(page.violations.length),
              page.fitted.length ?
                  (page.certified ? 'surface proved free' : 'surface not proved free') :
                  null),
-         entry('spot', isNumber(page.spot) ? price(page.spot) : 'none', 'quote currency'));
+         entry(
+             'spot', isNumber(page.spot) ? price(page.spot) : 'none',
+             isNumber(page.spot) ? 'quote currency' : null));
   return section(
       'short', 'In short', null,
       el('div', {class: 'lead'}, figures, el('ul', {class: 'look'}, looks(loud))));
@@ -48,14 +50,13 @@ function looks(loud) {
           goTo('smile');
         });
   }
-  const flagged =
-      page.changes.filter((c) => c.flagged).sort((a, b) => Math.abs(b.change) - Math.abs(a.change));
-  if (flagged.length) {
-    const c = flagged[0];
+  if (flaggedMoves.length) {
+    const c = flaggedMoves.slice().sort(largerMove)[0];
     look(
-        counted(flagged.length, 'large change') + ' since the night before, the largest ' +
-            points(c.change) + ' vol points at ' + (c.tenor || c.date) + ', strike ' +
-            price(c.strike) + ', ' + mainPart(c) + '.',
+        counted(flaggedMoves.length, 'node') +
+            ' to sign off since the night before, the largest move ' + points(c.move) +
+            ' vol points at ' + (c.tenor || c.date) + ', strike ' + price(c.strike) + ', ' +
+            mainPart(c) + ', ' + WHYS[c.why] + '.',
         () => goTo('changes'));
   }
   const kinds = d3.rollup(page.violations, (v) => v.length, (v) => v.kind);
@@ -111,8 +112,7 @@ function expiryRail() {
     const tags = [],
           arbitrage =
               page.violations.filter((v) => v.legs.some((leg) => leg.expiry === e.place)).length;
-    const dropped =
-        e.quotes.filter((q) => q.state === 'dropped' && reasonWord(q.reason) !== 'no-bid').length;
+    const {dropped, noBid} = countStates(e);
     if (e.carried || (e.forward && e.forward.source === 'carried'))
       tags.push(el('span', {class: 'tag-carry'}, '\u25cc carried'));
     if (arbitrage)
@@ -120,7 +120,11 @@ function expiryRail() {
           'span', {class: 'tag-arb', title: 'arbitrages with a leg here'}, '\u25a1 ' + arbitrage));
     if (dropped)
       tags.push(
-          el('span', {class: 'tag-drop', title: 'dropped beside no-bid'}, '\u2715 ' + dropped));
+          el('span', {
+            class: 'tag-drop',
+            title: 'dropped quotes' + (noBid ? ', ' + noBid + ' of them without a bid' : '')
+          },
+             '\u2715 ' + dropped));
     return el(
         'button', {
           type: 'button',
@@ -184,7 +188,7 @@ function head() {
          el('p', {class: 'asof'}, 'quotes of ' + clockOf(page.as_of, page.zone)), themeSwitch(),
          el('div', {class: 'side'}, statusBadge(page.status),
             el('nav', {'aria-label': 'Other underlyings'}, link(page.before, '\u2190 worse'),
-               page.before ? ' \u00a0 ' : '', el('a', {href: 'index.html'}, 'all'),
+               page.before ? ' \u00a0 ' : '', el('a', {href: 'index.html'}, 'the whole night'),
                page.after ? ' \u00a0 ' : '', link(page.after, 'better \u2192')))));
 }
 
@@ -207,7 +211,8 @@ function facts() {
   const rows = page.expiries.filter((e) => e.financing).map((e) => {
     const f = e.financing;
     return [
-      e.label, originated(price(f.spot), f.spotOrigin), originated(vol(f.rate, 3), f.rateOrigin),
+      e.label, isNumber(f.spot) ? originated(price(f.spot), f.spotOrigin) : 'none',
+      originated(vol(f.rate, 3), f.rateOrigin),
       f.dividends ?
           el('span', {},
              counted(f.dividends, 'dividend') + ', ' + signed(f.effect, 3) + ' on the forward ',
@@ -220,7 +225,7 @@ function facts() {
   return section(
       'facts', 'Given and inferred',
       'What carries the spot to each expiry: \u25a0 stated, \u25a1 worked out. Rate and borrow continuous, a year; borrow is what remains on top of the dividends.',
-      stated.length ? plainTable(['stated', 'value', ''], stated) : null,
+      stated.length ? plainTable(['stated', 'value', 'where from'], stated) : null,
       rows.length ?
           plainTable(
               ['expiry', 'spot', 'zero rate', 'dividends', 'borrow', 'exercise taken as'], rows) :

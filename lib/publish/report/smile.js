@@ -59,6 +59,16 @@ function drawQuote(g, kind, x, top, bottom) {
         .attr('r', kind === 'used' ? 3 : 2.6);
 }
 
+// Quotes of an expiry by state, and how many of the dropped had no bid.
+function countStates(e) {
+  const by = {used: 0, spare: 0, dropped: 0, noBid: 0};
+  e.quotes.forEach((q) => {
+    by[q.state]++;
+    by.noBid += reasonWord(q.reason) === 'no-bid' ? 1 : 0;
+  });
+  return by;
+}
+
 // What of a quote can be drawn: both sides, one, or nothing.
 function sides(q) {
   const bid = q.volBid > 0 ? q.volBid : null, ask = q.volAsk > 0 ? q.volAsk : null;
@@ -145,7 +155,7 @@ function drawSmile(svg, width, height) {
       if (q.state === state) drawOne(quotes, q, x, y, across, stops, labels);
   }
   drawCurve(inner, expiry, x, y, across, stops);
-  drawLabels(svg, labels, width);
+  drawLabels(svg, labels, curveOf(expiry, x, y, across), width, height);
   return stops.sort((a, b) => (a.series > b.series) - (a.series < b.series) || a.x - b.x);
 }
 
@@ -175,24 +185,68 @@ function drawOne(group, q, x, y, across, stops, labels) {
     name: contractName(q) + ' \u00b7 ' + q.state,
     lines: quoteLines(q)
   });
-  if (q.state === 'dropped' && reasonWord(q.reason) !== 'no-bid') {
-    labels.push({x: px, y: (a + b) / 2, text: reasonWord(q.reason) + (beyond ? ' \u2191' : '')});
+  if (q.state === 'dropped' && !UNLABELLED.includes(reasonWord(q.reason))) {
+    labels.push({
+      x: px,
+      y: (a + b) / 2,
+      lit,
+      text: reasonWord(q.reason) + (beyond ? (y(s.high) < top ? ' \u2191' : ' \u2193') : '')
+    });
   }
 }
 
-function drawLabels(svg, labels, width) {
-  labels.sort((a, b) => a.x - b.x);
-  const taken = [];
-  for (const label of labels.slice(0, 24)) {
-    const wide = label.text.length * 6.4, right = label.x + 10 + wide < width;
-    let y = label.y - 8;
-    while (taken.some((t) => Math.abs(t.x - label.x) < wide + 6 && Math.abs(t.y - y) < 12)) y += 13;
-    taken.push({x: label.x, y});
+// Reasons that say nothing of where a quote lies, and that whole chains can have.
+const UNLABELLED = ['no-bid', 'duplicate'];
+
+// The smile as drawn, y of x in pixels; NaN where there is none.
+function curveOf(expiry, x, y, across) {
+  const fit = expiry.fit;
+  if (!fit) return () => NaN;
+  const points = fit.k.map((k, i) => [x(across.k(k)), isNumber(fit.vol[i]) ? y(fit.vol[i]) : NaN]);
+  return (px) => {
+    const i = points.findIndex((p) => p[0] >= px);
+    if (i <= 0) return NaN;
+    const [a, b] = [points[i - 1], points[i]];
+    return a[1] + (b[1] - a[1]) * (px - a[0]) / (b[0] - a[0]);
+  };
+}
+
+// A label stands beside its quote where it meets nothing: no other label, curve or axis title.
+// Where there is no such place it is left out; pointing at the quote says the reason too.
+function drawLabels(svg, labels, curve, width, height) {
+  const far = (label) => Math.abs(label.y - curve(label.x)) || 0;
+  labels.sort((a, b) => b.lit - a.lit || far(b) - far(a) || a.x - b.x);
+  const taken = [
+    {left: 0, right: 170, top: 0, bottom: 18},  // the title of the axis
+    ...labels.map((l) => ({left: l.x - 4, right: l.x + 4, top: l.y - 4, bottom: l.y + 4}))
+  ];
+  const meets = (a, b) =>
+      a.left < b.right && b.left < a.right && a.top < b.bottom && b.top < a.bottom;
+  const onCurve = (box) => d3.range(box.left, box.right + 4, 4).some((px) => {
+    const y = curve(px);
+    return y > box.top - 2 && y < box.bottom + 2;
+  });
+  const inside = (box) => box.left >= MARGIN.left && box.right <= width && box.top >= 2 &&
+      box.bottom <= height - MARGIN.bottom - 16;
+  const free = (box) => inside(box) && !onCurve(box) && !taken.some((t) => meets(t, box));
+  for (const label of labels) {
+    const wide = label.text.length * 6.8;
+    const boxes =
+        [-4, -17, 9, -30, 22].flatMap((rise) => [8, -8 - wide].map((aside) => ({
+                                                                     left: label.x + aside,
+                                                                     right: label.x + aside + wide,
+                                                                     top: label.y + rise - 6,
+                                                                     bottom: label.y + rise + 7
+                                                                   })));
+    const box = boxes.find(free);
+    if (!box) continue;
+    taken.push(box);
+    const after = box.left > label.x;
     svg.append('text')
         .attr('class', 'why')
-        .attr('x', label.x + (right ? 8 : -8))
-        .attr('y', Math.max(12, y) + 4)
-        .attr('text-anchor', right ? 'start' : 'end')
+        .attr('x', after ? box.left : box.right)
+        .attr('y', box.bottom - 3)
+        .attr('text-anchor', after ? 'start' : 'end')
         .text(label.text);
   }
 }
@@ -372,7 +426,7 @@ function smilePanel() {
       });
   const keys = [
     keyMark('used', 'used'), keyMark('spare', 'spare'),
-    keyMark('dropped', 'dropped, with its reason'), keyMark('dropped ask', 'one side only'),
+    keyMark('dropped', 'dropped: pointing at it says why'), keyMark('dropped ask', 'one side only'),
     keyMark('leg', 'leg of an arbitrage'), keyMark('fit', 'smile'),
     keyMark('beyond', 'smile beyond the quotes')
   ];
@@ -400,12 +454,12 @@ function smilePanel() {
     table: residualTable
   });
   onChoose(() => {
-    const e = chosen.expiry, by = {used: 0, spare: 0, dropped: 0};
-    if (e) e.quotes.forEach((q) => by[q.state]++);
+    const e = chosen.expiry, by = e && countStates(e);
     smile.note(
         !e ? '' :
              'Expiry ' + e.label + ', ' + days(e.t) + ' days: ' + by.used + ' used, ' + by.spare +
-                ' spare, ' + by.dropped + ' dropped.' +
+                ' spare, ' + by.dropped + ' dropped' +
+                (by.noBid ? ', ' + by.noBid + ' of them without a bid.' : '.') +
                 (e.carried ? ' Carried from ' + e.carried.from.slice(0, 10) + ', ' +
                          fixed(e.carried.days, 0) + ' days old.' :
                              ''));

@@ -10,6 +10,7 @@
 #include <map>
 #include <nlohmann/json.hpp>
 #include <random>
+#include <sstream>
 
 #include "pricing/black.h"
 #include "publish/digest.h"
@@ -28,6 +29,21 @@ constexpr const char* kHeader = "underlying,expiry,strike,put_call,bid,ask,under
 std::string content_of(const fs::path& path) {
   std::ifstream file(path, std::ios::binary);
   return {std::istreambuf_iterator<char>(file), {}};
+}
+
+// What a page of the report is made from.
+json data_of(const std::string& path) {
+  const std::string page = content_of(path);
+  const std::string open = "<script type=\"application/json\" id=\"data\">";
+  const auto begin = page.find(open) + open.size();
+  return json::parse(page.substr(begin, page.find("</script>", begin) - begin));
+}
+
+std::vector<std::string> cells_of(const std::string& line) {
+  std::vector<std::string> cells;
+  std::istringstream in(line);
+  for (std::string cell; std::getline(in, cell, ',');) cells.push_back(cell);
+  return cells;
 }
 
 // Every file of a run but the one that may differ between equal runs.
@@ -144,6 +160,72 @@ TEST_F(RunNightTest, ReportShowsWhatMovedSinceTheNightBefore) {
   const auto page = content_of(second->folder + "/report/HALYRD.html");
   EXPECT_NE(page.find("\"previous\":\"2031-03-14"), std::string::npos);
   EXPECT_NE(page.find("\"changes\":[["), std::string::npos);
+}
+
+// With the spot 10 % higher and the same smile around it, volatilities at a strike change by the
+// skew while the surface stays.
+TEST_F(RunNightTest, ReportsChangeIsTheMoveThatTheSignOffJudges) {
+  write(joined(rows_of("HALYRD", 100)));
+  ASSERT_TRUE(attempt("out", 1, "2031-03-14").ok());
+  write(joined(rows_of("HALYRD", 110)));
+  const auto second = attempt("out", 2, "2031-03-17");
+  ASSERT_TRUE(second.ok());
+  std::istringstream lines(content_of(second->folder + "/changes.csv"));
+  double at_strike = 0, nearest = 1;
+  const auto row = data_of(second->folder + "/report/index.html").at("underlyings").at(0);
+  const double shown = row.at(10);
+  for (std::string line; std::getline(lines, line);) {
+    const auto cells = cells_of(line);
+    if (cells.at(1) != "compared") continue;
+    at_strike = std::max(at_strike, std::abs(std::stod(cells.at(11))));
+    nearest = std::min(nearest, std::abs(std::stod(cells.at(14)) - shown));
+  }
+  EXPECT_GT(at_strike, 0.01);
+  EXPECT_LT(std::abs(shown), at_strike / 2);
+  EXPECT_LT(nearest, 1e-7);  // the page has 7 digits of what changes.csv has in full
+}
+
+// An American volatility is not that of a European formula, and the ledger has none of what was
+// dropped beforehand; a European one is shown, that it can be seen where the quote lies.
+TEST_F(RunNightTest, ReportHasNoVolatilityOfAnAmericanDuplicate) {
+  rows_ = rows_of("HALYRD", 100);
+  for (auto& row : rows_of("HALYRD", 100)) rows_.push_back(std::move(row));
+  write(joined(rows_));
+  for (const bool american : {false, true}) {
+    const std::string style = american ? "american" : "european";
+    const auto config = parse_config(
+        "as_of = '2031-03-14'\n[[source]]\nfiles = 'quotes.csv'\nexercise = '" + style + "'\n",
+        "night.toml", folder_);
+    ASSERT_TRUE(config.ok());
+    const auto outcome = run_night(*config, {folder_ + "/" + style, 1, {}});
+    ASSERT_TRUE(outcome.ok());
+    int duplicates = 0, with_vol = 0;
+    const auto page = data_of(outcome->folder + "/report/HALYRD.html");
+    for (const auto& expiry : page.at("expiries"))
+      for (const auto& quote : expiry.at("quotes")) {
+        if (quote.at(2) != static_cast<int>(quotes::Reason::duplicate)) continue;
+        ++duplicates;
+        with_vol += quote.at(6).is_null() && quote.at(7).is_null() ? 0 : 1;
+      }
+    EXPECT_EQ(duplicates, 52);
+    EXPECT_EQ(with_vol > 0, !american);
+  }
+}
+
+TEST_F(RunNightTest, ReportNamesRatePointsAndTheDividendsThatAnExpirySees) {
+  write(joined(rows_of("HALYRD", 100)));
+  const auto config = parse_config(
+      "as_of = '2031-03-14'\n[[source]]\nfiles = 'quotes.csv'\n[rates]\n'1Y' = 0.01\n'3M' = "
+      "0.01\n[underlying.HALYRD]\ndividends = {'2031-09-01' = 0.5, '2031-05-02' = 0.25, "
+      "'2031-03-01' = 9, '2032-03-01' = 9}\n",
+      "night.toml", folder_);
+  ASSERT_TRUE(config.ok());
+  const auto outcome = run_night(*config, {folder_ + "/out", 1, {}});
+  ASSERT_TRUE(outcome.ok());
+  const json expected{
+      {"Rates", "2 points: 3M, 1Y", "given"},
+      {"Dividends", "2 dividends: 2031-05-02 0.25 cash, 2031-09-01 0.5 cash", "given"}};
+  EXPECT_EQ(data_of(outcome->folder + "/report/HALYRD.html").at("facts"), expected);
 }
 
 TEST_F(RunNightTest, OneAndTwoThreadsGiveTheSameBytes) {

@@ -2,6 +2,7 @@
 
 #include <gtest/gtest.h>
 
+#include <algorithm>
 #include <cmath>
 #include <nlohmann/json.hpp>
 #include <random>
@@ -174,6 +175,10 @@ TEST(ReportPage, CurvesAreThoseOfTheSurface) {
       EXPECT_NEAR(fit.at("vol").at(j).get<double>(),
                   std::sqrt(surface::smile_of(slice, fit.at("k").at(j)).w / slice.year_fraction),
                   kPrinted);
+    // Both ends of what rests on quotes are drawn, as they are named.
+    for (const char* end : {"low", "high"})
+      EXPECT_EQ(std::count(fit.at("k").begin(), fit.at("k").end(), fit.at(end)), 1) << end;
+    EXPECT_TRUE(std::is_sorted(fit.at("k").begin(), fit.at("k").end()));
     EXPECT_LE(fit.at("k").front().get<double>(), slice.k_low);
     EXPECT_GE(fit.at("k").back().get<double>(), slice.k_high);
   }
@@ -190,6 +195,7 @@ TEST(ReportPage, SaysWhatWasCarriedChangedAndBroken) {
       EXPECT_EQ(change.at(1), quotes::format_date(sample.as_of.clock, sample.changed_expiry));
       double parts = 0;
       for (int part = 7; part < 13; ++part) parts += change.at(part).get<double>();
+      EXPECT_EQ(change.at(17), "tolerance");
       // Parts have 3 digits and vols 5: a few units of the last.
       EXPECT_NEAR(parts, change.at(6).get<double>() - change.at(5).get<double>(), 1e-4);
     }
