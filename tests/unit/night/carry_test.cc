@@ -7,6 +7,7 @@
 
 #include "arbitrage/certificate.h"
 #include "market/day_count.h"
+#include "market/dividends.h"
 #include "surface/carry.h"
 
 namespace duskgrid::night {
@@ -101,6 +102,23 @@ TEST(Carry, StatedCarryAndRatesGiveTheForwardFromTheSpot) {
     EXPECT_NEAR(s.discount_factor, std::exp(-0.05 * s.year_fraction), kRounding);
   }
   for (const auto& row : m.forwards) EXPECT_EQ(row.estimate.source, market::ForwardSource::curve);
+}
+
+// What goes ex between the two nights leaves spot and forward once, not the forward twice.
+TEST(Carry, DividendGoneExSinceIsTakenOffOnce) {
+  auto past = friday();
+  const double kBorrow = 0.01, kRate = 0.03, kPaid = 5;
+  const std::vector<market::Dividend> ahead{{0.5 / 365, market::DividendKind::cash, kPaid}};
+  for (auto& s : past.stored->surface.slices)
+    s.forward = market::forward_of({100, kRate, kBorrow, s.year_fraction}, ahead);
+  const auto m = carried(kMonday +
+                             "[underlying.HALYRD]\nspot = 95\n"
+                             "dividends = {'2031-03-15T04:00:00-05:00' = 5}\n",
+                         past);
+  ASSERT_EQ(m.forwards.size(), 2U);
+  for (const auto& row : m.forwards)
+    // The dividend of half a day's delay is carried on from there, so to say, to a cent or two.
+    EXPECT_NEAR(row.estimate.forward, 95 * std::exp((kRate - kBorrow) * row.year_fraction), 0.02);
 }
 
 TEST(Carry, StatedForwardsAndThoseOfTonightsQuotesComeFirst) {

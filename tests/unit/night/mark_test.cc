@@ -340,6 +340,59 @@ TEST(MarkUnderlying, StatedBorrowDecidesTheForwardOfAnAmericanExpiry) {
   EXPECT_TRUE(holds(marked.record.message, "parity broken")) << marked.record.message;
 }
 
+TEST(MarkUnderlying, ForwardsAndBorrowsThatAmericanQuotesContradictAreFlagged) {
+  for (const char* stated : {"forwards = {2031-09-10 = 150}", "borrow = 0.8", "borrow = -0.9"}) {
+    AmericanNight night(std::string(kRates) + "[underlying.HALYRD]\n" + stated + "\n");
+    night.add_american(180, 0);
+    const auto marked = night.mark();
+    EXPECT_TRUE(holds(marked.record.message, "parity broken")) << stated << marked.record.message;
+    EXPECT_TRUE(holds(marked.record.message, "is spot or forward right"))
+        << stated << marked.record.message;
+  }
+}
+
+TEST(MarkUnderlying, RowsOfAnotherDayTellNoSpot) {
+  AmericanNight night(kRates);
+  night.add_american(180, 0);
+  const std::size_t tonight = night.table.quotes.size();
+  for (Quote& q : night.table.quotes) q.quote_time = kAsOf - 1min;
+  for (std::size_t i = 0; i < 2 * tonight; ++i) {
+    Quote old = night.table.quotes[i % tonight];
+    old.quote_time = kAsOf - 72h;
+    old.strike += 1;
+    old.underlying_price = 0.9 * kSpot;
+    old.line = static_cast<std::int64_t>(night.table.quotes.size()) + 2;
+    night.table.quotes.push_back(old);
+  }
+  const auto marked = night.mark();
+  ASSERT_EQ(marked.financing.size(), 1U);
+  EXPECT_EQ(marked.financing[0].spot, kSpot);
+}
+
+TEST(MarkUnderlying, StatedCarryIsTheWholeYieldWhateverDividendsAFileHas) {
+  Night night(std::string(kRates) + "spot = 100\n[underlying.HALYRD]\ncarry = 0.05\n");
+  night.add_flat(180, {PutCall::call});
+  auto resolved = resolve(night.config);
+  ASSERT_TRUE(resolved.ok());
+  resolved->dividends["HALYRD"] = {{in_days(30), market::DividendKind::cash, 2}};
+  quotes::clean_quotes(night.table, kAsOf, night.config.clean);
+  const auto chains = quotes::group_chains(night.table);
+  const auto marked = mark_underlying(night.table, chains.at(0), night.config, *resolved);
+  ASSERT_EQ(marked.forwards.size(), 1U);
+  EXPECT_NEAR(marked.forwards[0].estimate.forward, 100 * std::exp((kRate - 0.05) * years(180)),
+              kForwardRounding);
+}
+
+TEST(MarkUnderlying, ExpiryWhoseDividendsExceedTheSpotHasNoForward) {
+  AmericanNight night(std::string(kRates) +
+                      "[underlying.HALYRD]\nborrow = 0\ndividends = {2031-04-01 = 150}\n");
+  night.add_american(180, 0);
+  const auto marked = night.mark();
+  EXPECT_EQ(marked.record.status, publish::Status::refused);
+  EXPECT_EQ(night.count(Reason::no_forward), static_cast<std::int64_t>(night.table.quotes.size()));
+  EXPECT_TRUE(marked.forwards.empty());
+}
+
 TEST(MarkUnderlying, MixedExercisesOfOneNightAreEachTakenAsTheyAre) {
   AmericanNight night(kRates);
   night.add_american(180, 0);
