@@ -205,7 +205,7 @@ TEST_F(RunNightTest, ReportHasNoVolatilityOfAnAmericanDuplicate) {
       for (const auto& quote : expiry.at("quotes")) {
         if (quote.at(2) != static_cast<int>(quotes::Reason::duplicate)) continue;
         ++duplicates;
-        with_vol += quote.at(6).is_null() && quote.at(7).is_null() ? 0 : 1;
+        with_vol += quote.at(5).is_null() && quote.at(6).is_null() ? 0 : 1;
       }
     EXPECT_EQ(duplicates, 52);
     EXPECT_EQ(with_vol > 0, !american);
