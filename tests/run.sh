@@ -46,4 +46,4 @@ if [ $# -gt 0 ]; then
 fi
 run release
 # The sanitizers make everything several times slower: smaller samples, the same code.
-DUSKGRID_FUZZ_RUNS=300 DUSKGRID_CHAIN_SEEDS=38 run asan-ubsan
+DUSKGRID_FUZZ_RUNS=120 DUSKGRID_CHAIN_SEEDS=38 DUSKGRID_KILLS=4 run asan-ubsan
