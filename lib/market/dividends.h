@@ -45,8 +45,9 @@ struct Financing {
 };
 
 // F = S e^{(r - b) T} prod(1 - p_i) - sum of each D_i carried to T, less the proportional dividends
-// that follow it: what it costs to buy the spot now and to deliver it at expiry. Not above 0 where
-// the dividends are worth more than the spot.
+// that follow it: what it costs to buy the spot now and to deliver it at expiry. Dividends are by
+// time. Not above 0 where they are worth more than the spot; that a spot may fall below a dividend
+// would raise the forward a little, and is left out.
 double forward_of(const Financing& financing, std::span<const Dividend> dividends);
 // The borrow b that gives a forward, or nothing: none within +-kMostBorrow does.
 inline constexpr double kMostBorrow = 5;

@@ -355,16 +355,6 @@ class Column {
 
 }  // namespace
 
-double forward_with_dividends(const AmericanColumnTerms& terms,
-                              std::span<const Dividend> dividends) {
-  double forward = terms.spot, time = 0;
-  for (const Dividend& d : inside(dividends, terms.year_fraction)) {
-    forward = after(d, forward * std::exp((terms.rate - terms.carry_yield) * (d.time - time)));
-    time = d.time;
-  }
-  return forward * std::exp((terms.rate - terms.carry_yield) * (terms.year_fraction - time));
-}
-
 AmericanCounts DividendInverter::invert(const DividendColumnTerms& terms,
                                         const PriceColumns& columns,
                                         const AmericanVolColumns& out) const {

@@ -21,12 +21,6 @@ struct DividendColumnTerms {
   Shortfall shortfall = Shortfall::liquidator;
 };
 
-// The mean of the spot at expiry: spot grown at rate - carry_yield, less each dividend before
-// expiry, cash carried on from its time. Not positive where cash dividends exceed the spot. A
-// spot that can fall below a dividend has a slightly higher mean, which is left out.
-double forward_with_dividends(const AmericanColumnTerms& terms,
-                              std::span<const Dividend> dividends);
-
 // A value of tables; may be shared by threads.
 class DividendInverter {
  public:

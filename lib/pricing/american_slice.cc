@@ -1,15 +1,11 @@
 #include "pricing/american_slice.h"
 
-#include <cmath>
-
 namespace duskgrid::pricing {
 namespace {
 
 using quotes::Exercise;
 using quotes::Quote;
 using quotes::QuotedIn;
-
-bool firm(double side) { return std::isfinite(side) && side > 0; }
 
 // Prices waiting to be inverted in one call, and where the answers go.
 class PendingSides {

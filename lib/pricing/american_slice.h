@@ -2,6 +2,7 @@
 // everything after carries on.
 #pragma once
 
+#include <cmath>
 #include <vector>
 
 #include "market/dividends.h"
@@ -10,6 +11,9 @@
 #include "quotes/quote.h"
 
 namespace duskgrid::pricing {
+
+// A firm side of a quote: there, finite and positive.
+inline bool firm(double side) { return std::isfinite(side) && side > 0; }
 
 // What early exercise depends on, beside the quotes.
 struct ExerciseTerms {

@@ -20,9 +20,6 @@ BlackTerms terms_of(const Quote& q, const SliceMarket& m) {
   return {q.put_call, m.forward, q.strike, m.discount_factor};
 }
 
-// A firm side of a quote: there, finite and positive.
-bool firm(double side) { return std::isfinite(side) && side > 0; }
-
 // Prices of a slice waiting to be inverted in one call, and where their vols go.
 class PendingVols {
  public:

@@ -132,7 +132,7 @@ PayingExpiry paying_expiry(std::mt19937_64& random, double spot, double rate, do
   e.terms = {spot, rate, borrow, t};
   for (double at = first; at < t; at += 0.25)
     out.dividends.push_back({at, DividendKind::cash, share * spot});
-  const double forward = forward_with_dividends(e.terms, out.dividends);
+  const double forward = market::forward_of({spot, rate, borrow, t}, out.dividends);
   const int count = 30 + static_cast<int>(71 * unit(random));
   const DividendOptions rough{Shortfall::liquidator, Style::american, 100, 20};
   while (static_cast<int>(e.strikes.size()) < count) {

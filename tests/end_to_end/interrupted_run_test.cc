@@ -281,6 +281,8 @@ int in_own_mounts(const std::string& script) {
   return run("/usr/bin/unshare", arguments).status;
 }
 
+// Some containers forbid mounts even to root. There a limit on file sizes stands in for the full
+// disk (LimitOnFileSizesIsAFullDisk), and what needs a mount is skipped.
 bool may_mount(const fs::path& place) {
   fs::create_directories(place);
   return in_own_mounts("mount -t tmpfs none " + place.string()) == 0;

@@ -457,7 +457,7 @@ TEST(DividendInverter, AgreesWithFiniteDifferencesAtTheVolFound) {
     }
   }
   ASSERT_FALSE(american.empty());
-  EXPECT_GE(american.size(), 0.9 * quotes);
+  EXPECT_GE(american.size(), 0.99 * quotes);
   std::sort(american.begin(), american.end());
   std::sort(european.begin(), european.end());
   // 98 in 100.

@@ -117,8 +117,8 @@ TEST(Carry, DividendGoneExSinceIsTakenOffOnce) {
                          past);
   ASSERT_EQ(m.forwards.size(), 2U);
   for (const auto& row : m.forwards)
-    // The dividend of half a day's delay is carried on from there, so to say, to a cent or two.
-    EXPECT_NEAR(row.estimate.forward, 95 * std::exp((kRate - kBorrow) * row.year_fraction), 0.02);
+    // The old borrow is found to 1e-10 of the old forward.
+    EXPECT_NEAR(row.estimate.forward, 95 * std::exp((kRate - kBorrow) * row.year_fraction), 1e-7);
 }
 
 TEST(Carry, StatedForwardsAndThoseOfTonightsQuotesComeFirst) {

@@ -9,6 +9,10 @@
 namespace duskgrid::pricing {
 namespace {
 
+double forward_of(const AmericanColumnTerms& t, std::span<const Dividend> dividends) {
+  return market::forward_of({t.spot, t.rate, t.carry_yield, t.year_fraction}, dividends);
+}
+
 using quotes::PutCall;
 
 constexpr double kNaN = std::numeric_limits<double>::quiet_NaN();
@@ -131,7 +135,7 @@ TEST(DividendInverter, EuropeanPricesKeepParity) {
       prices.push_back(priced(kTerms, side, strike, vol, kCash));
     }
   const auto r = inverted({kTerms, kCash}, strikes, sides, prices);
-  const double forward = forward_with_dividends(kTerms, kCash);
+  const double forward = forward_of(kTerms, kCash);
   const double discount = std::exp(-kTerms.rate * kTerms.year_fraction);
   for (std::size_t i = 0; i < prices.size(); i += 2)
     EXPECT_NEAR(r.european[i] - r.european[i + 1], discount * (forward - strikes[i]), 2 * kAmerican)
@@ -141,15 +145,15 @@ TEST(DividendInverter, EuropeanPricesKeepParity) {
 TEST(DividendInverter, TakesSharesOfTheSpotAsAFallOfTheForward) {
   const std::vector<Dividend> shares{{0.2, DividendKind::proportional, 0.01},
                                      {0.5, DividendKind::proportional, 0.02}};
-  EXPECT_NEAR(forward_with_dividends(kTerms, shares), 100 * 0.99 * 0.98 * std::exp(0.0225), 1e-10);
+  EXPECT_NEAR(forward_of(kTerms, shares), 100 * 0.99 * 0.98 * std::exp(0.0225), 1e-10);
   const Chain c = chain_of(kTerms, shares);
   const auto r = inverted({kTerms, shares}, c.strikes, c.sides, c.prices);
   for (std::size_t i = 0; i < c.prices.size(); ++i) {
     ASSERT_EQ(r.statuses[i], AmericanVolStatus::ok) << i;
     // Black's price exactly, to what ends the search.
-    const double black = black_price(
-        {c.sides[i], forward_with_dividends(kTerms, shares), c.strikes[i], std::exp(-0.03)},
-        r.vols[i] * std::sqrt(0.75));
+    const double black =
+        black_price({c.sides[i], forward_of(kTerms, shares), c.strikes[i], std::exp(-0.03)},
+                    r.vols[i] * std::sqrt(0.75));
     EXPECT_NEAR(r.european[i], black, 1e-9);
     EXPECT_NEAR(priced(kTerms, c.sides[i], c.strikes[i], r.vols[i], shares), c.prices[i],
                 kAmerican);
@@ -226,8 +230,9 @@ TEST(DividendInverterSearch, FindsTheVolatilityOfACallBeforeItsExDate) {
   DividendInverter().invert({terms, dividends}, {strikes, sides, prices},
                             {vols, europeans, statuses});
   ASSERT_EQ(statuses[0], AmericanVolStatus::ok) << word(statuses[0]);
-  // The tables' error here, docs/american.md, over a vega of a tenth of the spot.
-  EXPECT_NEAR(vols[0], kVol, 3e-3);
+  // 3e-5 of the spot, within which 99 in 100 prices are met (docs/american.md), over a vega
+  // of 1.23.
+  EXPECT_NEAR(vols[0], kVol, 2.5e-3);
 }
 
 }  // namespace

@@ -121,6 +121,7 @@ TEST_F(OutputLockTest, LockFileRemovedByHandIsMadeAgain) {
   EXPECT_FALSE(OutputLock::take(out_, {}).ok());
 }
 
+// Only the superuser can act as another user; the rest of the lock is tested without.
 TEST_F(OutputLockTest, LockThatAnotherUserMadeCanBeTaken) {
   if (geteuid() != 0) GTEST_SKIP() << "needs the rights to act as two users";
   { const auto lock = taken(); }
